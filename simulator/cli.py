@@ -1,0 +1,199 @@
+"""The command line: arguments, exit codes, printing. No logic of its own.
+
+Public names: `app`, `main`.
+"""
+
+import json
+import sys
+import time
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from pathlib import Path
+from typing import Annotated, Any
+
+import typer
+from typer.core import TyperGroup
+
+from simulator.errors import CaseError, RamplineError, SolveError
+
+__all__ = ["app", "main"]
+
+EXIT_INPUT, EXIT_SOLVER, EXIT_AUDIT, EXIT_INTERRUPTED = 2, 3, 4, 130
+
+
+class Commands(TyperGroup):
+    """The commands, with errors turned into messages and exit codes (results-format.md)."""
+
+    def invoke(self, ctx: Any) -> Any:
+        """Run a command; what is raised on purpose ends as a message, never as a traceback."""
+        try:
+            return super().invoke(ctx)
+        except KeyboardInterrupt as stop:
+            typer.echo("interrupted; nothing was written", err=True)
+            raise typer.Exit(EXIT_INTERRUPTED) from stop
+        except SolveError as error:
+            typer.echo(f"error: {error}", err=True)
+            raise typer.Exit(EXIT_SOLVER) from error
+        except RamplineError as error:
+            typer.echo(_in_words(error), err=True)
+            raise typer.Exit(EXIT_INPUT) from error
+
+
+def _in_words(error: RamplineError) -> str:
+    if not isinstance(error, CaseError):
+        return f"error: {error}"
+    count = len(error.problems)
+    return f"{error}\n{count} problem{'s' if count > 1 else ''}; nothing was written"
+
+
+app = typer.Typer(
+    cls=Commands,
+    help="Week-ahead dispatch of a power grid: who runs, what flows, what binds, what power costs where.",
+    epilog="A planning aid, not for real-time control or switching: local grid codes, the responsible "
+    "operator and licensed practice decide.",
+    no_args_is_help=True,
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+)
+
+CasePath = Annotated[Path, typer.Argument(metavar="CASE", help="Case folder.")]
+Json = Annotated[bool, typer.Option("--json", help="Print one JSON document and nothing else.")]
+
+
+@app.command(epilog="Example: rampline check profiles/fennmark")
+def check(case: CasePath, *, as_json: Json = False) -> None:
+    """Read and check a case; print what it holds, or every problem."""
+    from simulator.case import read_case
+
+    found = read_case(case)
+    _say_warnings(found)
+    if as_json:
+        _print_json(
+            {"case": found.settings.name, "warnings": [str(item) for item in found.warnings]}
+        )
+    else:
+        typer.echo(str(found))
+
+
+@app.command(
+    epilog="Example: rampline week profiles/fennmark --from 2027-01-11 --commitment relaxed"
+)
+def week(
+    case: CasePath,
+    *,
+    start: Annotated[
+        str | None,
+        typer.Option(
+            "--from", help="First period, local; by default the first of the hourly data."
+        ),
+    ] = None,
+    hours: Annotated[float, typer.Option(help="Length of the run.")] = 168.0,
+    window_hours: Annotated[float | None, typer.Option(help="What one optimisation sees.")] = None,
+    keep_hours: Annotated[float | None, typer.Option(help="What is kept of it.")] = None,
+    commitment: Annotated[str | None, typer.Option(help="given | relaxed | optimal")] = None,
+    limits: Annotated[str | None, typer.Option(help="none | lines | secure")] = None,
+    out: Annotated[
+        Path | None, typer.Option(help="Folder of results; by default outputs/<case>-<first day>.")
+    ] = None,
+    force: Annotated[bool, typer.Option(help="Replace an earlier run's folder.")] = False,
+    as_json: Json = False,
+) -> None:
+    """Run a case over a week, or any number of hours, and keep results, record and page."""
+    from simulator import results
+    from simulator.case import read_case
+    from simulator.horizon import plan_run, run
+
+    clock = Clock()
+    found = read_case(case)
+    plan = plan_run(
+        found, start, hours, window_hours=window_hours, keep_hours=keep_hours,
+        commitment=commitment, limits=limits,
+    )  # fmt: skip
+    folder = (
+        out or Path("outputs") / f"{case.resolve().name}-{found.time.local[plan.first]:%Y-%m-%d}"
+    )
+    results.refuse_existing(folder, force=force)
+    _say_warnings(found)
+    clock.lap("read")
+    with _progress() as show:
+        finished = run(found, plan, show)
+    clock.skip()
+    dataset = results.to_dataset(finished)
+    clock.lap("results")
+    record = results.run_record(finished, dataset, clock.seconds)
+    results.save(dataset, record, folder, force=force)
+    _report(dataset, record, folder, as_json=as_json)
+
+
+class Clock:
+    """Seconds by stage since it was made."""
+
+    def __init__(self) -> None:
+        self._began = self._last = time.perf_counter()
+        self._laps: dict[str, float] = {}
+
+    def lap(self, stage: str) -> None:
+        """Book the time since the last lap on a stage."""
+        now = time.perf_counter()
+        self._laps[stage], self._last = now - self._last, now
+
+    def skip(self) -> None:
+        """Leave the time since the last lap to whoever counted it."""
+        self._last = time.perf_counter()
+
+    @property
+    def seconds(self) -> dict[str, float]:
+        """Seconds by stage and in total."""
+        return self._laps | {"total": time.perf_counter() - self._began}
+
+
+@contextmanager
+def _progress() -> Iterator[Callable[[int, int], None] | None]:
+    """Yield a progress callback that draws a bar on a terminal, or nothing elsewhere."""
+    if not sys.stderr.isatty():
+        yield None
+        return
+    from rich.console import Console
+    from rich.progress import (
+        BarColumn,
+        MofNCompleteColumn,
+        Progress,
+        TextColumn,
+        TimeRemainingColumn,
+    )
+
+    columns = (TextColumn("windows"), BarColumn(), MofNCompleteColumn(), TimeRemainingColumn())
+    with Progress(*columns, console=Console(stderr=True), transient=True) as bar:
+        task = bar.add_task("windows", total=None)
+        yield lambda done, total: bar.update(task, completed=done, total=total)
+
+
+def _say_warnings(case: Any) -> None:
+    for warning in case.warnings:
+        typer.echo(f"warning: {warning}", err=True)
+
+
+def _print_json(document: Any) -> None:
+    typer.echo(json.dumps(document, indent=2))
+
+
+def _report(dataset: Any, record: dict[str, Any], folder: Path, *, as_json: bool) -> None:
+    if as_json:
+        _print_json(record | {"folder": str(folder)})
+        return
+    from rich.console import Console
+
+    from simulator.report.summary import print_summary
+
+    print_summary(dataset, record, Console())
+    typer.echo(f"written to {folder}", err=True)
+
+
+def main() -> None:
+    """Run the command line."""
+    app(prog_name="rampline")
+
+
+if __name__ == "__main__":
+    main()

@@ -1,0 +1,149 @@
+"""The compiled fleet half: one matrix, and where each family of columns and rows landed in it.
+
+Public names: `CompiledFleet`, `Vectors`, `compile_fleet`.
+
+The same positions carry a window's numbers in and its solution and duals back out by name.
+"""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import pyomo.environ as pyo
+from numpy.typing import NDArray
+from pyomo.opt import WriterFactory
+from scipy import sparse
+
+from simulator.dispatch.fleet import FleetData
+from simulator.dispatch.formulation import state_fleet
+from simulator.dispatch.inputs import WindowInputs
+
+__all__ = ["CompiledFleet", "Vectors", "compile_fleet"]
+
+Floats = NDArray[np.float64]
+Integers = NDArray[np.int64]
+
+
+@dataclass(frozen=True, eq=False)
+class Vectors:
+    """A window as whole arrays: lower, upper, cost (column,); row_lower, row_upper (row,)."""
+
+    lower: Floats
+    upper: Floats
+    cost: Floats
+    row_lower: Floats
+    row_upper: Floats
+
+
+@dataclass(frozen=True, eq=False)
+class CompiledFleet:
+    """The compiled fleet half of every window of one shape.
+
+    matrix : sparse array (row, column)
+    columns, rows : family → array (period, element), positions in the matrix
+    """
+
+    matrix: sparse.csc_array
+    columns: Mapping[str, Integers]
+    rows: Mapping[str, Integers]
+
+    def vectors(self, data: FleetData) -> Vectors:
+        """Lay a window's numbers out in the order of the matrix."""
+        rows, columns = self.matrix.shape
+        vectors = Vectors(*(np.zeros(size) for size in (columns, columns, columns, rows, rows)))
+        for family, (lower, upper) in data.columns.items():
+            vectors.lower[self.columns[family]] = lower
+            vectors.upper[self.columns[family]] = upper
+        for family, cost in data.costs.items():
+            vectors.cost[self.columns[family]] = cost
+        for family, (lower, upper) in data.rows.items():
+            vectors.row_lower[self.rows[family]] = lower
+            vectors.row_upper[self.rows[family]] = upper
+        return vectors
+
+    def moving_entries(
+        self, inputs: WindowInputs, data: FleetData
+    ) -> tuple[Integers, Integers, Floats]:
+        """Return row, column and value of every entry that derates and outages may change."""
+        parts = [
+            self._entries(row, column, values, inputs)
+            for (row, column), values in data.coefficients.items()
+        ]
+        if not parts:
+            return np.zeros(0, int), np.zeros(0, int), np.zeros(0)
+        rows, columns, values = zip(*parts, strict=True)
+        return np.concatenate(rows), np.concatenate(columns), np.concatenate(values)
+
+    def _entries(
+        self, row: str, column: str, values: NDArray[Any], inputs: WindowInputs
+    ) -> tuple[Integers, Integers, Floats]:
+        rows, columns = self.rows[row], self.columns[column]
+        if values.ndim == 3:  # noqa: PLR2004  (lag, period, unit)
+            return _lagged_entries(rows, columns, values, inputs)
+        if row == "block_width":
+            columns = columns[:, inputs.unit.block_unit]
+        return rows.ravel(), columns.ravel(), values.ravel()
+
+    def named(self, solution: Floats) -> dict[str, Floats]:
+        """Take a solution apart: family → array (period, element)."""
+        return {family: solution[positions] for family, positions in self.columns.items()}
+
+    def row_name(self, row: int) -> tuple[str, int, int]:
+        """Return the family, period and element position of a row."""
+        return _name(self.rows, row)
+
+    def column_name(self, column: int) -> tuple[str, int, int]:
+        """Return the family, period and element position of a column."""
+        return _name(self.columns, column)
+
+
+def _lagged_entries(
+    rows: Integers, columns: Integers, values: NDArray[Any], inputs: WindowInputs
+) -> tuple[Integers, Integers, Floats]:
+    """Entries that tie period t to the periods `lag` before it, for the lags some unit has."""
+    lag, period, unit = np.nonzero(_within_reach(values, inputs))
+    return rows[period, unit], columns[period - lag, unit], values[lag, period, unit].astype(float)
+
+
+def _within_reach(values: NDArray[Any], inputs: WindowInputs) -> NDArray[np.bool_]:
+    lag = np.arange(len(values))[:, None, None]
+    period = np.arange(inputs.periods)[None, :, None]
+    longest = np.maximum(inputs.unit.up_periods, inputs.unit.down_periods)
+    return (lag <= period) & (lag < longest)
+
+
+def _name(families: Mapping[str, Integers], position: int) -> tuple[str, int, int]:
+    for family, positions in families.items():
+        hits = np.argwhere(positions == position)
+        if len(hits):
+            return family, int(hits[0][0]), int(hits[0][1])
+    raise KeyError(position)
+
+
+def compile_fleet(inputs: WindowInputs, data: FleetData) -> CompiledFleet:
+    """State one window in Pyomo and turn it into a matrix; needed once a window shape."""
+    model = state_fleet(inputs, data)
+    model.objective = pyo.Objective(expr=0.0)
+    form = WriterFactory("compile_standard_form").write(model, mixed_form=True)
+    column_at = {id(variable): position for position, variable in enumerate(form.columns)}
+    row_at = {id(entry.constraint): position for position, entry in enumerate(form.rows)}
+    # A lossless tie within one cell is in no fleet row: its column counts in line rows only.
+    for variable in model.component_data_objects(pyo.Var):
+        column_at.setdefault(id(variable), len(column_at))
+    absent = sparse.csc_array((len(form.rows), len(column_at) - len(form.columns)))
+    return CompiledFleet(
+        matrix=sparse.csc_array(sparse.hstack([form.A, absent])),
+        columns=_positions(model, pyo.Var, column_at),
+        rows=_positions(model, pyo.Constraint, row_at),
+    )
+
+
+def _positions(model: Any, kind: Any, position_of: Mapping[int, int]) -> dict[str, Integers]:
+    """Return, for each family of that kind, its positions as an array (period, element)."""
+    found = {}
+    for component in model.component_objects(kind):
+        shape = tuple(len(part) for part in component.index_set().subsets())
+        positions = [position_of[id(item)] for item in component.values()]
+        found[component.name] = np.array(positions, dtype=np.int64).reshape(shape)
+    return found

@@ -1,0 +1,179 @@
+"""The fleet half of a window, stated in Pyomo: readable here, compiled once, never solved from here.
+
+Public names: `state_fleet`.
+
+Index t is the period, the other index the position of the element; Δ is the period in hours. Numbers
+that change from window to window come from `FleetData`; those written here stay for the whole run.
+"""
+
+from typing import Any
+
+import numpy as np
+import pyomo.environ as pyo
+from numpy.typing import NDArray
+
+from simulator.dispatch.fleet import FleetData
+from simulator.dispatch.inputs import WindowInputs
+
+__all__ = ["state_fleet"]
+
+Model = Any
+Integers = NDArray[np.int64]
+
+
+def state_fleet(inputs: WindowInputs, data: FleetData) -> Model:
+    """State the columns and rows of one window (formulation.md 2.1 to 2.5)."""
+    model = pyo.ConcreteModel()
+    model.inputs, model.data = inputs, data
+    for family, (lower, _) in data.columns.items():
+        periods, elements = (pyo.RangeSet(0, length - 1) for length in lower.shape)
+        setattr(model, family, pyo.Var(periods, elements))
+    rules = COMMITMENT_ROWS if data.committed else GIVEN_ROWS
+    for family, rule in rules.items():
+        periods, elements = (pyo.RangeSet(0, length - 1) for length in data.rows[family][0].shape)
+        setattr(model, family, pyo.Constraint(periods, elements, rule=rule))
+    return model
+
+
+def _least(row: str, model: Model, t: int, element: int) -> float:
+    return float(model.data.rows[row][0][t, element])
+
+
+def _most(row: str, model: Model, t: int, element: int) -> float:
+    """Return the right-hand side; rows that are open in this window still have to be stated."""
+    return float(np.nan_to_num(model.data.rows[row][1][t, element], posinf=1e30))
+
+
+def output_split(model: Model, t: int, unit: int) -> Any:
+    """2.1: output = minimum·on + Σ blocks above the minimum."""
+    blocks = np.flatnonzero(model.inputs.unit.block_unit == unit)
+    above = sum(model.block[t, block] for block in blocks.tolist())
+    if not model.data.committed:
+        return model.output[t, unit] - above == _most("output_split", model, t, unit)
+    minimum = model.data.coefficients["output_split", "on"][t, unit]
+    return model.output[t, unit] + minimum * model.on[t, unit] - above == 0.0
+
+
+def block_width(model: Model, t: int, block: int) -> Any:
+    """2.1: a block is available only while its unit is on: q ≤ width·on."""
+    unit = int(model.inputs.unit.block_unit[block])
+    width = model.data.coefficients["block_width", "on"][t, block]
+    return model.block[t, block] + width * model.on[t, unit] <= 0.0
+
+
+def ramp_up(model: Model, t: int, position: int) -> Any:
+    """2.2: output_t − output_{t−1} ≤ ramp·on_{t−1} + start_ramp·start_t."""
+    unit = int(model.inputs.unit.ramp_up_rows[position])
+    rise = model.output[t, unit] - (model.output[t - 1, unit] if t else 0.0)
+    if model.data.committed:
+        data = model.inputs.unit
+        widest = data.maximum[unit]  # a wider ramp means the same, and inf is no coefficient
+        rise -= float(min(data.start_ramp[unit], widest)) * model.start[t, unit]
+        if t:
+            rise -= float(min(data.ramp_up[unit], widest)) * model.on[t - 1, unit]
+    return rise <= _most("ramp_up", model, t, position)
+
+
+def ramp_down(model: Model, t: int, position: int) -> Any:
+    """2.2: output_{t−1} − output_t ≤ ramp·on_t + stop_ramp·stop_t."""
+    unit = int(model.inputs.unit.ramp_down_rows[position])
+    fall = (model.output[t - 1, unit] if t else 0.0) - model.output[t, unit]
+    if model.data.committed:
+        data = model.inputs.unit
+        widest = data.maximum[unit]
+        fall -= float(min(data.stop_ramp[unit], widest)) * model.stop[t, unit]
+        fall -= float(min(data.ramp_down[unit], widest)) * model.on[t, unit]
+    return fall <= _most("ramp_down", model, t, position)
+
+
+def switching(model: Model, t: int, unit: int) -> Any:
+    """2.3: on_t − on_{t−1} = start_t − stop_t."""
+    change = model.on[t, unit] - (model.on[t - 1, unit] if t else 0.0)
+    right = float(np.nan_to_num(_least("switching", model, t, unit), neginf=0.0))
+    return change - model.start[t, unit] + model.stop[t, unit] == right
+
+
+def minimum_up(model: Model, t: int, unit: int) -> Any:
+    """2.3: Σ starts within the minimum up time ≤ on_t (Rajan & Takriti, IBM RC23628, 2005)."""
+    counts = model.data.coefficients["minimum_up", "start"][:, t, unit]
+    started = sum(model.start[t - lag, unit] for lag in np.flatnonzero(counts).tolist())
+    return started - model.on[t, unit] <= _most("minimum_up", model, t, unit)
+
+
+def minimum_down(model: Model, t: int, unit: int) -> Any:
+    """2.3: Σ stops within the minimum down time ≤ 1 − on_t (same source)."""
+    counts = model.data.coefficients["minimum_down", "stop"][:, t, unit]
+    stopped = sum(model.stop[t - lag, unit] for lag in np.flatnonzero(counts).tolist())
+    return stopped + model.on[t, unit] <= _most("minimum_down", model, t, unit)
+
+
+def hot_start_recent(model: Model, t: int, position: int) -> Any:
+    """2.3: a start is hot only if the unit stopped recently: hot_t ≤ Σ recent stops."""
+    unit = int(model.inputs.unit.hot_rows[position])
+    reach = min(int(model.inputs.unit.hot_periods[unit]), t)
+    recent = sum(model.stop[t - lag, unit] for lag in range(1, reach + 1))
+    return model.hot_start[t, position] - recent <= _most("hot_start_recent", model, t, position)
+
+
+def hot_start_is_start(model: Model, t: int, position: int) -> Any:
+    """2.3: hot_t ≤ start_t."""
+    unit = int(model.inputs.unit.hot_rows[position])
+    return model.hot_start[t, position] - model.start[t, unit] <= 0.0
+
+
+def store_balance(model: Model, t: int, store: int) -> Any:
+    """2.4: E_t = kept·E_{t−1} + η_c·Δ·charge − Δ/η_d·discharge."""
+    data = model.inputs.store
+    change = model.stored[t, store] - (data.kept[store] * model.stored[t - 1, store] if t else 0.0)
+    gained = data.charged[store] * model.charge[t, store]
+    change += data.drawn[store] * model.discharge[t, store] - gained
+    return change == _most("store_balance", model, t, store)
+
+
+def balance(model: Model, t: int, cell: int) -> Any:
+    """2.5: injections − withdrawals + what other cells of the island send = demand."""
+    inputs, at = model.inputs, model.inputs.cells.cell
+
+    def summed(family: str, buses: Integers, factor: Any = 1.0) -> Any:
+        column, factors = getattr(model, family), np.broadcast_to(factor, buses.shape)
+        here = np.flatnonzero(at[buses] == cell).tolist()
+        return sum(float(factors[element]) * column[t, element] for element in here)
+
+    arrives = inputs.tie_delivered
+    pairs = zip(inputs.cells.pair_from.tolist(), inputs.cells.pair_to.tolist(), strict=True)
+    received = sum(
+        ((cell == end) - (cell == start)) * model.exchange[t, pair]
+        for pair, (start, end) in enumerate(pairs)
+        if cell in (start, end)
+    )
+    total = (
+        summed("output", inputs.unit.bus)
+        + summed("renewable", inputs.renewable_bus)
+        + summed("discharge", inputs.store.bus)
+        - summed("charge", inputs.store.bus)
+        + summed("tie_forward", inputs.tie_to, arrives)
+        - summed("tie_forward", inputs.tie_from)
+        + summed("tie_reverse", inputs.tie_from, arrives)
+        - summed("tie_reverse", inputs.tie_to)
+        + summed("unserved", inputs.load_bus)
+        - summed("surplus", np.arange(inputs.buses))
+        + received
+    )
+    return total == _most("balance", model, t, cell)
+
+
+GIVEN_ROWS = {
+    "output_split": output_split,
+    "ramp_up": ramp_up,
+    "ramp_down": ramp_down,
+    "store_balance": store_balance,
+    "balance": balance,
+}
+COMMITMENT_ROWS = GIVEN_ROWS | {
+    "block_width": block_width,
+    "switching": switching,
+    "minimum_up": minimum_up,
+    "minimum_down": minimum_down,
+    "hot_start_recent": hot_start_recent,
+    "hot_start_is_start": hot_start_is_start,
+}

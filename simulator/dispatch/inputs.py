@@ -1,0 +1,335 @@
+"""What one window needs to know, as whole arrays: cut out of arrays made once for a run.
+
+Public names: `RunInputs`, `WindowInputs`, `UnitData`, `StoreData`, `run_inputs`.
+
+Arrays over time have periods first. Powers are MW, prices currency/MWh, Δ is `period_hours`.
+"""
+
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from simulator.case import Case, series
+from simulator.dispatch.reach import reachable_ceiling, reachable_floor, reachable_minimum
+from simulator.grid import Cells, Network, TopologySchedule, common_cells
+
+__all__ = ["RunInputs", "StoreData", "UnitData", "WindowInputs", "run_inputs"]
+
+Floats = NDArray[np.float64]
+Integers = NDArray[np.int64]
+Booleans = NDArray[np.bool_]
+
+
+@dataclass(frozen=True)
+class UnitData:
+    """What does not change over time, arrays (unit,) unless said otherwise.
+
+    ramp_up, ramp_down : most change of output in one period, MW (ramp × Δ)
+    start_ramp, stop_ramp : most output in the first and the last period of a run, MW
+    no_load : currency/h; hot_start, cold_start : currency a start
+    up_periods, down_periods : minimum up and down times in periods, at least 1
+    hot_periods : a start within this many periods of the stop is hot
+    maximum : MW, with nothing out; must_run : bool
+    block_unit : array (block,), the unit a cost block belongs to
+    ramp_up_rows, ramp_down_rows : positions of the units whose ramps can bind; hot_rows : of those
+        whose cold starts cost more than hot ones. Fixed for a run, so that its windows have one shape.
+    """
+
+    bus: Integers
+    ramp_up: Floats
+    ramp_down: Floats
+    start_ramp: Floats
+    stop_ramp: Floats
+    no_load: Floats
+    hot_start: Floats
+    cold_start: Floats
+    up_periods: Integers
+    down_periods: Integers
+    hot_periods: Integers
+    maximum: Floats
+    must_run: Booleans
+    block_unit: Integers
+    ramp_up_rows: Integers
+    ramp_down_rows: Integers
+    hot_rows: Integers
+
+    @property
+    def memory(self) -> int:
+        """How many periods before a window can still matter to it."""
+        longest = np.concatenate([self.up_periods, self.down_periods, self.hot_periods])
+        return int(longest.max(initial=1))
+
+
+@dataclass(frozen=True)
+class StoreData:
+    """Stores, arrays (store,) (formulation.md 2.4).
+
+    kept : share of stored energy left after one period, (1 − loss)^Δ
+    charged, drawn : MWh into and out of the store per MW over one period, η_c·Δ and Δ/η_d
+    energy : MWh; throughput_cost : currency/MWh; end_value : currency/MWh
+    """
+
+    bus: Integers
+    kept: Floats
+    charged: Floats
+    drawn: Floats
+    energy: Floats
+    throughput_cost: Floats
+    end_value: Floats
+
+
+@dataclass(frozen=True, eq=False)
+class WindowInputs:
+    """Everything of one window but the state it starts from.
+
+    number : the window's place in the run, from 0; first : its first period, counted from the run's
+    mode : commitment mode; limited : whether line limits hold
+    unit_min, unit_available : arrays (period, unit), MW; minimum output is never above what is available
+    unit_out : fully out; unit_falling : available output falls from the period before
+    unit_out_before : array (lag, unit), the same before the window, most recent first
+    unit_given : schedule of mode `given`, outages taken off; unit_ceiling : most output, MW, from
+        which that schedule can still be followed
+    minimum_cost : array (period, unit), currency/h of output at the minimum, no-load cost included
+    block_width, block_cost : arrays (period, block), MW above minimum output and currency/MWh
+    minimum_emissions (period, unit), t/h, block_emissions (block,), t/MWh : the same split of carbon
+    renewable_available (period, plant); renewable_offer, renewable_bus (plant,)
+    store_share : array (period, store), what outages leave; store_floor : least energy from which
+        `final_mwh` can still be reached, MWh; ends_run : the window reaches the end of the run
+    charge, discharge : arrays (store,), MW
+    tie_forward, tie_reverse (period, tie), MW entering; tie_delivered : share that arrives
+    demand (period, load); unserved_cost (load,); surplus_cost : currency/MWh
+    rating (period, line), MW; topology : which topology holds when; joined (period, pair)
+    """
+
+    number: int
+    first: int
+    mode: str
+    limited: bool
+    period_hours: float
+    unit: UnitData
+    unit_min: Floats
+    unit_available: Floats
+    unit_out: Booleans
+    unit_falling: Booleans
+    unit_out_before: Booleans
+    unit_given: Booleans
+    unit_ceiling: Floats
+    minimum_cost: Floats
+    block_width: Floats
+    block_cost: Floats
+    minimum_emissions: Floats
+    block_emissions: Floats
+    renewable_bus: Integers
+    renewable_offer: Floats
+    renewable_available: Floats
+    store: StoreData
+    charge: Floats
+    discharge: Floats
+    store_share: Floats
+    store_floor: Floats
+    ends_run: bool
+    tie_from: Integers
+    tie_to: Integers
+    tie_delivered: Floats
+    tie_forward: Floats
+    tie_reverse: Floats
+    load_bus: Integers
+    unserved_cost: Floats
+    demand: Floats
+    surplus_cost: float
+    rating: Floats
+    topology: TopologySchedule
+    cells: Cells
+    joined: Booleans
+    buses: int
+
+    @property
+    def periods(self) -> int:
+        """Number of periods."""
+        return len(self.demand)
+
+    @property
+    def demand_at_bus(self) -> Floats:
+        """Demand summed at buses, array (period, bus), MW."""
+        return series.sum_by(self.demand, self.load_bus, self.buses)
+
+
+_BY_PERIOD = (
+    "unit_min", "unit_available", "unit_out", "unit_falling", "unit_given", "unit_ceiling",
+    "minimum_cost", "minimum_emissions", "block_width", "block_cost", "renewable_available",
+    "store_share", "store_floor", "tie_forward", "tie_reverse", "demand", "rating", "topology", "joined",
+)  # fmt: skip
+
+
+@dataclass(frozen=True, eq=False)
+class RunInputs:
+    """The inputs of a whole run and its look-ahead, from which windows are cut.
+
+    whole : all periods from the first of the run to the last the hourly data allow it to see
+    run_periods : how many of them the run keeps
+    """
+
+    whole: WindowInputs
+    run_periods: int
+
+    def window(self, number: int, first: int, periods: int) -> WindowInputs:
+        """Cut one window of some periods, counted from the run's first."""
+        whole = self.whole
+        span = slice(first, first + periods)
+        cut = {name: getattr(whole, name)[span] for name in _BY_PERIOD}
+        before = np.zeros((whole.unit.memory, len(whole.unit.bus)), dtype=bool)
+        past = whole.unit_out[max(0, first - len(before)) : first][::-1]
+        before[: len(past)] = past
+        ends_run = first + periods >= self.run_periods
+        return replace(
+            whole, number=number, first=first, unit_out_before=before, ends_run=ends_run, **cut
+        )
+
+
+def run_inputs(case: Case, span: slice, run_periods: int, mode: str, *, limited: bool) -> RunInputs:
+    """Make the arrays of a run over `span`, of which the first `run_periods` are kept."""
+    network = Network.of(case)
+    topology = network.schedule(series.in_service(case, span))
+    cells = common_cells(topology.topologies)
+    whole = WindowInputs(
+        number=0, first=0, mode=mode, limited=limited, period_hours=case.time.period_hours,
+        surplus_cost=case.settings.penalties.surplus,
+        rating=series.line_rating(case, span), topology=topology, cells=cells,
+        joined=cells.joined[topology.index], buses=len(case.buses), ends_run=True,
+        **_unit_inputs(case, span), **_renewable_inputs(case, span),
+        **_store_inputs(case, span, run_periods), **_tie_inputs(case, span), **_load_inputs(case, span),
+    )  # fmt: skip
+    return RunInputs(whole, run_periods)
+
+
+_UNIT_NUMBERS = (
+    "ramp_up_mw_per_h", "ramp_down_mw_per_h", "start_ramp_mw", "stop_ramp_mw", "no_load_cost_per_h",
+    "start_cost", "cold_start_cost", "max_output_mw",
+)  # fmt: skip
+
+
+def _bus(case: Case, names: pd.Series) -> Integers:
+    return case.buses.index.get_indexer(pd.Index(names))
+
+
+def _periods(hours: pd.Series, period_hours: float) -> Integers:
+    """Round a duration up to whole periods."""
+    return np.ceil(hours.to_numpy(float) / period_hours - 1e-9).astype(int)
+
+
+def _unit_data(case: Case, block_unit: Integers, least: Floats) -> UnitData:
+    """Collect the units' constants.
+
+    least : array (unit,), the lowest minimum output of the run, MW. Between two periods on, output
+    moves by at most the maximum less that, so a wider ramp never binds.
+    """
+    units, length = case.units, case.time.period_hours
+    numbers = {name: units[name].to_numpy(float) for name in _UNIT_NUMBERS}
+    ramp_up, ramp_down = (
+        numbers["ramp_up_mw_per_h"] * length,
+        numbers["ramp_down_mw_per_h"] * length,
+    )
+    most, moves = numbers["max_output_mw"], numbers["max_output_mw"] - least
+    start_ramp, stop_ramp = numbers["start_ramp_mw"], numbers["stop_ramp_mw"]
+    return UnitData(
+        bus=_bus(case, units["bus"]),
+        ramp_up=ramp_up, ramp_down=ramp_down, start_ramp=start_ramp, stop_ramp=stop_ramp,
+        no_load=numbers["no_load_cost_per_h"],
+        hot_start=numbers["start_cost"], cold_start=numbers["cold_start_cost"],
+        up_periods=np.maximum(_periods(units["min_up_h"], length), 1),
+        down_periods=np.maximum(_periods(units["min_down_h"], length), 1),
+        hot_periods=_periods(units["min_down_h"] + units["cold_after_h"], length),
+        maximum=most, must_run=units["must_run"].to_numpy(bool), block_unit=block_unit,
+        ramp_up_rows=np.flatnonzero((ramp_up < moves) | (start_ramp < most)),
+        ramp_down_rows=np.flatnonzero((ramp_down < moves) | (stop_ramp < most)),
+        hot_rows=np.flatnonzero(numbers["cold_start_cost"] > numbers["start_cost"]),
+    )  # fmt: skip
+
+
+def _unit_inputs(case: Case, span: slice) -> dict[str, Any]:
+    """Availability, minimum output, and cost blocks split at the minimum.
+
+    Up to minimum output a unit has no choice, so that part of its curve is a cost of being on; only
+    what lies between the minimum and the available output is left as blocks. This is exact even
+    where the curve falls below the minimum.
+    """
+    units, blocks = case.units, case.blocks
+    share = series.available_share(case, "unit", units.index, span)
+    available = share * units["max_output_mw"].to_numpy(float)
+    ramp_up = units["ramp_up_mw_per_h"].to_numpy(float) * case.time.period_hours
+    least = reachable_minimum(units["min_output_mw"].to_numpy(float), available, ramp_up)
+    unit = units.index.get_indexer(pd.Index(blocks["unit"]))
+    cost = series.block_cost(case, span)
+    low, high = blocks["from_mw"].to_numpy(float), blocks["up_to_mw"].to_numpy(float)
+    below = np.clip(least[:, unit], low, high) - low
+    width = np.clip(np.minimum(available[:, unit], high) - low - below, 0.0, None)
+    carbon = series.block_emissions(case)
+    data = _unit_data(case, unit, least.min(axis=0, initial=np.inf))
+    used = (width > 0).any(axis=0)
+    out = share == 0
+    on = series.unit_schedule(case, span) & ~out
+    return {
+        "unit": replace(data, block_unit=unit[used]),
+        "unit_min": least, "unit_available": available, "unit_out": out,
+        "unit_falling": np.diff(share, axis=0, prepend=np.ones((1, share.shape[1]))) < 0,
+        "unit_out_before": np.zeros((0, len(units)), dtype=bool),
+        "unit_given": on, "unit_ceiling": reachable_ceiling(on, available, data.ramp_down, data.stop_ramp),
+        "minimum_cost": series.sum_by(below * cost, unit, len(units))
+        + units["no_load_cost_per_h"].to_numpy(float),
+        "minimum_emissions": series.sum_by(below * carbon, unit, len(units)),
+        "block_width": width[:, used], "block_cost": cost[:, used], "block_emissions": carbon[used],
+    }  # fmt: skip
+
+
+def _renewable_inputs(case: Case, span: slice) -> dict[str, Any]:
+    plants = case.renewables
+    return {
+        "renewable_bus": _bus(case, plants["bus"]),
+        "renewable_offer": plants["offer_per_mwh"].to_numpy(float),
+        "renewable_available": series.renewable_available(case, span),
+    }
+
+
+def _store_inputs(case: Case, span: slice, run_periods: int) -> dict[str, Any]:
+    stores, length = case.storage, case.time.period_hours
+    data = StoreData(
+        bus=_bus(case, stores["bus"]),
+        kept=(1 - stores["loss_percent_per_h"].to_numpy(float) / 100) ** length,
+        charged=stores["charge_efficiency"].to_numpy(float) * length,
+        drawn=length / stores["discharge_efficiency"].to_numpy(float),
+        energy=stores["energy_mwh"].to_numpy(float),
+        throughput_cost=stores["throughput_cost_per_mwh"].to_numpy(float),
+        end_value=stores["end_value_per_mwh"].to_numpy(float),
+    )
+    share = series.available_share(case, "storage", stores.index, span)
+    charge = stores["charge_mw"].to_numpy(float)
+    floor = reachable_floor(
+        stores["final_mwh"].to_numpy(float), share * charge * data.charged, data.kept, run_periods
+    )
+    return {
+        "store": data, "charge": charge, "discharge": stores["discharge_mw"].to_numpy(float),
+        "store_share": share, "store_floor": floor,
+    }  # fmt: skip
+
+
+def _tie_inputs(case: Case, span: slice) -> dict[str, Any]:
+    ties = case.dc_ties
+    share = series.available_share(case, "dc_tie", ties.index, span)
+    return {
+        "tie_from": _bus(case, ties["from_bus"]),
+        "tie_to": _bus(case, ties["to_bus"]),
+        "tie_delivered": 1 - ties["loss_percent"].to_numpy(float) / 100,
+        "tie_forward": share * ties["forward_mw"].to_numpy(float),
+        "tie_reverse": share * ties["reverse_mw"].to_numpy(float),
+    }
+
+
+def _load_inputs(case: Case, span: slice) -> dict[str, Any]:
+    return {
+        "load_bus": _bus(case, case.loads["bus"]),
+        "unserved_cost": case.loads["unserved_per_mwh"].to_numpy(float),
+        "demand": series.load_demand(case, span),
+    }

@@ -1,0 +1,265 @@
+"""One window solved: fleet half, line rows as needed, prices back out.
+
+Public names: `Counts`, `WindowError`, `WindowModel`, `WindowSolution`.
+"""
+
+import time
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from simulator.dispatch.compiled import CompiledFleet, compile_fleet
+from simulator.dispatch.fleet import FleetData, fleet_data, given_commitment
+from simulator.dispatch.inputs import WindowInputs
+from simulator.dispatch.limits import FLOW_TOLERANCE, LineRows
+from simulator.dispatch.solver import LinearSolver, SolverError
+from simulator.dispatch.state import State
+
+__all__ = ["Counts", "WindowError", "WindowModel", "WindowSolution"]
+
+Floats = NDArray[np.float64]
+Integers = NDArray[np.int64]
+
+
+@dataclass
+class Counts:
+    """What solving took: solves, line rows added, models built, and seconds by stage."""
+
+    lp_solves: int = 0
+    mip_solves: int = 0
+    line_rows: int = 0
+    builds: int = 0
+    iterations: int = 0
+    seconds: dict[str, float] = field(
+        default_factory=lambda: {"build": 0.0, "solve": 0.0, "network": 0.0}
+    )
+
+    @contextmanager
+    def timed(self, stage: str) -> Iterator[None]:
+        """Add the seconds of a block to a stage."""
+        began = time.perf_counter()
+        yield
+        self.seconds[stage] += time.perf_counter() - began
+
+
+class WindowError(Exception):
+    """A window without an optimum.
+
+    status : the solver's verdict in words
+    broken : (family, period, element) of rows and columns that contradict each other
+    """
+
+    def __init__(self, status: str, broken: list[tuple[str, int, int]]) -> None:
+        self.status, self.broken = status, broken
+        super().__init__(status)
+
+
+@dataclass(frozen=True, eq=False)
+class WindowSolution:
+    """The optimum of one window; arrays have periods first.
+
+    on, start, stop, hot_start : (period, unit), 0..1
+    output (unit), block (block), renewable (plant), charge, discharge (store), tie_forward, tie_reverse
+    (tie), unserved (load), surplus (bus), flow (line) : MW; stored (store) : MWh at the end of a period
+    price : (period, bus), currency/MWh (5.1)
+    line_dual : (period, line), signed, currency/MWh; negative where the flow is held down at +F
+    objective : currency
+    """
+
+    on: Floats
+    start: Floats
+    stop: Floats
+    hot_start: Floats
+    output: Floats
+    block: Floats
+    renewable: Floats
+    charge: Floats
+    discharge: Floats
+    stored: Floats
+    tie_forward: Floats
+    tie_reverse: Floats
+    unserved: Floats
+    surplus: Floats
+    flow: Floats
+    price: Floats
+    line_dual: Floats
+    objective: float
+
+    def state_after(self, before: State, kept: int) -> State:
+        """Return the state at the end of the first `kept` periods (formulation.md 4)."""
+        memory = len(before.starts)
+
+        def recent(now: Floats, past: Floats) -> Floats:
+            return np.concatenate([np.clip(now[:kept][::-1], 0.0, 1.0), past])[:memory]
+
+        return State(
+            output=self.output[kept - 1],
+            on=np.clip(self.on[kept - 1], 0.0, 1.0),
+            starts=recent(self.start, before.starts),
+            stops=recent(self.stop, before.stops),
+            stored=self.stored[kept - 1],
+        )
+
+
+class WindowModel:
+    """The model of every window of one shape: compiled at the first, updated for the others."""
+
+    def __init__(self, inputs: WindowInputs, state: State, counts: Counts) -> None:
+        self.counts = counts
+        counts.builds += 1
+        with self.counts.timed("build"):
+            data = fleet_data(inputs, state)
+            self.fleet: CompiledFleet = compile_fleet(inputs, data)
+            self.shape = _shape(inputs)
+            self._solver = LinearSolver(self.fleet.matrix, self.fleet.vectors(data))
+            self._entries = self.fleet.moving_entries(inputs, data)
+            self.lines = LineRows(inputs, self.fleet)
+            self._first = inputs.first
+
+    def __repr__(self) -> str:
+        rows, columns = self.fleet.matrix.shape
+        return f"WindowModel({rows} rows, {columns} columns, {len(self.lines)} line rows)"
+
+    def fits(self, inputs: WindowInputs) -> bool:
+        """Tell whether a window has this model's shape."""
+        return _shape(inputs) == self.shape
+
+    def solve(self, inputs: WindowInputs, state: State) -> WindowSolution:
+        """Solve a window from a state; raise `WindowError` if there is no optimum."""
+        data = fleet_data(inputs, state)
+        self._load(inputs, data)
+        try:
+            network = self._solve_with_lines(inputs)
+        except SolverError as failure:
+            raise WindowError(failure.status, self._contradictions(failure)) from failure
+        return self._solution(inputs, state, network)
+
+    def _load(self, inputs: WindowInputs, data: FleetData) -> None:
+        """Put a window's numbers in place of the last one's."""
+        self._solver.set_vectors(self.fleet.vectors(data))
+        rows, columns, values = self.fleet.moving_entries(inputs, data)
+        moved = values != self._entries[2]
+        self._solver.set_entries(rows[moved], columns[moved], values[moved])
+        self._entries = rows, columns, values
+        self._start_from_last(inputs)
+
+    def _start_from_last(self, inputs: WindowInputs) -> None:
+        """Move the last basis along with the window, so that hours seen before keep their status.
+
+        Hours that are new take the status of the last ones: the same hours of the day before, where
+        windows overlap by a day.
+        """
+        shift, self._first = inputs.first - self._first, inputs.first
+        if not 0 < shift < inputs.periods:
+            return
+        columns, rows = self._solver.basis()
+        fleet_rows = self.fleet.matrix.shape[0]
+        moved = self.lines.shifted(rows[fleet_rows:], shift, *inputs.rating.shape)
+        self._solver.set_basis(
+            _shifted(columns, self.fleet.columns, shift),
+            np.concatenate([_shifted(rows[:fleet_rows], self.fleet.rows, shift), moved]),
+        )
+
+    def _solve_with_lines(self, inputs: WindowInputs) -> "_Network":
+        """Solve, look for lines beyond their rating, add their rows, until there is none (3)."""
+        with self.counts.timed("network"):
+            network = _Network(inputs)
+            if inputs.limited:
+                self.lines.begin_window(self._solver, inputs, network.fixed)
+        while True:
+            self._run()
+            with self.counts.timed("network"):
+                self._look(inputs, network)
+                missing = network.beyond(inputs) & ~self.lines.active(inputs)
+                if not (inputs.limited and missing.any()):
+                    return network
+                self.lines.add(self._solver, inputs, network.fixed, missing)
+                self.counts.line_rows += int(missing.sum())
+
+    def _run(self) -> None:
+        with self.counts.timed("solve"):
+            self._solver.run()
+        self.counts.lp_solves += 1
+        self.counts.iterations += self._solver.iterations
+
+    def _look(self, inputs: WindowInputs, network: "_Network") -> None:
+        network.solution, network.row_dual = self._solver.solution()
+        injection = self.lines.injection.injections(network.solution, inputs)
+        network.flow = inputs.topology.flows(injection)
+
+    def _contradictions(self, failure: SolverError) -> list[tuple[str, int, int]]:
+        if "infeasible" not in failure.status:
+            return []
+        rows, columns = self._solver.contradictions()
+        fleet_rows = rows[rows < self.fleet.matrix.shape[0]]
+        line_rows = rows[rows >= self.fleet.matrix.shape[0]] - self.fleet.matrix.shape[0]
+        return (
+            [self.fleet.row_name(row) for row in fleet_rows.tolist()]
+            + [self.fleet.column_name(column) for column in columns.tolist()]
+            + [
+                ("line", int(self.lines.period[row]), int(self.lines.line[row]))
+                for row in line_rows
+            ]
+        )
+
+    def _solution(self, inputs: WindowInputs, state: State, network: "_Network") -> WindowSolution:
+        values = self.fleet.named(network.solution)
+        values.pop("exchange")
+        if inputs.mode == "given":
+            given = given_commitment(inputs, state)
+            decided = {"on": given.on, "start": given.start, "stop": given.stop}
+            hot = given.hot_start
+        else:
+            decided = {name: values.pop(name) for name in ("on", "start", "stop")}
+            hot = decided[
+                "start"
+            ].copy()  # where both kinds cost the same, every start is a hot one
+            hot[:, inputs.unit.hot_rows] = values.pop("hot_start")
+        line_dual = self.lines.duals(network.row_dual, inputs) / inputs.period_hours
+        return WindowSolution(
+            **decided, **values, hot_start=hot, flow=network.flow, line_dual=line_dual,
+            price=self._prices(inputs, network, line_dual), objective=self._solver.objective,
+        )  # fmt: skip
+
+    def _prices(self, inputs: WindowInputs, network: "_Network", line_dual: Floats) -> Floats:
+        """Return price_n = (dual of n's balance row)/Δ + Σ_l PTDF_ln·μ_l, array (period, bus) (5.1)."""
+        energy = network.row_dual[self.fleet.rows["balance"]][:, inputs.cells.cell]
+        return energy / inputs.period_hours + inputs.topology.collected(line_dual)
+
+
+def _shifted(status: Integers, families: Mapping[str, Integers], shift: int) -> Integers:
+    """Give each period the status of the one `shift` later; the last ones keep theirs."""
+    moved = status.copy()
+    for positions in families.values():
+        moved[positions[:-shift]] = status[positions[shift:]]
+    return moved
+
+
+class _Network:
+    """The network side of the window being solved."""
+
+    solution: Floats
+    row_dual: Floats
+    flow: Floats
+
+    def __init__(self, inputs: WindowInputs) -> None:
+        self.fixed = inputs.topology.flows(-inputs.demand_at_bus)
+
+    def beyond(self, inputs: WindowInputs) -> NDArray[np.bool_]:
+        """Tell where a flow is beyond its rating, array (period, line)."""
+        over: NDArray[np.bool_] = np.abs(self.flow) > inputs.rating + FLOW_TOLERANCE
+        return over
+
+
+def _shape(inputs: WindowInputs) -> tuple[object, ...]:
+    """Return what has to agree for one compiled model to serve two windows."""
+    return (
+        inputs.mode,
+        inputs.periods,
+        len(inputs.unit.bus),
+        len(inputs.unit.block_unit),
+        inputs.buses,
+    )

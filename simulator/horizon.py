@@ -1,0 +1,260 @@
+"""Windows rolled over a run, and the state handed from one to the next (formulation.md 4).
+
+Public names: `Plan`, `Run`, `plan_run`, `run`.
+"""
+
+from collections.abc import Callable
+from dataclasses import dataclass, field, fields
+from datetime import date, datetime
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from simulator.case import Case
+from simulator.dispatch import RunInputs, State, WindowInputs, WindowModel, WindowSolution
+from simulator.dispatch.inputs import run_inputs
+from simulator.dispatch.state import initial_state
+from simulator.dispatch.window import Counts, WindowError
+from simulator.errors import OptionError, SolveError
+
+__all__ = ["Plan", "Run", "plan_run", "run"]
+
+Integers = NDArray[np.int64]
+Progress = Callable[[int, int], None]
+
+MODES = ("given", "relaxed")
+LIMITS = ("none", "lines")
+_ROUNDING = 1e-9
+
+
+@dataclass(frozen=True)
+class Plan:
+    """What to run: positions on the case's time axis and how it is cut into windows.
+
+    first : position of the first period; periods : how many are kept in all
+    seen : how many periods from the first the hourly data hold, look-ahead included
+    window, keep : periods one optimisation sees, and how many of them are kept
+    mode, limits : commitment mode and line limits
+    """
+
+    first: int
+    periods: int
+    seen: int
+    window: int
+    keep: int
+    mode: str
+    limits: str
+
+    @property
+    def windows(self) -> list[tuple[int, int]]:
+        """First period and length of each window, counted from the run's first period."""
+        starts = range(0, self.periods, self.keep)
+        return [(start, min(self.window, self.seen - start)) for start in starts]
+
+    @property
+    def span(self) -> slice:
+        """The periods any window sees, on the case's time axis."""
+        last = max(start + length for start, length in self.windows)
+        return slice(self.first, self.first + max(last, self.periods))
+
+
+@dataclass(frozen=True, eq=False)
+class Run:
+    """A finished run.
+
+    case, plan, inputs : what was run (`inputs.whole` covers the run and its look-ahead)
+    kept : the kept periods of all windows, end to end
+    window : array (period,), the window a period was kept from
+    counts : solves, rows, builds and seconds
+    """
+
+    case: Case
+    plan: Plan
+    inputs: RunInputs
+    kept: WindowSolution
+    window: Integers
+    counts: Counts = field(repr=False)
+
+    @property
+    def times(self) -> pd.DatetimeIndex:
+        """Starts of the kept periods, UTC."""
+        return self.case.time.periods[self.plan.first : self.plan.first + self.plan.periods]
+
+    @property
+    def kept_inputs(self) -> WindowInputs:
+        """The inputs of the kept periods."""
+        return self.inputs.window(0, 0, self.plan.periods)
+
+
+def plan_run(
+    case: Case,
+    start: str | date | datetime | None = None,
+    hours: float | None = None,
+    *,
+    window_hours: float | None = None,
+    keep_hours: float | None = None,
+    commitment: str | None = None,
+    limits: str | None = None,
+) -> Plan:
+    """Turn what a caller asks for into a `Plan`; what is left out comes from the case.
+
+    start : local time without offset, or with one; a date is its local midnight
+    hours : length of the run, by default a week of 168 hours
+    Raises `OptionError` for what the case or this program cannot do.
+    """
+    horizon = case.settings.horizon
+    window = _periods(case, window_hours or horizon.window_hours, "--window-hours")
+    keep = _periods(case, keep_hours or horizon.keep_hours, "--keep-hours")
+    if keep > window:
+        raise OptionError(
+            f"--keep-hours, must be at most --window-hours, found {keep} periods kept of {window}, "
+            "lengthen the window"
+        )
+    first = 0 if start is None else _position(case, start)
+    periods = _periods(case, 168.0 if hours is None else hours, "--hours")
+    seen = len(case.time) - first
+    if periods > seen:
+        raise OptionError(_too_long(case, first, periods))
+    mode = _choice("--commitment", commitment or case.settings.commitment.mode, MODES)
+    chosen = _choice("--limits", limits or case.settings.network.limits, LIMITS)
+    if case.settings.network.losses:
+        raise OptionError(
+            "network.losses, must be false in this version, found true, set it to false in case.toml"
+        )
+    return Plan(first, periods, seen, window, keep, mode, chosen)
+
+
+def _choice(option: str, value: str, known: tuple[str, ...]) -> str:
+    if value not in known:
+        raise OptionError(
+            f'{option}, must be one of {", ".join(known)} in this version, found "{value}", '
+            f"pass {option} {known[-1]}"
+        )
+    return value
+
+
+def _periods(case: Case, hours: float, option: str) -> int:
+    periods = hours / case.time.period_hours
+    if not (np.isfinite(periods) and periods >= 1 and abs(periods - round(periods)) < _ROUNDING):
+        raise OptionError(
+            f"{option}, must be a whole number of periods of {case.time.period_hours:g} h, at least one, "
+            f"found {hours:g} h, round it"
+        )
+    return round(periods)
+
+
+def _position(case: Case, start: str | date | datetime) -> int:
+    """Find the period that starts at a local or zoned time."""
+    axis = case.time
+    try:
+        moment = pd.Timestamp(start)
+        if moment.tzinfo is None:
+            moment = moment.tz_localize(axis.time_zone)
+    except ValueError as error:
+        raise OptionError(
+            f"--from, must be a date or time that exists once in {axis.time_zone}, found {start}, "
+            "write it like 2027-01-11 or 2027-01-11T06:00+01:00"
+        ) from error
+    position = int(axis.periods.get_indexer(pd.DatetimeIndex([moment.tz_convert("UTC")]))[0])
+    if position < 0:
+        raise OptionError(
+            f"--from, must be the start of a period of the hourly data, found {start}, choose one "
+            f"between {axis.local[0].isoformat()} and {axis.local[-1].isoformat()}"
+        )
+    return position
+
+
+def _too_long(case: Case, first: int, periods: int) -> str:
+    axis = case.time
+    end = axis.periods[first] + pd.Timedelta(hours=periods * axis.period_hours)
+    last = axis.periods[-1] + pd.Timedelta(hours=axis.period_hours)
+    local = [moment.tz_convert(axis.time_zone).isoformat() for moment in (end, last)]
+    return (
+        f"--hours, must end within the hourly data, found a run until {local[0]} where the data end at "
+        f"{local[1]}, shorten the run or add hourly data"
+    )
+
+
+def run(case: Case, plan: Plan, progress: Progress | None = None) -> Run:
+    """Solve the windows of a plan one after another.
+
+    progress : called with (windows done, windows in all) before the first and after each window
+    Raises `SolveError` with the window, the solver's status and the elements that contradict.
+    """
+    inputs = run_inputs(case, plan.span, plan.periods, plan.mode, limited=plan.limits != "none")
+    state = initial_state(case, inputs.whole.unit)
+    solved: list[tuple[int, WindowSolution]] = []
+    model, counts = None, Counts()
+    spans = plan.windows
+    for number, (start, length) in enumerate(spans):
+        if progress:
+            progress(number, len(spans))
+        window = inputs.window(number, start, length)
+        model = _model_for(model, window, state, counts)
+        solution = _solve(case, plan, model, window, state, start)
+        kept = min(plan.keep, plan.periods - start)
+        solved.append((kept, solution))
+        state = solution.state_after(state, kept)
+    if progress:
+        progress(len(spans), len(spans))
+    return Run(case, plan, inputs, _joined(solved), _window_numbers(solved), counts)
+
+
+def _model_for(
+    model: WindowModel | None, window: WindowInputs, state: State, counts: Counts
+) -> WindowModel:
+    """Return a model that fits: the last one, or a new one where the window's shape is another."""
+    if model is not None and model.fits(window):
+        return model
+    return WindowModel(window, state, counts)
+
+
+def _solve(
+    case: Case, plan: Plan, model: WindowModel, window: WindowInputs, state: State, start: int
+) -> WindowSolution:
+    try:
+        return model.solve(window, state)
+    except WindowError as failure:
+        first = plan.first + start
+        elements = [_described(case, first, *broken) for broken in failure.broken]
+        raise SolveError(window.number, failure.status, elements) from failure
+
+
+_ELEMENT = {
+    "unit": ("output_split", "ramp_up", "ramp_down", "switching", "minimum_up", "minimum_down",
+             "hot_start_recent", "hot_start_is_start", "output", "on", "start", "stop", "hot_start"),
+    "plant": ("renewable",),
+    "store": ("store_balance", "charge", "discharge", "stored"),
+    "tie": ("tie_forward", "tie_reverse"),
+    "load": ("unserved",),
+    "line": ("line",),
+}  # fmt: skip
+
+
+def _described(case: Case, first: int, family: str, period: int, element: int) -> str:
+    """Name one row or column for a planner: kind, name, rule and local hour."""
+    hour = case.time.local[first + period].isoformat(timespec="minutes")
+    rule = family.replace("_", " ")
+    tables = {"unit": case.units, "plant": case.renewables, "store": case.storage,
+              "tie": case.dc_ties, "load": case.loads, "line": case.lines}  # fmt: skip
+    for kind, families in _ELEMENT.items():
+        if family in families:
+            return f'{kind} "{tables[kind].index[element]}" ({rule}) at {hour}'
+    return f"{rule} {element} at {hour}"
+
+
+def _joined(solved: list[tuple[int, WindowSolution]]) -> WindowSolution:
+    """Put the kept periods of all windows end to end."""
+    values = {
+        item.name: np.concatenate(
+            [getattr(solution, item.name)[:kept] for kept, solution in solved]
+        )
+        for item in fields(WindowSolution)
+        if item.name != "objective"
+    }
+    return WindowSolution(**values, objective=sum(solution.objective for _, solution in solved))
+
+
+def _window_numbers(solved: list[tuple[int, WindowSolution]]) -> Integers:
+    return np.repeat(np.arange(len(solved)), [kept for kept, _ in solved])

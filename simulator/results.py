@@ -1,0 +1,352 @@
+"""What a run leaves: the dataset of results-format.md, run.json, and the folder they live in.
+
+Public names: `FORMAT`, `open_run`, `run_record`, `save`, `to_dataset`.
+
+The only writer of that contract: each variable is declared once, with its dimensions, unit
+and name.
+"""
+
+import json
+import os
+import shutil
+from collections.abc import Mapping
+from importlib.metadata import version
+from pathlib import Path
+from tempfile import mkdtemp
+from typing import Any
+
+import numpy as np
+import pandas as pd
+import xarray as xr
+from numpy.typing import NDArray
+
+from simulator import prices
+from simulator.case import series
+from simulator.errors import OptionError
+from simulator.horizon import Run
+
+__all__ = ["FORMAT", "open_run", "run_record", "save", "to_dataset"]
+
+Floats = NDArray[np.float64]
+Entry = tuple[tuple[str, ...], str, str]
+
+FORMAT = 1
+PRICED = 1e-6
+"""A shadow price above this, currency/MWh, makes an hour a congestion hour (formulation.md 5.3)."""
+AT_LIMIT = 1e-4
+"""A flow within this of its rating, MW, is at its limit (formulation.md 5.3)."""
+
+COMPONENTS = (
+    "unit_running", "unit_start", "renewable", "storage", "unserved", "surplus", "reserve_shortage",
+)  # fmt: skip
+PACKAGES = ("rampline", "highspy", "pyomo", "xarray", "numpy")
+MONEY, PRICE = "currency", "currency/MWh"
+
+VARIABLES: Mapping[str, Entry] = {
+    "unit_output": (("time", "unit"), "MW", "output"),
+    "unit_available": (("time", "unit"), "MW", "output that outages and derates leave"),
+    "unit_on": (("time", "unit"), "1", "share of the unit that is on"),
+    "unit_start": (("time", "unit"), "1", "share of the unit that starts"),
+    "renewable_available": (("time", "plant"), "MW", "output that wind, sun or water would allow"),
+    "renewable_output": (("time", "plant"), "MW", "output"),
+    "curtailment": (("time", "plant"), "MW", "available output not taken"),
+    "storage_charge": (("time", "store"), "MW", "charging"),
+    "storage_discharge": (("time", "store"), "MW", "discharging"),
+    "stored_energy": (("time", "store"), "MWh", "energy stored at the end of the period"),
+    "load_demand": (("time", "load"), "MW", "demand"),
+    "load_unserved": (("time", "load"), "MW", "demand not served"),
+    "surplus": (("time", "bus"), "MW", "power that had to be spilled"),
+    "tie_flow": (
+        ("time", "tie"),
+        "MW",
+        "flow at the sending end, positive from from_bus to to_bus",
+    ),
+    "line_flow": (("time", "line"), "MW", "flow, positive from from_bus to to_bus"),
+    "line_rating": (("time", "line"), "MW", "rating in the period"),
+    "line_shadow_price": (("time", "line"), PRICE, "saving from one more MW of rating"),
+    "congestion_rent": (("time", "line"), MONEY, "shadow price times flow"),
+    "price": (("time", "bus"), PRICE, "locational price"),
+    "price_energy": (("time", "bus"), PRICE, "price at the island's load-weighted reference"),
+    "price_congestion": (("time", "bus"), PRICE, "price part caused by lines at their limit"),
+    "price_loss": (("time", "bus"), PRICE, "price part caused by losses"),
+    "reserve_price": (("time", "product"), PRICE, "reserve price"),
+    "reserve_shortage": (("time", "product"), "MW", "reserve not provided"),
+    "unit_cost": (("time", "unit"), MONEY, "running cost"),
+    "unit_start_cost": (("time", "unit"), MONEY, "start cost"),
+    "emissions": (("time", "unit"), "t", "carbon dioxide"),
+    "cost": (("time", "component"), MONEY, "cost"),
+    "congestion_hours": (("line",), "h", "hours with a shadow price"),
+    "hours_at_limit": (("line",), "h", "hours with the flow at the rating"),
+    "ramp_limited_hours": (("unit",), "h", "hours in which output moved as fast as the unit can"),
+    "window": (("time",), "1", "number of the window the period was kept from"),
+}
+
+
+def to_dataset(run: Run) -> xr.Dataset:
+    """Return the results of a run as one labelled dataset (results-format.md)."""
+    coordinates = _coordinates(run)
+    values = _powers(run) | _lines_and_prices(run) | _costs(run) | _summaries(run)
+    variables = {
+        name: (dims, values[name], {"units": unit, "long_name": label})
+        for name, (dims, unit, label) in VARIABLES.items()
+    }
+    settings = run.case.settings
+    attributes = {
+        "Conventions": "CF-1.11", "format": FORMAT, "title": f"Dispatch of {settings.name}",
+        "case_name": settings.name, "currency": settings.currency, "time_zone": settings.time_zone,
+        "period_hours": run.case.time.period_hours, "commitment": run.plan.mode,
+        "limits": run.plan.limits, "base_mva": settings.base_mva,
+    }  # fmt: skip
+    return xr.Dataset(variables, coordinates, attributes)
+
+
+def _coordinates(run: Run) -> dict[str, Any]:
+    case, names = run.case, np.asarray([], dtype=str)
+    tables = {
+        "bus": (case.buses, {"zone": "", "voltage_kv": "kV", "latitude": "degrees_north",
+                             "longitude": "degrees_east"}),
+        "line": (case.lines, {"from_bus": "", "to_bus": ""}),
+        "unit": (case.units, {"bus": "", "technology": "", "fuel": "", "max_output_mw": "MW"}),
+        "plant": (case.renewables, {"bus": "", "technology": "", "capacity_mw": "MW"}),
+        "store": (case.storage, {"bus": "", "energy_mwh": "MWh"}),
+        "tie": (case.dc_ties, {"from_bus": "", "to_bus": ""}),
+        "load": (case.loads, {"bus": ""}),
+    }  # fmt: skip
+    found: dict[str, Any] = {
+        "time": ("time", run.times.tz_localize(None), {
+            "standard_name": "time", "axis": "T", "long_name": "start of the period, UTC",
+        }),
+        "product": ("product", names),
+        "component": ("component", np.array(COMPONENTS)),
+    }  # fmt: skip
+    for dimension, (table, columns) in tables.items():
+        found[dimension] = (dimension, table.index.to_numpy(dtype=str))
+        for column, unit in columns.items():
+            found[f"{dimension}_{column}"] = _coordinate(dimension, table[column], unit)
+    return found
+
+
+def _coordinate(dimension: str, values: pd.Series, unit: str) -> tuple[str, Any, dict[str, str]]:
+    if unit:
+        return dimension, values.to_numpy(float), {"units": unit}
+    return dimension, values.to_numpy(dtype=str), {}
+
+
+def _powers(run: Run) -> dict[str, Floats]:
+    kept, inputs = run.kept, run.kept_inputs
+    return {
+        "unit_output": kept.output,
+        "unit_available": inputs.unit_available,
+        "unit_on": kept.on,
+        "unit_start": kept.start,
+        "renewable_available": inputs.renewable_available,
+        "renewable_output": kept.renewable,
+        "curtailment": np.maximum(inputs.renewable_available - kept.renewable, 0.0),
+        "storage_charge": kept.charge,
+        "storage_discharge": kept.discharge,
+        "stored_energy": kept.stored,
+        "load_demand": inputs.demand,
+        "load_unserved": kept.unserved,
+        "surplus": kept.surplus,
+        "tie_flow": kept.tie_forward - kept.tie_reverse,
+        "line_flow": kept.flow,
+        "line_rating": inputs.rating,
+    }
+
+
+def _lines_and_prices(run: Run) -> dict[str, Floats]:
+    kept, inputs = run.kept, run.kept_inputs
+    island = np.stack([topology.island for topology in inputs.topology.topologies])
+    island = island[inputs.topology.index]
+    weights = prices.reference_weights(inputs.demand_at_bus, island)
+    energy, congestion = prices.energy_and_congestion(kept.price, weights, island)
+    none = np.zeros((len(run.times), 0))
+    return {
+        "line_shadow_price": np.abs(kept.line_dual),
+        "congestion_rent": prices.congestion_rent(kept.line_dual, kept.flow, inputs.period_hours),
+        "price": kept.price,
+        "price_energy": energy,
+        "price_congestion": congestion,
+        "price_loss": np.zeros_like(kept.price),
+        "reserve_price": none,
+        "reserve_shortage": none,
+    }
+
+
+def _costs(run: Run) -> dict[str, Floats]:
+    kept, inputs, unit = run.kept, run.kept_inputs, run.kept_inputs.unit
+    length = inputs.period_hours
+    units = len(unit.bus)
+    above = series.sum_by(inputs.block_cost * kept.block, unit.block_unit, units)
+    running = inputs.minimum_cost * kept.on + above
+    burnt = series.sum_by(inputs.block_emissions * kept.block, unit.block_unit, units)
+    emissions = inputs.minimum_emissions * kept.on + burnt
+    starting = unit.hot_start * kept.hot_start + unit.cold_start * (kept.start - kept.hot_start)
+    by_component = [
+        running.sum(axis=1) * length,
+        starting.sum(axis=1),
+        kept.renewable @ inputs.renewable_offer * length,
+        kept.discharge @ inputs.store.throughput_cost * length,
+        kept.unserved @ inputs.unserved_cost * length,
+        kept.surplus.sum(axis=1) * inputs.surplus_cost * length,
+        np.zeros(len(running)),
+    ]
+    return {
+        "unit_cost": running * length,
+        "unit_start_cost": starting,
+        "emissions": emissions * length,
+        "cost": np.stack(by_component, axis=1),
+    }
+
+
+def _summaries(run: Run) -> dict[str, Any]:
+    kept, inputs = run.kept, run.kept_inputs
+    length = inputs.period_hours
+    at_limit = np.abs(kept.flow) >= inputs.rating - AT_LIMIT
+    return {
+        "congestion_hours": (np.abs(kept.line_dual) > PRICED).sum(axis=0) * length,
+        "hours_at_limit": at_limit.sum(axis=0) * length,
+        "ramp_limited_hours": _ramp_limited(run).sum(axis=0) * length,
+        "window": run.window,
+    }
+
+
+def _ramp_limited(run: Run) -> NDArray[np.bool_]:
+    """Tell where a unit that stays on moved by its whole ramp, array (period − 1, unit)."""
+    kept, unit = run.kept, run.kept_inputs.unit
+    move = np.diff(kept.output, axis=0)
+    staying = (kept.on[1:] > 1 - 1e-6) & (kept.on[:-1] > 1 - 1e-6)
+    found: NDArray[np.bool_] = staying & (
+        (move >= unit.ramp_up - AT_LIMIT) | (move <= AT_LIMIT - unit.ramp_down)
+    )
+    return found
+
+
+def run_record(run: Run, dataset: xr.Dataset, seconds: Mapping[str, float]) -> dict[str, Any]:
+    """Return run.json as a plain dictionary, audit not included."""
+    counts, axis = run.counts, run.case.time
+    end = run.times[-1] + pd.Timedelta(hours=axis.period_hours)
+    spent = {**counts.seconds, **seconds}
+    return {
+        "format": FORMAT,
+        "case": run.case.settings.name,
+        "from": run.times[0].tz_convert(axis.time_zone).isoformat(),
+        "until": end.tz_convert(axis.time_zone).isoformat(),
+        "settings": _settings(run),
+        "totals": _totals(dataset),
+        "counts": {
+            "windows": int(run.window[-1]) + 1, "lp_solves": counts.lp_solves,
+            "mip_solves": counts.mip_solves, "line_rows": counts.line_rows,
+            "rebuilds": max(counts.builds - 1, 0), "simplex_iterations": counts.iterations,
+        },
+        "seconds": {name: round(value, 4) for name, value in spent.items()},
+        "versions": {name: version(name) for name in PACKAGES},
+    }  # fmt: skip
+
+
+def _settings(run: Run) -> dict[str, Any]:
+    """Return the settings as they were in force, the call's own choices included."""
+    settings: dict[str, Any] = run.case.settings.model_dump()
+    length = run.case.time.period_hours
+    settings["horizon"] = {
+        "window_hours": run.plan.window * length, "keep_hours": run.plan.keep * length,
+        "hours": run.plan.periods * length, "period_hours": length,
+    }  # fmt: skip
+    settings["commitment"]["mode"] = run.plan.mode
+    settings["network"]["limits"] = run.plan.limits
+    return settings
+
+
+def _totals(dataset: xr.Dataset) -> dict[str, float]:
+    length = float(dataset.attrs["period_hours"])
+
+    def energy(name: str) -> float:
+        return float(dataset[name].sum()) * length
+
+    return {
+        "cost": float(dataset["cost"].sum()),
+        "served_mwh": energy("load_demand") - energy("load_unserved"),
+        "unserved_mwh": energy("load_unserved"),
+        "curtailed_mwh": energy("curtailment"),
+        "surplus_mwh": energy("surplus"),
+        "emissions_t": float(dataset["emissions"].sum()),
+        "congestion_rent": float(dataset["congestion_rent"].sum()),
+        "congestion_hours": float(dataset["congestion_hours"].sum()),
+    }
+
+
+def save(dataset: xr.Dataset, record: Mapping[str, Any], folder: Path, *, force: bool) -> None:
+    """Write a run's folder whole: under another name first, then moved into place.
+
+    An existing folder is refused unless `force`; whatever cuts this off leaves it as it was.
+    """
+    refuse_existing(folder, force=force)
+    folder.parent.mkdir(parents=True, exist_ok=True)
+    made = Path(mkdtemp(prefix=f".{folder.name}-", dir=folder.parent))
+    try:
+        made.chmod(0o755)
+        write_dataset(dataset, made / "results.nc")
+        (made / "run.json").write_text(json.dumps(record, indent=2) + "\n", encoding="utf-8")
+        _move(made, folder)
+    finally:
+        shutil.rmtree(made, ignore_errors=True)
+
+
+def refuse_existing(folder: Path, *, force: bool) -> None:
+    """Refuse a folder that is there, unless forced, or that is not the folder of a run."""
+    if not folder.exists():
+        return
+    if not force:
+        raise OptionError(
+            f"--out, must not exist yet, found {folder}, choose another folder or pass --force"
+        )
+    if not folder.is_dir() or (any(folder.iterdir()) and not (folder / "run.json").exists()):
+        raise OptionError(
+            f"--force, replaces only the folder of a run, found {folder} without run.json, "
+            "choose another folder"
+        )
+
+
+def write_dataset(dataset: xr.Dataset, path: Path) -> None:
+    """Write netCDF-4, compressed, with times as whole minutes."""
+    compressed = {"zlib": True, "complevel": 1, "shuffle": True}
+    encoding: dict[Any, dict[str, Any]] = {
+        name: {"_FillValue": None, **(compressed if variable.size else {})}
+        for name, variable in dataset.data_vars.items()
+    }
+    encoding["time"] = {"units": "minutes since 1970-01-01 00:00:00", "dtype": "int64"}
+    dataset.to_netcdf(path, engine="netcdf4", encoding=encoding)
+
+
+def _move(made: Path, folder: Path) -> None:
+    """Put the new folder in place of an old one; the old one is back if that fails."""
+    if not folder.exists():
+        made.rename(folder)
+        return
+    aside = Path(mkdtemp(prefix=f".{folder.name}-old-", dir=folder.parent))
+    old = aside / "run"
+    folder.rename(old)
+    try:
+        made.rename(folder)
+    except OSError:
+        old.rename(folder)
+        raise
+    finally:
+        shutil.rmtree(aside, ignore_errors=True)
+
+
+def open_run(folder: str | os.PathLike[str]) -> xr.Dataset:
+    """Open the dataset of a run's folder; raise `OptionError` if it is not one."""
+    path = Path(folder) / "results.nc"
+    if not path.is_file():
+        raise OptionError(
+            f"the run folder, must hold results.nc, found none in {folder}, give the folder that "
+            "`rampline week` wrote"
+        )
+    dataset = xr.load_dataset(path, engine="netcdf4")
+    if dataset.attrs.get("format") != FORMAT:
+        raise OptionError(
+            f"{path}, must be results format {FORMAT}, found {dataset.attrs.get('format')}, "
+            "run it again"
+        )
+    return dataset
