@@ -223,7 +223,7 @@ def _solve(
 
 _ELEMENT = {
     "unit": ("output_split", "ramp_up", "ramp_down", "switching", "minimum_up", "minimum_down",
-             "hot_start_recent", "hot_start_is_start", "output", "on", "start", "stop", "hot_start"),
+             "cold_start_stops", "output", "on", "start", "stop", "cold_start"),
     "plant": ("renewable",),
     "store": ("store_balance", "charge", "discharge", "stored"),
     "tie": ("tie_forward", "tie_reverse"),

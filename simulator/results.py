@@ -181,7 +181,7 @@ def _costs(run: Run) -> dict[str, Floats]:
     running = inputs.minimum_cost * kept.on + above
     burnt = series.sum_by(inputs.block_emissions * kept.block, unit.block_unit, units)
     emissions = inputs.minimum_emissions * kept.on + burnt
-    starting = unit.hot_start * kept.hot_start + unit.cold_start * (kept.start - kept.hot_start)
+    starting = unit.hot_start * kept.start + (unit.cold_start - unit.hot_start) * kept.cold_start
     by_component = [
         running.sum(axis=1) * length,
         starting.sum(axis=1),

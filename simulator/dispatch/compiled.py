@@ -5,7 +5,9 @@ Public names: `CompiledFleet`, `Vectors`, `compile_fleet`.
 The same positions carry a window's numbers in and its solution and duals back out by name.
 """
 
-from collections.abc import Mapping
+import gc
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import Any
 
@@ -123,7 +125,23 @@ def _name(families: Mapping[str, Integers], position: int) -> tuple[str, int, in
 
 def compile_fleet(inputs: WindowInputs, data: FleetData) -> CompiledFleet:
     """State one window in Pyomo and turn it into a matrix; needed once a window shape."""
-    model = state_fleet(inputs, data)
+    with _collector_off():
+        return _compile(state_fleet(inputs, data))
+
+
+@contextmanager
+def _collector_off() -> Iterator[None]:
+    """Keep the garbage collector from walking a growing model again and again."""
+    was_on = gc.isenabled()
+    gc.disable()
+    try:
+        yield
+    finally:
+        if was_on:
+            gc.enable()
+
+
+def _compile(model: Any) -> CompiledFleet:
     model.objective = pyo.Objective(expr=0.0)
     form = WriterFactory("compile_standard_form").write(model, mixed_form=True)
     column_at = {id(variable): position for position, variable in enumerate(form.columns)}

@@ -52,7 +52,7 @@ class Given:
     on: Floats
     start: Floats
     stop: Floats
-    hot_start: Floats
+    cold_start: Floats
 
 
 def fleet_data(inputs: WindowInputs, state: State) -> FleetData:
@@ -127,7 +127,7 @@ def _commitment_columns(inputs: WindowInputs, state: State) -> dict[str, Bounds]
         "start": _between(0.0, switch),
         "stop": _between(0.0, switch),
         "block": _between(0.0, inputs.block_width),
-        "hot_start": _between(0.0, switch[:, inputs.unit.hot_rows]),
+        "cold_start": _between(0.0, switch[:, inputs.unit.cold_rows]),
     }
 
 
@@ -151,12 +151,12 @@ def _costs(inputs: WindowInputs) -> dict[str, Floats]:
 
 
 def _commitment_costs(inputs: WindowInputs) -> dict[str, Floats]:
-    unit, hot = inputs.unit, inputs.unit.hot_rows
-    saved = unit.hot_start - np.maximum(unit.cold_start, unit.hot_start)
+    unit, dear = inputs.unit, inputs.unit.cold_rows
+    extra = unit.cold_start[dear] - unit.hot_start[dear]
     return {
         "on": inputs.minimum_cost * inputs.period_hours,
-        "start": np.tile(unit.hot_start - saved, (inputs.periods, 1)),
-        "hot_start": np.tile(saved[hot], (inputs.periods, 1)),
+        "start": np.tile(unit.hot_start, (inputs.periods, 1)),
+        "cold_start": np.tile(extra, (inputs.periods, 1)),
     }
 
 
@@ -196,7 +196,7 @@ def _commitment_rows(inputs: WindowInputs, state: State) -> dict[str, Bounds]:
     lower, upper = switched.copy(), switched.copy()
     free = np.isnan(state.on)
     lower[0, free], upper[0, free] = -INFINITY, INFINITY
-    hot = inputs.unit.hot_rows
+    dear = inputs.unit.cold_rows
     hot_before = _history_sum(state.stops, inputs.unit.hot_periods, inputs.periods)
     return {
         "output_split": _exactly(none),
@@ -206,8 +206,7 @@ def _commitment_rows(inputs: WindowInputs, state: State) -> dict[str, Bounds]:
         "ramp_down": _below(down[:, inputs.unit.ramp_down_rows]),
         "minimum_up": _below(-_recent_starts(inputs, state)),
         "minimum_down": _below(1.0 - _recent_stops(inputs, state)),
-        "hot_start_recent": _below(hot_before[:, hot]),
-        "hot_start_is_start": _below(none[:, hot]),
+        "cold_start_stops": _below(hot_before[:, dear]),
     }
 
 
@@ -234,7 +233,7 @@ def given_commitment(inputs: WindowInputs, state: State) -> Given:
     start, stop = np.maximum(change, 0.0), np.maximum(-change, 0.0)
     recent = _history_sum(state.stops, inputs.unit.hot_periods, inputs.periods)
     recent += _lagged_sum(stop, inputs.unit.hot_periods)
-    return Given(on, start, stop, np.minimum(start, np.minimum(recent, 1.0)))
+    return Given(on, start, stop, np.clip(start - recent, 0.0, None))
 
 
 def _lagged_sum(values: Floats, lags: Integers) -> Floats:

@@ -18,6 +18,7 @@ from simulator.dispatch.inputs import WindowInputs
 __all__ = ["state_fleet"]
 
 Model = Any
+Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
 
 
@@ -25,39 +26,42 @@ def state_fleet(inputs: WindowInputs, data: FleetData) -> Model:
     """State the columns and rows of one window (formulation.md 2.1 to 2.5)."""
     model = pyo.ConcreteModel()
     model.inputs, model.data = inputs, data
+    model.right = {family: _right_hand_sides(*bounds) for family, bounds in data.rows.items()}
+    model.moving = {entry: values.tolist() for entry, values in data.coefficients.items()}
+    model.blocks_of = _members(inputs.unit.block_unit, len(inputs.unit.bus))
     for family, (lower, _) in data.columns.items():
-        periods, elements = (pyo.RangeSet(0, length - 1) for length in lower.shape)
-        setattr(model, family, pyo.Var(periods, elements))
-    rules = COMMITMENT_ROWS if data.committed else GIVEN_ROWS
-    for family, rule in rules.items():
-        periods, elements = (pyo.RangeSet(0, length - 1) for length in data.rows[family][0].shape)
-        setattr(model, family, pyo.Constraint(periods, elements, rule=rule))
+        setattr(model, family, pyo.Var(*_ranges(lower)))
+    for family, rule in (COMMITMENT_ROWS if data.committed else GIVEN_ROWS).items():
+        setattr(model, family, pyo.Constraint(*_ranges(data.rows[family][0]), rule=rule))
     return model
 
 
-def _least(row: str, model: Model, t: int, element: int) -> float:
-    return float(model.data.rows[row][0][t, element])
+def _ranges(values: Floats) -> list[Any]:
+    return [pyo.RangeSet(0, length - 1) for length in values.shape]
 
 
-def _most(row: str, model: Model, t: int, element: int) -> float:
-    """Return the right-hand side; rows that are open in this window still have to be stated."""
-    return float(np.nan_to_num(model.data.rows[row][1][t, element], posinf=1e30))
+def _right_hand_sides(lower: Floats, upper: Floats) -> list[list[float]]:
+    """Return the bound a row is stated with; a row open in this window still has to be stated."""
+    return np.where(np.isfinite(upper), upper, np.where(np.isfinite(lower), lower, _OPEN)).tolist()
+
+
+def _members(group: Integers, groups: int) -> list[list[int]]:
+    return [np.flatnonzero(group == number).tolist() for number in range(groups)]
 
 
 def output_split(model: Model, t: int, unit: int) -> Any:
     """2.1: output = minimum·on + Σ blocks above the minimum."""
-    blocks = np.flatnonzero(model.inputs.unit.block_unit == unit)
-    above = sum(model.block[t, block] for block in blocks.tolist())
+    above = sum(model.block[t, block] for block in model.blocks_of[unit])
     if not model.data.committed:
-        return model.output[t, unit] - above == _most("output_split", model, t, unit)
-    minimum = model.data.coefficients["output_split", "on"][t, unit]
+        return model.output[t, unit] - above == model.right["output_split"][t][unit]
+    minimum = model.moving["output_split", "on"][t][unit]
     return model.output[t, unit] + minimum * model.on[t, unit] - above == 0.0
 
 
 def block_width(model: Model, t: int, block: int) -> Any:
     """2.1: a block is available only while its unit is on: q ≤ width·on."""
     unit = int(model.inputs.unit.block_unit[block])
-    width = model.data.coefficients["block_width", "on"][t, block]
+    width = model.moving["block_width", "on"][t][block]
     return model.block[t, block] + width * model.on[t, unit] <= 0.0
 
 
@@ -71,7 +75,7 @@ def ramp_up(model: Model, t: int, position: int) -> Any:
         rise -= float(min(data.start_ramp[unit], widest)) * model.start[t, unit]
         if t:
             rise -= float(min(data.ramp_up[unit], widest)) * model.on[t - 1, unit]
-    return rise <= _most("ramp_up", model, t, position)
+    return rise <= model.right["ramp_up"][t][position]
 
 
 def ramp_down(model: Model, t: int, position: int) -> Any:
@@ -83,51 +87,48 @@ def ramp_down(model: Model, t: int, position: int) -> Any:
         widest = data.maximum[unit]
         fall -= float(min(data.stop_ramp[unit], widest)) * model.stop[t, unit]
         fall -= float(min(data.ramp_down[unit], widest)) * model.on[t, unit]
-    return fall <= _most("ramp_down", model, t, position)
+    return fall <= model.right["ramp_down"][t][position]
 
 
 def switching(model: Model, t: int, unit: int) -> Any:
     """2.3: on_t − on_{t−1} = start_t − stop_t."""
     change = model.on[t, unit] - (model.on[t - 1, unit] if t else 0.0)
-    right = float(np.nan_to_num(_least("switching", model, t, unit), neginf=0.0))
-    return change - model.start[t, unit] + model.stop[t, unit] == right
+    switched = model.start[t, unit] - model.stop[t, unit]
+    return change - switched == model.right["switching"][t][unit]
 
 
 def minimum_up(model: Model, t: int, unit: int) -> Any:
     """2.3: Σ starts within the minimum up time ≤ on_t (Rajan & Takriti, IBM RC23628, 2005)."""
-    counts = model.data.coefficients["minimum_up", "start"][:, t, unit]
-    started = sum(model.start[t - lag, unit] for lag in np.flatnonzero(counts).tolist())
-    return started - model.on[t, unit] <= _most("minimum_up", model, t, unit)
+    counts = model.moving["minimum_up", "start"]
+    started = sum(model.start[t - lag, unit] for lag in range(len(counts)) if counts[lag][t][unit])
+    return started - model.on[t, unit] <= model.right["minimum_up"][t][unit]
 
 
 def minimum_down(model: Model, t: int, unit: int) -> Any:
     """2.3: Σ stops within the minimum down time ≤ 1 − on_t (same source)."""
-    counts = model.data.coefficients["minimum_down", "stop"][:, t, unit]
-    stopped = sum(model.stop[t - lag, unit] for lag in np.flatnonzero(counts).tolist())
-    return stopped + model.on[t, unit] <= _most("minimum_down", model, t, unit)
+    counts = model.moving["minimum_down", "stop"]
+    stopped = sum(model.stop[t - lag, unit] for lag in range(len(counts)) if counts[lag][t][unit])
+    return stopped + model.on[t, unit] <= model.right["minimum_down"][t][unit]
 
 
-def hot_start_recent(model: Model, t: int, position: int) -> Any:
-    """2.3: a start is hot only if the unit stopped recently: hot_t ≤ Σ recent stops."""
-    unit = int(model.inputs.unit.hot_rows[position])
+def cold_start_stops(model: Model, t: int, position: int) -> Any:
+    """2.3: a start is cold as far as the unit did not stop recently: cold_t ≥ start_t − Σ recent stops."""
+    unit = int(model.inputs.unit.cold_rows[position])
     reach = min(int(model.inputs.unit.hot_periods[unit]), t)
     recent = sum(model.stop[t - lag, unit] for lag in range(1, reach + 1))
-    return model.hot_start[t, position] - recent <= _most("hot_start_recent", model, t, position)
-
-
-def hot_start_is_start(model: Model, t: int, position: int) -> Any:
-    """2.3: hot_t ≤ start_t."""
-    unit = int(model.inputs.unit.hot_rows[position])
-    return model.hot_start[t, position] - model.start[t, unit] <= 0.0
+    left = model.start[t, unit] - recent - model.cold_start[t, position]
+    return left <= model.right["cold_start_stops"][t][position]
 
 
 def store_balance(model: Model, t: int, store: int) -> Any:
     """2.4: E_t = kept·E_{t−1} + η_c·Δ·charge − Δ/η_d·discharge."""
-    data = model.inputs.store
-    change = model.stored[t, store] - (data.kept[store] * model.stored[t - 1, store] if t else 0.0)
-    gained = data.charged[store] * model.charge[t, store]
-    change += data.drawn[store] * model.discharge[t, store] - gained
-    return change == _most("store_balance", model, t, store)
+    kept, charged, drawn = (
+        float(values[store])
+        for values in (model.inputs.store.kept, model.inputs.store.charged, model.inputs.store.drawn)
+    )
+    change = model.stored[t, store] - (kept * model.stored[t - 1, store] if t else 0.0)
+    change += drawn * model.discharge[t, store] - charged * model.charge[t, store]
+    return change == model.right["store_balance"][t][store]
 
 
 def balance(model: Model, t: int, cell: int) -> Any:
@@ -159,8 +160,10 @@ def balance(model: Model, t: int, cell: int) -> Any:
         - summed("surplus", np.arange(inputs.buses))
         + received
     )
-    return total == _most("balance", model, t, cell)
+    return total == model.right["balance"][t][cell]
 
+
+_OPEN = 1e30
 
 GIVEN_ROWS = {
     "output_split": output_split,
@@ -174,6 +177,5 @@ COMMITMENT_ROWS = GIVEN_ROWS | {
     "switching": switching,
     "minimum_up": minimum_up,
     "minimum_down": minimum_down,
-    "hot_start_recent": hot_start_recent,
-    "hot_start_is_start": hot_start_is_start,
+    "cold_start_stops": cold_start_stops,
 }

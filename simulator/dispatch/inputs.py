@@ -34,7 +34,7 @@ class UnitData:
     hot_periods : a start within this many periods of the stop is hot
     maximum : MW, with nothing out; must_run : bool
     block_unit : array (block,), the unit a cost block belongs to
-    ramp_up_rows, ramp_down_rows : positions of the units whose ramps can bind; hot_rows : of those
+    ramp_up_rows, ramp_down_rows : positions of the units whose ramps can bind; cold_rows : of those
         whose cold starts cost more than hot ones. Fixed for a run, so that its windows have one shape.
     """
 
@@ -54,7 +54,7 @@ class UnitData:
     block_unit: Integers
     ramp_up_rows: Integers
     ramp_down_rows: Integers
-    hot_rows: Integers
+    cold_rows: Integers
 
     @property
     def memory(self) -> int:
@@ -245,7 +245,7 @@ def _unit_data(case: Case, block_unit: Integers, least: Floats) -> UnitData:
         maximum=most, must_run=units["must_run"].to_numpy(bool), block_unit=block_unit,
         ramp_up_rows=np.flatnonzero((ramp_up < moves) | (start_ramp < most)),
         ramp_down_rows=np.flatnonzero((ramp_down < moves) | (stop_ramp < most)),
-        hot_rows=np.flatnonzero(numbers["cold_start_cost"] > numbers["start_cost"]),
+        cold_rows=np.flatnonzero(numbers["cold_start_cost"] > numbers["start_cost"]),
     )  # fmt: skip
 
 

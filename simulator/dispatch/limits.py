@@ -123,6 +123,13 @@ class LineRows:
         moved = by_place[self.period + shift, self.line]
         return np.where(self.period < periods - shift, moved, status)
 
+    def carried(self, shift: int, inputs: WindowInputs) -> Booleans:
+        """Tell which (period, line) were at their limit in the last window and have no row here yet."""
+        wanted = np.zeros(inputs.rating.shape, dtype=bool)
+        bound = (self.idle == 0) & (self.period >= shift)
+        wanted[self.period[bound] - shift, self.line[bound]] = True
+        return wanted & ~self.active(inputs)
+
     def _take(self, keep: Booleans) -> None:
         self.line, self.period, self.topology, self.idle = (
             values[keep] for values in (self.line, self.period, self.topology, self.idle)

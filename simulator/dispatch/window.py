@@ -61,7 +61,7 @@ class WindowError(Exception):
 class WindowSolution:
     """The optimum of one window; arrays have periods first.
 
-    on, start, stop, hot_start : (period, unit), 0..1
+    on, start, stop, cold_start : (period, unit), 0..1
     output (unit), block (block), renewable (plant), charge, discharge (store), tie_forward, tie_reverse
     (tie), unserved (load), surplus (bus), flow (line) : MW; stored (store) : MWh at the end of a period
     price : (period, bus), currency/MWh (5.1)
@@ -72,7 +72,7 @@ class WindowSolution:
     on: Floats
     start: Floats
     stop: Floats
-    hot_start: Floats
+    cold_start: Floats
     output: Floats
     block: Floats
     renewable: Floats
@@ -117,7 +117,7 @@ class WindowModel:
             self._solver = LinearSolver(self.fleet.matrix, self.fleet.vectors(data))
             self._entries = self.fleet.moving_entries(inputs, data)
             self.lines = LineRows(inputs, self.fleet)
-            self._first = inputs.first
+            self._first, self._shift = inputs.first, 0
 
     def __repr__(self) -> str:
         rows, columns = self.fleet.matrix.shape
@@ -153,7 +153,8 @@ class WindowModel:
         windows overlap by a day.
         """
         shift, self._first = inputs.first - self._first, inputs.first
-        if not 0 < shift < inputs.periods:
+        self._shift = shift if 0 < shift < inputs.periods else 0
+        if not self._shift:
             return
         columns, rows = self._solver.basis()
         fleet_rows = self.fleet.matrix.shape[0]
@@ -169,6 +170,7 @@ class WindowModel:
             network = _Network(inputs)
             if inputs.limited:
                 self.lines.begin_window(self._solver, inputs, network.fixed)
+                self._add(inputs, network, self.lines.carried(self._shift, inputs))
         while True:
             self._run()
             with self.counts.timed("network"):
@@ -176,8 +178,12 @@ class WindowModel:
                 missing = network.beyond(inputs) & ~self.lines.active(inputs)
                 if not (inputs.limited and missing.any()):
                     return network
-                self.lines.add(self._solver, inputs, network.fixed, missing)
-                self.counts.line_rows += int(missing.sum())
+                self._add(inputs, network, missing)
+
+    def _add(self, inputs: WindowInputs, network: "_Network", missing: NDArray[np.bool_]) -> None:
+        if missing.any():
+            self.lines.add(self._solver, inputs, network.fixed, missing)
+            self.counts.line_rows += int(missing.sum())
 
     def _run(self) -> None:
         with self.counts.timed("solve"):
@@ -211,16 +217,14 @@ class WindowModel:
         if inputs.mode == "given":
             given = given_commitment(inputs, state)
             decided = {"on": given.on, "start": given.start, "stop": given.stop}
-            hot = given.hot_start
+            cold = given.cold_start
         else:
             decided = {name: values.pop(name) for name in ("on", "start", "stop")}
-            hot = decided[
-                "start"
-            ].copy()  # where both kinds cost the same, every start is a hot one
-            hot[:, inputs.unit.hot_rows] = values.pop("hot_start")
+            cold = np.zeros_like(decided["start"])
+            cold[:, inputs.unit.cold_rows] = values.pop("cold_start")
         line_dual = self.lines.duals(network.row_dual, inputs) / inputs.period_hours
         return WindowSolution(
-            **decided, **values, hot_start=hot, flow=network.flow, line_dual=line_dual,
+            **decided, **values, cold_start=cold, flow=network.flow, line_dual=line_dual,
             price=self._prices(inputs, network, line_dual), objective=self._solver.objective,
         )  # fmt: skip
 
