@@ -61,7 +61,7 @@ CasePath = Annotated[Path, typer.Argument(metavar="CASE", help="Case folder.")]
 Json = Annotated[bool, typer.Option("--json", help="Print one JSON document and nothing else.")]
 
 
-@app.command(epilog="Example: rampline check profiles/fennmark")
+@app.command(epilog="Example: rampline check profiles/fennholm")
 def check(case: CasePath, *, as_json: Json = False) -> None:
     """Read and check a case; print what it holds, or every problem."""
     from simulator.case import read_case
@@ -77,7 +77,7 @@ def check(case: CasePath, *, as_json: Json = False) -> None:
 
 
 @app.command(
-    epilog="Example: rampline week profiles/fennmark --from 2027-01-11 --commitment relaxed"
+    epilog="Example: rampline week profiles/fennholm --from 2027-01-11 --commitment relaxed"
 )
 def week(
     case: CasePath,

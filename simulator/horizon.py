@@ -26,6 +26,7 @@ Progress = Callable[[int, int], None]
 MODES = ("given", "relaxed")
 LIMITS = ("none", "lines")
 _ROUNDING = 1e-9
+WEEK = 168.0
 
 
 @dataclass(frozen=True)
@@ -104,15 +105,15 @@ def plan_run(
     Raises `OptionError` for what the case or this program cannot do.
     """
     horizon = case.settings.horizon
-    window = _periods(case, window_hours or horizon.window_hours, "--window-hours")
-    keep = _periods(case, keep_hours or horizon.keep_hours, "--keep-hours")
+    window = _periods(case, _or(window_hours, horizon.window_hours), "--window-hours")
+    keep = _periods(case, _or(keep_hours, horizon.keep_hours), "--keep-hours")
     if keep > window:
         raise OptionError(
             f"--keep-hours, must be at most --window-hours, found {keep} periods kept of {window}, "
             "lengthen the window"
         )
     first = 0 if start is None else _position(case, start)
-    periods = _periods(case, 168.0 if hours is None else hours, "--hours")
+    periods = _periods(case, _or(hours, WEEK), "--hours")
     seen = len(case.time) - first
     if periods > seen:
         raise OptionError(_too_long(case, first, periods))
@@ -123,6 +124,10 @@ def plan_run(
             "network.losses, must be false in this version, found true, set it to false in case.toml"
         )
     return Plan(first, periods, seen, window, keep, mode, chosen)
+
+
+def _or(asked: float | None, otherwise: float) -> float:
+    return otherwise if asked is None else asked
 
 
 def _choice(option: str, value: str, known: tuple[str, ...]) -> str:
@@ -195,7 +200,7 @@ def run(case: Case, plan: Plan, progress: Progress | None = None) -> Run:
         solution = _solve(case, plan, model, window, state, start)
         kept = min(plan.keep, plan.periods - start)
         solved.append((kept, solution))
-        state = solution.state_after(state, kept)
+        state = solution.state_after(state, kept, inputs.whole.unit.hot_periods)
     if progress:
         progress(len(spans), len(spans))
     return Run(case, plan, inputs, _joined(solved), _window_numbers(solved), counts)
@@ -223,9 +228,10 @@ def _solve(
 
 _ELEMENT = {
     "unit": ("output_split", "ramp_up", "ramp_down", "switching", "minimum_up", "minimum_down",
-             "cold_start_stops", "output", "on", "start", "stop", "cold_start"),
+             "cold_start_stops", "stops_summed", "matched_sum", "output", "on", "start", "stop",
+             "cold_start"),
     "plant": ("renewable",),
-    "store": ("store_balance", "charge", "discharge", "stored"),
+    "store": ("store_balance", "energy_floor", "charge", "discharge", "stored"),
     "tie": ("tie_forward", "tie_reverse"),
     "load": ("unserved",),
     "line": ("line",),

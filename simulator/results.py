@@ -176,10 +176,10 @@ def _lines_and_prices(run: Run) -> dict[str, Floats]:
 def _costs(run: Run) -> dict[str, Floats]:
     kept, inputs, unit = run.kept, run.kept_inputs, run.kept_inputs.unit
     length = inputs.period_hours
-    units = len(unit.bus)
-    above = series.sum_by(inputs.block_cost * kept.block, unit.block_unit, units)
+    units, block = len(unit.bus), _along_curve(run)
+    above = series.sum_by(inputs.block_cost * block, unit.block_unit, units)
     running = inputs.minimum_cost * kept.on + above
-    burnt = series.sum_by(inputs.block_emissions * kept.block, unit.block_unit, units)
+    burnt = series.sum_by(inputs.block_emissions * block, unit.block_unit, units)
     emissions = inputs.minimum_emissions * kept.on + burnt
     starting = unit.hot_start * kept.start + (unit.cold_start - unit.hot_start) * kept.cold_start
     by_component = [
@@ -197,6 +197,21 @@ def _costs(run: Run) -> dict[str, Floats]:
         "emissions": emissions * length,
         "cost": np.stack(by_component, axis=1),
     }
+
+
+def _along_curve(run: Run) -> Floats:
+    """Return output above the minimum by block, from the lowest up, array (period, block), MW.
+
+    The optimum leaves open which of several blocks of one cost it uses; the curve does not.
+    """
+    kept, inputs = run.kept, run.kept_inputs
+    owner = inputs.unit.block_unit
+    width = inputs.block_width * kept.on[:, owner]
+    filled = np.cumsum(width, axis=1) - width
+    first = np.searchsorted(owner, owner)
+    before = filled - filled[:, first]
+    above = (kept.output - inputs.unit_min * kept.on)[:, owner]
+    return np.clip(above - before, 0.0, width)
 
 
 def _summaries(run: Run) -> dict[str, Any]:

@@ -3,42 +3,27 @@
 Public names: `Case`, `TimeAxis`, `TABLES`.
 """
 
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
+from datetime import date
 from typing import Any
 
 import pandas as pd
+from numpy.typing import ArrayLike
 
+from simulator.case.edits import add_load, add_outage, add_store, change_settings
 from simulator.case.settings import Settings
+from simulator.case.sheet import Sheet
+from simulator.case.summary import summary
+from simulator.case.time_axis import TimeAxis
 from simulator.errors import Problem
 
 __all__ = ["TABLES", "Case", "TimeAxis"]
 
 TABLES = (
-    "buses", "lines", "dc_ties", "units", "blocks", "fuels", "renewables", "storage", "loads", "outages",
+    "buses", "lines", "dc_ties", "units", "blocks", "fuels", "renewables", "storage", "loads",
+    "outages",
 )  # fmt: skip
 """The tables a `Case` holds, each under the attribute of that name."""
-
-
-@dataclass(frozen=True)
-class TimeAxis:
-    """The periods of the hourly data (formulation.md 1.1).
-
-    periods : DatetimeIndex (period,), UTC, start of each period, equally spaced without gap
-    period_hours : length Δ of one period, h
-    time_zone : IANA name in which times are shown
-    """
-
-    periods: pd.DatetimeIndex
-    period_hours: float
-    time_zone: str
-
-    @property
-    def local(self) -> pd.DatetimeIndex:
-        """The period starts in the case's own time zone."""
-        return self.periods.tz_convert(self.time_zone)
-
-    def __len__(self) -> int:
-        return len(self.periods)
 
 
 @dataclass(frozen=True, eq=False)
@@ -57,7 +42,7 @@ class Case:
         up_to_mw (MW), cost_per_mwh (all that does not follow a fuel price: the offer, or operation
         and maintenance plus carbon), heat_rate_gj_per_mwh (0 for offers), fuel ("" for offers)
     fuels : index `fuel`; columns price_per_gj, co2_t_per_gj, price_profile
-    renewables : index `plant`; storage : index `store`; loads : index `load`; columns of their files
+    renewables, storage, loads : index `plant`, `store`, `load`; columns of their files
     outages : columns kind, name, from, until (UTC), available_percent
     profiles : frame (period, profile), dimensionless, on the rows of `time`
     warnings : what was odd but allowed
@@ -65,12 +50,19 @@ class Case:
 
     settings: Settings
     time: TimeAxis
-    profiles: pd.DataFrame = field(repr=False)
+    _profiles: pd.DataFrame = field(repr=False)
     _tables: dict[str, pd.DataFrame] = field(repr=False)
+    _sheets: dict[str, Sheet] = field(repr=False)
     warnings: tuple[Problem, ...] = field(default=(), repr=False)
 
     def _table(self, name: str) -> pd.DataFrame:
-        return self._tables[name].copy(deep=False)  # copy-on-write: the caller can change only its own
+        # Copy-on-write: the caller can change only its own.
+        return self._tables[name].copy(deep=False)
+
+    @property
+    def profiles(self) -> pd.DataFrame:
+        """Hourly profiles, one a column."""
+        return self._profiles.copy(deep=False)
 
     @property
     def buses(self) -> pd.DataFrame:
@@ -122,6 +114,56 @@ class Case:
         """Planned outages and derates, one a row."""
         return self._table("outages")
 
+    def declared(self, name: str) -> Sheet:
+        """Return a table as declared, before defaults; edits start from it."""
+        return self._sheets[name]
+
     def with_settings(self, **changes: Any) -> "Case":
-        """Return a copy with some top-level settings replaced, e.g. `name="dry year"`."""
-        return replace(self, settings=self.settings.model_copy(update=changes))
+        """Return a copy with some settings replaced, a section whole or in part.
+
+        For instance `case.with_settings(name="dry year", network={"limits": "none"})`. What follows
+        from settings (carbon cost of blocks, default price of unserved load) follows the new ones.
+        """
+        return change_settings(self, changes)
+
+    def without_limits(self) -> "Case":
+        """Return a copy in which no network limit holds: one price, whatever the lines carry."""
+        return self.with_settings(network={"limits": "none"})
+
+    def with_load(
+        self, name: str, bus: str, mw: ArrayLike, *, unserved_per_mwh: float | None = None
+    ) -> "Case":
+        """Return a copy with one more load, `mw` a number or an array (period,), MW.
+
+        Its profile is added under the load's name, or that name and a number where it is taken.
+        """
+        return add_load(self, name, bus, mw, unserved_per_mwh)
+
+    def with_store(
+        self, name: str, bus: str, charge_mw: float, energy_mwh: float, *,
+        discharge_mw: float | None = None, charge_efficiency: float = 1.0,
+        discharge_efficiency: float = 1.0, loss_percent_per_h: float = 0.0,
+        initial_mwh: float | None = None, final_mwh: float | None = None,
+        throughput_cost_per_mwh: float = 0.0, end_value_per_mwh: float = 0.0,
+    ) -> "Case":  # fmt: skip
+        """Return a copy with one more store; None means the default of storage.csv."""
+        cells: dict[str, str | float | None] = {
+            "store": name, "bus": bus, "charge_mw": charge_mw, "discharge_mw": discharge_mw,
+            "energy_mwh": energy_mwh, "charge_efficiency": charge_efficiency,
+            "discharge_efficiency": discharge_efficiency, "loss_percent_per_h": loss_percent_per_h,
+            "initial_mwh": initial_mwh, "final_mwh": final_mwh,
+            "throughput_cost_per_mwh": throughput_cost_per_mwh,
+            "end_value_per_mwh": end_value_per_mwh,
+        }  # fmt: skip
+        return add_store(self, cells)
+
+    def with_outage(
+        self, kind: str, name: str, start: str | date, until: str | date,
+        available_percent: float = 0.0,
+    ) -> "Case":  # fmt: skip
+        """Return a copy with one more planned outage, half-open; times local or with an offset."""
+        cells = {"kind": kind, "name": name, "from": start, "until": until}
+        return add_outage(self, cells | {"available_percent": available_percent})
+
+    def __str__(self) -> str:
+        return summary(self)

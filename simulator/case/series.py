@@ -50,10 +50,11 @@ def available_share(case: Case, kind: str, names: pd.Index, span: slice) -> Floa
     ends = starts + pd.Timedelta(hours=case.time.period_hours)
     share = np.ones((len(starts), len(names)))
     outages = case.outages
-    for row in outages[outages["kind"] == kind].itertuples():
-        touched = (starts < row.until) & (ends > row._asdict()["from"])
-        column = names.get_loc(row.name)
-        share[touched, column] = np.minimum(share[touched, column], row.available_percent / 100)
+    for row in outages[outages["kind"] == kind].to_dict("records"):
+        touched = (starts < row["until"]) & (ends > row["from"])
+        column = names.get_loc(row["name"])
+        left = np.minimum(share[touched, column], row["available_percent"] / 100)
+        share[touched, column] = left
     return share
 
 
@@ -83,7 +84,11 @@ def in_service(case: Case, span: slice) -> Booleans:
 def line_rating(case: Case, span: slice, column: str = "rating_mw") -> Floats:
     """Return line ratings, MW, times their hourly multiplier; inf where unlimited."""
     lines = case.lines
-    return profile_values(case, lines["rating_profile"], span) * lines[column].to_numpy(float)
+    rating = lines[column].to_numpy(float)
+    multiplier = profile_values(case, lines["rating_profile"], span)
+    return multiplier * np.where(np.isfinite(rating), rating, 0.0) + np.where(
+        np.isfinite(rating), 0.0, np.inf
+    )
 
 
 def block_cost(case: Case, span: slice) -> Floats:

@@ -1,20 +1,27 @@
 """case.toml as typed, frozen settings.
 
-Public names: `Settings` and its sections `Horizon`, `Penalties`, `Commitment`, `Network`, `Emissions`.
+Public names: `Settings`, its sections `Commitment`, `Emissions`, `Horizon`, `Network`, `Penalties`,
+and `known_zones`.
 """
 
+from functools import cache
 from typing import Annotated, Literal
-from zoneinfo import ZoneInfo, available_timezones
+from zoneinfo import available_timezones
 
 from pydantic import AfterValidator, BaseModel, ConfigDict, Field, model_validator
 
-__all__ = ["Commitment", "Emissions", "Horizon", "Network", "Penalties", "Settings"]
+__all__ = ["Commitment", "Emissions", "Horizon", "Network", "Penalties", "Settings", "known_zones"]
+
+
+@cache
+def known_zones() -> frozenset[str]:
+    """Return the IANA time zones, which are files that are best looked up once."""
+    return frozenset(available_timezones())
 
 
 def _known_zone(name: str) -> str:
-    if name not in available_timezones():
+    if name not in known_zones():
         raise ValueError("must be an IANA time zone")
-    ZoneInfo(name)
     return name
 
 
@@ -51,6 +58,7 @@ class Commitment(_Section):
 
     mode: Literal["given", "relaxed", "optimal"] = "optimal"
     mip_gap: NotNegative = 0.001
+    seconds: Positive = 120.0
 
 
 class Network(_Section):

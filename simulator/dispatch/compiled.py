@@ -85,6 +85,8 @@ class CompiledFleet:
             return _lagged_entries(rows, columns, values, inputs)
         if row == "block_width":
             columns = columns[:, inputs.unit.block_unit]
+        if len(values) < len(rows):  # a row that looks one period ahead
+            rows, columns = rows[:-1], columns[1:]
         return rows.ravel(), columns.ravel(), values.ravel()
 
     def named(self, solution: Floats) -> dict[str, Floats]:

@@ -72,6 +72,11 @@ def fleet_data(inputs: WindowInputs, state: State) -> FleetData:
     columns |= _commitment_columns(inputs, state)
     costs |= _commitment_costs(inputs)
     rows |= _commitment_rows(inputs, state)
+    if inputs.mode == "optimal":
+        columns |= _matching_columns(inputs)
+        rows |= _matching_rows(inputs, state)
+    else:
+        rows |= _cold_start_rows(inputs, state)
     return FleetData(columns, costs, rows, _coefficients(inputs), committed=True)
 
 
@@ -81,6 +86,10 @@ def _between(lower: float, upper: Floats) -> Bounds:
 
 def _below(upper: Floats) -> Bounds:
     return np.full(upper.shape, -INFINITY), upper
+
+
+def _above(lower: Floats) -> Bounds:
+    return lower, np.full(lower.shape, INFINITY)
 
 
 def _exactly(value: Floats) -> Bounds:
@@ -102,7 +111,8 @@ def _store_columns(inputs: WindowInputs) -> dict[str, Bounds]:
     return {
         "charge": _between(0.0, inputs.store_share * inputs.charge),
         "discharge": _between(0.0, inputs.store_share * inputs.discharge),
-        "stored": (inputs.store_floor, energy),
+        "stored": _between(0.0, energy),
+        "energy_short": _between(0.0, inputs.store_floor),
     }
 
 
@@ -145,6 +155,7 @@ def _costs(inputs: WindowInputs) -> dict[str, Floats]:
         "renewable": np.tile(inputs.renewable_offer * length, (periods, 1)),
         "discharge": np.tile(store.throughput_cost * length, (periods, 1)),
         "stored": left,
+        "energy_short": np.full(left.shape, inputs.short_cost),
         "unserved": np.tile(inputs.unserved_cost * length, (periods, 1)),
         "surplus": np.full((periods, inputs.buses), inputs.surplus_cost * length),
     }
@@ -166,7 +177,7 @@ def _commitment_costs(inputs: WindowInputs) -> dict[str, Floats]:
 def _store_rows(inputs: WindowInputs, state: State) -> dict[str, Bounds]:
     brought = np.zeros(inputs.store_floor.shape)
     brought[0] = inputs.store.kept * state.stored
-    return {"store_balance": _exactly(brought)}
+    return {"store_balance": _exactly(brought), "energy_floor": _above(inputs.store_floor)}
 
 
 def _balance_rows(inputs: WindowInputs) -> dict[str, Bounds]:
@@ -176,13 +187,15 @@ def _balance_rows(inputs: WindowInputs) -> dict[str, Bounds]:
 
 
 def _ramp_limits(inputs: WindowInputs, state: State) -> tuple[Floats, Floats]:
-    """Right-hand sides of both ramps from the state alone, arrays (period, unit), MW (2.2)."""
+    """Return right-hand sides of both ramps from the state alone, arrays (period, unit), MW (2.2).
+
+    Where on or off before is free, nothing switches in the first period: the unit was on or stays off.
+    """
     up, down = np.zeros_like(inputs.unit_min), np.zeros_like(inputs.unit_min)
-    free = np.isnan(state.output) | np.isnan(state.on)
-    before, on = np.nan_to_num(state.output), np.nan_to_num(state.on)
-    with np.errstate(invalid="ignore"):  # 0 · inf, of a unit off with an unlimited ramp
-        up[0] = before + np.where(on > 0, inputs.unit.ramp_up * on, 0.0)
+    before, on = np.nan_to_num(state.output), np.where(np.isnan(state.on), 1.0, state.on)
+    up[0] = before + np.minimum(inputs.unit.ramp_up, inputs.unit.maximum) * on
     down[0] = -before
+    free = np.isnan(state.output)
     up[0, free] = down[0, free] = INFINITY
     down[inputs.unit_falling] = INFINITY
     return up, down
@@ -196,8 +209,6 @@ def _commitment_rows(inputs: WindowInputs, state: State) -> dict[str, Bounds]:
     lower, upper = switched.copy(), switched.copy()
     free = np.isnan(state.on)
     lower[0, free], upper[0, free] = -INFINITY, INFINITY
-    dear = inputs.unit.cold_rows
-    hot_before = _history_sum(state.stops, inputs.unit.hot_periods, inputs.periods)
     return {
         "output_split": _exactly(none),
         "block_width": _below(np.zeros_like(inputs.block_width)),
@@ -206,7 +217,33 @@ def _commitment_rows(inputs: WindowInputs, state: State) -> dict[str, Bounds]:
         "ramp_down": _below(down[:, inputs.unit.ramp_down_rows]),
         "minimum_up": _below(-_recent_starts(inputs, state)),
         "minimum_down": _below(1.0 - _recent_stops(inputs, state)),
-        "cold_start_stops": _below(hot_before[:, dear]),
+    }
+
+
+def _cold_start_rows(inputs: WindowInputs, state: State) -> dict[str, Bounds]:
+    hot_before = _history_sum(state.stops, inputs.unit.hot_periods, inputs.periods)
+    return {"cold_start_stops": _below(hot_before[:, inputs.unit.cold_rows])}
+
+
+def _matching_columns(inputs: WindowInputs) -> dict[str, Bounds]:
+    """Return running totals of stops, and of stops matched with a hot start or gone cold."""
+    open_ended = np.full((inputs.periods, len(inputs.unit.cold_rows)), INFINITY)
+    return {"stopped": _between(0.0, open_ended), "matched": _between(0.0, open_ended)}
+
+
+def _matching_rows(inputs: WindowInputs, state: State) -> dict[str, Bounds]:
+    """Let stops from before the window that still cool in as they are: `cooling` (lag, unit)."""
+    dear = inputs.unit.cold_rows
+    cooling, hot = state.cooling[:, dear], inputs.unit.hot_periods[dear]
+    soonest = inputs.unit.restart_periods[dear]
+    none = np.zeros((inputs.periods, len(dear)))
+    pool = none + cooling.sum(axis=0)
+    gone_cold = pool - _history_sum(cooling, hot, inputs.periods)
+    return {
+        "stops_summed": _exactly(none),
+        "matched_sum": _above(none),
+        "matched_after_stop": _below(pool - _history_sum(cooling, soonest - 1, inputs.periods)),
+        "matched_in_time": _above(gone_cold),
     }
 
 
@@ -276,11 +313,26 @@ def _recent_stops(inputs: WindowInputs, state: State) -> Floats:
 
 def _coefficients(inputs: WindowInputs) -> dict[tuple[str, str], Floats | Booleans]:
     """Entries that derates and outages change, with the sign they have in their row."""
-    return {
+    always: dict[tuple[str, str], Floats | Booleans] = {
         ("output_split", "on"): -inputs.unit_min,
         ("block_width", "on"): -inputs.block_width,
         ("minimum_up", "start"): _start_counts(inputs),
         ("minimum_down", "stop"): _stop_counts(inputs),
+    }
+    return always | (_switch_limits(inputs) if inputs.mode == "optimal" else {})
+
+
+def _switch_limits(inputs: WindowInputs) -> dict[tuple[str, str], Floats | Booleans]:
+    """How much of each block is out of reach in the first and the last period of a run.
+
+    Where a run may be one period long, start and stop may fall on one period and only one of them
+    may count; the larger does.
+    """
+    start, stop = inputs.block_not_at_start, inputs.block_not_at_stop
+    short = inputs.unit.up_periods[inputs.unit.block_unit] <= 1
+    return {
+        ("block_width", "start"): np.where(short & (start < stop), 0.0, start),
+        ("block_width", "stop"): np.where(short & (start >= stop), 0.0, stop)[:-1],
     }
 
 

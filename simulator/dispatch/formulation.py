@@ -31,7 +31,7 @@ def state_fleet(inputs: WindowInputs, data: FleetData) -> Model:
     model.blocks_of = _members(inputs.unit.block_unit, len(inputs.unit.bus))
     for family, (lower, _) in data.columns.items():
         setattr(model, family, pyo.Var(*_ranges(lower)))
-    for family, rule in (COMMITMENT_ROWS if data.committed else GIVEN_ROWS).items():
+    for family, rule in ROWS[inputs.mode].items():
         setattr(model, family, pyo.Constraint(*_ranges(data.rows[family][0]), rule=rule))
     return model
 
@@ -59,10 +59,19 @@ def output_split(model: Model, t: int, unit: int) -> Any:
 
 
 def block_width(model: Model, t: int, block: int) -> Any:
-    """2.1: a block is available only while its unit is on: q ≤ width·on."""
+    """2.1: a block is available only while its unit is on: q ≤ width·on.
+
+    In mode `optimal` less what lies above the start ramp in the first period of a run, and above the
+    stop ramp in the last: 2.2 implies it for whole decisions, here it tightens the relaxation.
+    """
     unit = int(model.inputs.unit.block_unit[block])
     width = model.moving["block_width", "on"][t][block]
-    return model.block[t, block] + width * model.on[t, unit] <= 0.0
+    used = model.block[t, block] + width * model.on[t, unit]
+    if model.inputs.mode == "optimal":
+        used += model.moving["block_width", "start"][t][block] * model.start[t, unit]
+        if t + 1 < model.inputs.periods:
+            used += model.moving["block_width", "stop"][t][block] * model.stop[t + 1, unit]
+    return used <= 0.0
 
 
 def ramp_up(model: Model, t: int, position: int) -> Any:
@@ -73,8 +82,13 @@ def ramp_up(model: Model, t: int, position: int) -> Any:
         data = model.inputs.unit
         widest = data.maximum[unit]  # a wider ramp means the same, and inf is no coefficient
         rise -= float(min(data.start_ramp[unit], widest)) * model.start[t, unit]
+        ramp = float(min(data.ramp_up[unit], widest))
         if t:
-            rise -= float(min(data.ramp_up[unit], widest)) * model.on[t - 1, unit]
+            rise -= ramp * model.on[t - 1, unit]
+        if (
+            t and model.inputs.mode == "optimal"
+        ):  # a unit that stops was on: its output falls by its minimum
+            rise += (ramp + float(data.least[unit])) * model.stop[t, unit]
     return rise <= model.right["ramp_up"][t][position]
 
 
@@ -86,7 +100,12 @@ def ramp_down(model: Model, t: int, position: int) -> Any:
         data = model.inputs.unit
         widest = data.maximum[unit]
         fall -= float(min(data.stop_ramp[unit], widest)) * model.stop[t, unit]
-        fall -= float(min(data.ramp_down[unit], widest)) * model.on[t, unit]
+        ramp = float(min(data.ramp_down[unit], widest))
+        fall -= ramp * model.on[t, unit]
+        if (
+            model.inputs.mode == "optimal"
+        ):  # a unit that starts was off: its output rises to its minimum
+            fall += (ramp + float(data.least[unit])) * model.start[t, unit]
     return fall <= model.right["ramp_down"][t][position]
 
 
@@ -120,15 +139,60 @@ def cold_start_stops(model: Model, t: int, position: int) -> Any:
     return left <= model.right["cold_start_stops"][t][position]
 
 
+def stops_summed(model: Model, t: int, position: int) -> Any:
+    """2.3: running total of stops, S_t = S_{t−1} + stop_t."""
+    unit = int(model.inputs.unit.cold_rows[position])
+    before = model.stopped[t - 1, position] if t else 0.0
+    return model.stopped[t, position] - before - model.stop[t, unit] == 0.0
+
+
+def matched_sum(model: Model, t: int, position: int) -> Any:
+    """2.3: running total of stops matched or gone cold, M_t ≥ M_{t−1} + start_t − cold_t."""
+    unit = int(model.inputs.unit.cold_rows[position])
+    before = model.matched[t - 1, position] if t else 0.0
+    hot = model.start[t, unit] - model.cold_start[t, position]
+    return model.matched[t, position] - before - hot >= 0.0
+
+
+def matched_after_stop(model: Model, t: int, position: int) -> Any:
+    """2.3: a hot start uses up one stop from before it, M_t ≤ S_{t−restart periods}.
+
+    Together with `matched_in_time` this is the matching of stops with hot starts in running totals:
+    where every stop is open for matching from one age to another, totals suffice.
+    """
+    unit = int(model.inputs.unit.cold_rows[position])
+    old = t - int(model.inputs.unit.restart_periods[unit])
+    stopped = model.stopped[old, position] if old >= 0 else 0.0
+    return model.matched[t, position] - stopped <= model.right["matched_after_stop"][t][position]
+
+
+def matched_in_time(model: Model, t: int, position: int) -> Any:
+    """2.3: a stop not matched within the hot periods is gone cold, M_t ≥ S_{t−hot periods}."""
+    unit = int(model.inputs.unit.cold_rows[position])
+    old = t - int(model.inputs.unit.hot_periods[unit]) - 1
+    stopped = model.stopped[old, position] if old >= 0 else 0.0
+    return model.matched[t, position] - stopped >= model.right["matched_in_time"][t][position]
+
+
 def store_balance(model: Model, t: int, store: int) -> Any:
     """2.4: E_t = kept·E_{t−1} + η_c·Δ·charge − Δ/η_d·discharge."""
     kept, charged, drawn = (
         float(values[store])
-        for values in (model.inputs.store.kept, model.inputs.store.charged, model.inputs.store.drawn)
+        for values in (
+            model.inputs.store.kept,
+            model.inputs.store.charged,
+            model.inputs.store.drawn,
+        )
     )
     change = model.stored[t, store] - (kept * model.stored[t - 1, store] if t else 0.0)
     change += drawn * model.discharge[t, store] - charged * model.charge[t, store]
     return change == model.right["store_balance"][t][store]
+
+
+def energy_floor(model: Model, t: int, store: int) -> Any:
+    """2.4: what is stored stays enough to reach the final amount, E_t + short_t ≥ floor_t."""
+    held = model.stored[t, store] + model.energy_short[t, store]
+    return held >= model.right["energy_floor"][t][store]
 
 
 def balance(model: Model, t: int, cell: int) -> Any:
@@ -170,12 +234,22 @@ GIVEN_ROWS = {
     "ramp_up": ramp_up,
     "ramp_down": ramp_down,
     "store_balance": store_balance,
+    "energy_floor": energy_floor,
     "balance": balance,
 }
-COMMITMENT_ROWS = GIVEN_ROWS | {
+RELAXED_ROWS = GIVEN_ROWS | {
     "block_width": block_width,
     "switching": switching,
     "minimum_up": minimum_up,
     "minimum_down": minimum_down,
     "cold_start_stops": cold_start_stops,
 }
+OPTIMAL_ROWS = {
+    family: rule for family, rule in RELAXED_ROWS.items() if rule is not cold_start_stops
+} | {
+    "stops_summed": stops_summed,
+    "matched_sum": matched_sum,
+    "matched_after_stop": matched_after_stop,
+    "matched_in_time": matched_in_time,
+}
+ROWS = {"given": GIVEN_ROWS, "relaxed": RELAXED_ROWS, "optimal": OPTIMAL_ROWS}

@@ -31,8 +31,11 @@ class UnitData:
     start_ramp, stop_ramp : most output in the first and the last period of a run, MW
     no_load : currency/h; hot_start, cold_start : currency a start
     up_periods, down_periods : minimum up and down times in periods, at least 1
+    restart_periods : soonest start after a stop: minimum down time, or one period for units that an
+        outage of this run takes out, which may return at once
     hot_periods : a start within this many periods of the stop is hot
     maximum : MW, with nothing out; must_run : bool
+    least : the lowest minimum output of the run, MW
     block_unit : array (block,), the unit a cost block belongs to
     ramp_up_rows, ramp_down_rows : positions of the units whose ramps can bind; cold_rows : of those
         whose cold starts cost more than hot ones. Fixed for a run, so that its windows have one shape.
@@ -48,8 +51,10 @@ class UnitData:
     cold_start: Floats
     up_periods: Integers
     down_periods: Integers
+    restart_periods: Integers
     hot_periods: Integers
     maximum: Floats
+    least: Floats
     must_run: Booleans
     block_unit: Integers
     ramp_up_rows: Integers
@@ -86,6 +91,7 @@ class WindowInputs:
     """Everything of one window but the state it starts from.
 
     number : the window's place in the run, from 0; first : its first period, counted from the run's
+    gap, seconds : when the search for on/off decisions may stop (mode `optimal`)
     mode : commitment mode; limited : whether line limits hold
     unit_min, unit_available : arrays (period, unit), MW; minimum output is never above what is available
     unit_out : fully out; unit_falling : available output falls from the period before
@@ -94,19 +100,23 @@ class WindowInputs:
         which that schedule can still be followed
     minimum_cost : array (period, unit), currency/h of output at the minimum, no-load cost included
     block_width, block_cost : arrays (period, block), MW above minimum output and currency/MWh
+    block_not_at_start, block_not_at_stop : arrays (period, block), MW of a block that lie above the
+        start ramp, and above the stop ramp where it holds in the next period
     minimum_emissions (period, unit), t/h, block_emissions (block,), t/MWh : the same split of carbon
     renewable_available (period, plant); renewable_offer, renewable_bus (plant,)
     store_share : array (period, store), what outages leave; store_floor : least energy from which
         `final_mwh` can still be reached, MWh; ends_run : the window reaches the end of the run
     charge, discharge : arrays (store,), MW
     tie_forward, tie_reverse (period, tie), MW entering; tie_delivered : share that arrives
-    demand (period, load); unserved_cost (load,); surplus_cost : currency/MWh
+    demand (period, load); unserved_cost (load,); surplus_cost, short_cost : currency/MWh
     rating (period, line), MW; topology : which topology holds when; joined (period, pair)
     """
 
     number: int
     first: int
     mode: str
+    gap: float
+    seconds: float
     limited: bool
     period_hours: float
     unit: UnitData
@@ -120,6 +130,8 @@ class WindowInputs:
     minimum_cost: Floats
     block_width: Floats
     block_cost: Floats
+    block_not_at_start: Floats
+    block_not_at_stop: Floats
     minimum_emissions: Floats
     block_emissions: Floats
     renewable_bus: Integers
@@ -140,6 +152,7 @@ class WindowInputs:
     unserved_cost: Floats
     demand: Floats
     surplus_cost: float
+    short_cost: float
     rating: Floats
     topology: TopologySchedule
     cells: Cells
@@ -159,7 +172,8 @@ class WindowInputs:
 
 _BY_PERIOD = (
     "unit_min", "unit_available", "unit_out", "unit_falling", "unit_given", "unit_ceiling",
-    "minimum_cost", "minimum_emissions", "block_width", "block_cost", "renewable_available",
+    "minimum_cost", "minimum_emissions", "block_width", "block_cost",
+    "block_not_at_start", "block_not_at_stop", "renewable_available",
     "store_share", "store_floor", "tie_forward", "tie_reverse", "demand", "rating", "topology", "joined",
 )  # fmt: skip
 
@@ -195,8 +209,9 @@ def run_inputs(case: Case, span: slice, run_periods: int, mode: str, *, limited:
     topology = network.schedule(series.in_service(case, span))
     cells = common_cells(topology.topologies)
     whole = WindowInputs(
-        number=0, first=0, mode=mode, limited=limited, period_hours=case.time.period_hours,
-        surplus_cost=case.settings.penalties.surplus,
+        number=0, first=0, mode=mode, gap=case.settings.commitment.mip_gap,
+        seconds=case.settings.commitment.seconds, limited=limited, period_hours=case.time.period_hours,
+        surplus_cost=case.settings.penalties.surplus, short_cost=_short_cost(case),
         rating=series.line_rating(case, span), topology=topology, cells=cells,
         joined=cells.joined[topology.index], buses=len(case.buses), ends_run=True,
         **_unit_inputs(case, span), **_renewable_inputs(case, span),
@@ -215,14 +230,20 @@ def _bus(case: Case, names: pd.Series) -> Integers:
     return case.buses.index.get_indexer(pd.Index(names))
 
 
-def _periods(hours: pd.Series, period_hours: float) -> Integers:
-    """Round a duration up to whole periods."""
+def _periods_up(hours: pd.Series, period_hours: float) -> Integers:
+    """Round a duration that has to pass up to whole periods."""
     return np.ceil(hours.to_numpy(float) / period_hours - 1e-9).astype(int)
 
 
-def _unit_data(case: Case, block_unit: Integers, least: Floats) -> UnitData:
+def _periods_down(hours: pd.Series, period_hours: float) -> Integers:
+    """Round a duration that must not pass down to whole periods."""
+    return np.floor(hours.to_numpy(float) / period_hours + 1e-9).astype(int)
+
+
+def _unit_data(case: Case, block_unit: Integers, least: Floats, taken_out: Booleans) -> UnitData:
     """Collect the units' constants.
 
+    taken_out : array (unit,), whether an outage of the run takes a unit out fully
     least : array (unit,), the lowest minimum output of the run, MW. Between two periods on, output
     moves by at most the maximum less that, so a wider ramp never binds.
     """
@@ -233,16 +254,17 @@ def _unit_data(case: Case, block_unit: Integers, least: Floats) -> UnitData:
         numbers["ramp_down_mw_per_h"] * length,
     )
     most, moves = numbers["max_output_mw"], numbers["max_output_mw"] - least
+    down = np.maximum(_periods_up(units["min_down_h"], length), 1)
     start_ramp, stop_ramp = numbers["start_ramp_mw"], numbers["stop_ramp_mw"]
     return UnitData(
         bus=_bus(case, units["bus"]),
         ramp_up=ramp_up, ramp_down=ramp_down, start_ramp=start_ramp, stop_ramp=stop_ramp,
         no_load=numbers["no_load_cost_per_h"],
         hot_start=numbers["start_cost"], cold_start=numbers["cold_start_cost"],
-        up_periods=np.maximum(_periods(units["min_up_h"], length), 1),
-        down_periods=np.maximum(_periods(units["min_down_h"], length), 1),
-        hot_periods=_periods(units["min_down_h"] + units["cold_after_h"], length),
-        maximum=most, must_run=units["must_run"].to_numpy(bool), block_unit=block_unit,
+        up_periods=np.maximum(_periods_up(units["min_up_h"], length), 1),
+        down_periods=down, restart_periods=np.where(taken_out, 1, down),
+        hot_periods=_periods_down(units["min_down_h"] + units["cold_after_h"], length),
+        maximum=most, least=least, must_run=units["must_run"].to_numpy(bool), block_unit=block_unit,
         ramp_up_rows=np.flatnonzero((ramp_up < moves) | (start_ramp < most)),
         ramp_down_rows=np.flatnonzero((ramp_down < moves) | (stop_ramp < most)),
         cold_rows=np.flatnonzero(numbers["cold_start_cost"] > numbers["start_cost"]),
@@ -265,22 +287,28 @@ def _unit_inputs(case: Case, span: slice) -> dict[str, Any]:
     cost = series.block_cost(case, span)
     low, high = blocks["from_mw"].to_numpy(float), blocks["up_to_mw"].to_numpy(float)
     below = np.clip(least[:, unit], low, high) - low
-    width = np.clip(np.minimum(available[:, unit], high) - low - below, 0.0, None)
+    top = np.minimum(available[:, unit], high)
+    width = np.clip(top - low - below, 0.0, None)
     carbon = series.block_emissions(case)
-    data = _unit_data(case, unit, least.min(axis=0, initial=np.inf))
-    used = (width > 0).any(axis=0)
     out = share == 0
+    data = _unit_data(case, unit, least.min(axis=0, initial=np.inf), out.any(axis=0))
+    falling = np.diff(share, axis=0, prepend=np.ones((1, share.shape[1]))) < 0
+    at_start = np.clip(top - np.maximum(low, data.start_ramp[unit]), 0.0, width)
+    at_stop = np.clip(top - np.maximum(low, data.stop_ramp[unit]), 0.0, width)
+    at_stop[:-1][falling[1:][:, unit]] = 0.0
+    used = (width > 0).any(axis=0)
     on = series.unit_schedule(case, span) & ~out
     return {
         "unit": replace(data, block_unit=unit[used]),
         "unit_min": least, "unit_available": available, "unit_out": out,
-        "unit_falling": np.diff(share, axis=0, prepend=np.ones((1, share.shape[1]))) < 0,
+        "unit_falling": falling,
         "unit_out_before": np.zeros((0, len(units)), dtype=bool),
         "unit_given": on, "unit_ceiling": reachable_ceiling(on, available, data.ramp_down, data.stop_ramp),
         "minimum_cost": series.sum_by(below * cost, unit, len(units))
         + units["no_load_cost_per_h"].to_numpy(float),
         "minimum_emissions": series.sum_by(below * carbon, unit, len(units)),
         "block_width": width[:, used], "block_cost": cost[:, used], "block_emissions": carbon[used],
+        "block_not_at_start": at_start[:, used], "block_not_at_stop": at_stop[:, used],
     }  # fmt: skip
 
 
@@ -325,6 +353,16 @@ def _tie_inputs(case: Case, span: slice) -> dict[str, Any]:
         "tie_forward": share * ties["forward_mw"].to_numpy(float),
         "tie_reverse": share * ties["reverse_mw"].to_numpy(float),
     }
+
+
+def _short_cost(case: Case) -> float:
+    """Return the price of missing final energy, currency/MWh: dearer than anything else a run can do.
+
+    So `final_mwh` gives way only where it cannot be reached (formulation.md 1.5 and 2.4).
+    """
+    penalties, asked = case.settings.penalties, case.loads["unserved_per_mwh"].to_numpy(float)
+    dearest = np.max([penalties.unserved, penalties.surplus, *asked, 1.0])
+    return 10.0 * float(dearest)
 
 
 def _load_inputs(case: Case, span: slice) -> dict[str, Any]:

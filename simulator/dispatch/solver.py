@@ -7,6 +7,7 @@ so every call's code is checked and only the model status is believed.
 """
 
 from collections.abc import Mapping
+from dataclasses import dataclass
 from typing import Any
 
 import highspy
@@ -28,6 +29,9 @@ OPTIONS: Mapping[str, Any] = {
     "presolve": "off",  # the last basis is worth more than presolve, which would discard it
     "solver": "simplex",
 }
+
+INTEGER_OPTIONS: Mapping[str, Any] = {"presolve": "on"}
+"""What differs from `OPTIONS` in an integer solve."""
 
 STATUS: Mapping[str, str] = {
     "kNotset": "not set",
@@ -62,6 +66,14 @@ class SolverError(Exception):
     def __init__(self, status: str) -> None:
         self.status = status
         super().__init__(f"the solver ended with status {status}")
+
+
+@dataclass(frozen=True, eq=False)
+class Decision:
+    """The best plan found: values of all columns, and the relative gap it is proved to."""
+
+    values: Floats
+    gap: float
 
 
 class _Quiet(highspy.Highs):
@@ -111,6 +123,12 @@ class LinearSolver:
         self._check(self._highs.changeColsCost(size, columns, vectors.cost), "costs")
         self.set_row_bounds(np.arange(len(vectors.row_lower)), vectors.row_lower, vectors.row_upper)
 
+    def fix_columns(self, columns: Integers, values: Floats) -> None:
+        """Fix some columns at values."""
+        places = columns.astype(np.int32)
+        code = self._highs.changeColsBounds(len(places), places, values, values)
+        self._check(code, "fixed columns")
+
     def set_row_bounds(self, rows: Integers, lower: Floats, upper: Floats) -> None:
         """Replace the bounds of some rows."""
         code = self._highs.changeRowsBounds(len(rows), rows.astype(np.int32), lower, upper)
@@ -155,6 +173,45 @@ class LinearSolver:
         if status != highspy.HighsModelStatus.kOptimal:
             raise SolverError(STATUS[status.name])
 
+    def run_integer(
+        self, binaries: Integers, gap: float, seconds: float, start: Floats | None
+    ) -> Decision:
+        """Solve with some columns binary; raise `SolverError` if no plan is found in time.
+
+        gap : relative gap at which to stop; start : column values to start from, NaN where unknown
+        """
+        highs, count = self._highs, len(binaries)
+        places = binaries.astype(np.int32)
+        kinds = {kind: np.full(count, int(kind), dtype=np.uint8) for kind in _KINDS}
+        self._check(highs.changeColsIntegrality(count, places, kinds[_INTEGER]), "binary columns")
+        for name, value in INTEGER_OPTIONS.items():
+            self.set_option(name, value)
+        self.set_option("mip_rel_gap", gap)
+        self.set_option("time_limit", highs.getRunTime() + seconds)
+        if start is not None:
+            self._propose(start)
+        try:
+            highs.run()
+            return self._decision()
+        finally:
+            self._check(highs.changeColsIntegrality(count, places, kinds[_CONTINUOUS]), "columns")
+            for name in INTEGER_OPTIONS:
+                self.set_option(name, OPTIONS[name])
+            self.set_option("time_limit", float("inf"))
+
+    def _propose(self, start: Floats) -> None:
+        known = np.flatnonzero(~np.isnan(start))
+        code = self._highs.setSolution(len(known), known.astype(np.int32), start[known])
+        self._check(code, "a starting plan")
+
+    def _decision(self) -> Decision:
+        status, info = self._highs.getModelStatus(), self._highs.getInfo()
+        if info.primal_solution_status != highspy.SolutionStatus.kSolutionStatusFeasible:
+            raise SolverError(STATUS[status.name])
+        if status not in {highspy.HighsModelStatus.kOptimal, highspy.HighsModelStatus.kTimeLimit}:
+            raise SolverError(STATUS[status.name])
+        return Decision(np.asarray(self._highs.getSolution().col_value), float(info.mip_gap))
+
     @property
     def iterations(self) -> int:
         """Simplex iterations of the last run."""
@@ -180,6 +237,8 @@ class LinearSolver:
         )
 
 
+_INTEGER, _CONTINUOUS = highspy.HighsVarType.kInteger, highspy.HighsVarType.kContinuous
+_KINDS = (_INTEGER, _CONTINUOUS)
 _STATUSES = list(highspy.HighsBasisStatus.__members__.values())
 BASIC = int(highspy.HighsBasisStatus.kBasic)
 

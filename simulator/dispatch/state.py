@@ -25,6 +25,7 @@ class State:
     starts, stops : arrays (lag, unit), how much of each unit started and stopped in the periods
         before, most recent first. They carry the hours in that state, and do so exactly in mode
         `relaxed` too, where a unit may be partly on.
+    cooling : array (lag, unit), the stops that no start has used up and that are not cold yet
     stored : array (store,), MWh
     """
 
@@ -32,6 +33,7 @@ class State:
     on: Floats
     starts: Floats
     stops: Floats
+    cooling: Floats
     stored: Floats
 
     @property
@@ -56,11 +58,13 @@ def initial_state(case: Case, unit: UnitData) -> State:
     on[unknown & (output > 0)] = 1.0
     on[unknown & (output == 0) & (units["min_output_mw"].to_numpy(float) > 0)] = 0.0
     output[on == 0] = 0.0
+    stops = _since(-hours, unit, case.time.period_hours)
     return State(
         output=output,
         on=on,
         starts=_since(hours, unit, case.time.period_hours),
-        stops=_since(-hours, unit, case.time.period_hours),
+        stops=stops,
+        cooling=np.where(np.arange(1, unit.memory + 1)[:, None] <= unit.hot_periods, stops, 0.0),
         stored=case.storage["initial_mwh"].to_numpy(float).copy(),
     )
 

@@ -15,7 +15,7 @@ from simulator.dispatch.compiled import CompiledFleet, compile_fleet
 from simulator.dispatch.fleet import FleetData, fleet_data, given_commitment
 from simulator.dispatch.inputs import WindowInputs
 from simulator.dispatch.limits import FLOW_TOLERANCE, LineRows
-from simulator.dispatch.solver import LinearSolver, SolverError
+from simulator.dispatch.solver import BASIC, LinearSolver, SolverError
 from simulator.dispatch.state import State
 
 __all__ = ["Counts", "WindowError", "WindowModel", "WindowSolution"]
@@ -33,6 +33,7 @@ class Counts:
     line_rows: int = 0
     builds: int = 0
     iterations: int = 0
+    gaps: list[float] = field(default_factory=list)
     seconds: dict[str, float] = field(
         default_factory=lambda: {"build": 0.0, "solve": 0.0, "network": 0.0}
     )
@@ -88,7 +89,7 @@ class WindowSolution:
     line_dual: Floats
     objective: float
 
-    def state_after(self, before: State, kept: int) -> State:
+    def state_after(self, before: State, kept: int, hot_periods: Integers) -> State:
         """Return the state at the end of the first `kept` periods (formulation.md 4)."""
         memory = len(before.starts)
 
@@ -100,8 +101,25 @@ class WindowSolution:
             on=np.clip(self.on[kept - 1], 0.0, 1.0),
             starts=recent(self.start, before.starts),
             stops=recent(self.stop, before.stops),
+            cooling=self._cooling_after(before, kept, hot_periods),
             stored=self.stored[kept - 1],
         )
+
+    def _cooling_after(self, before: State, kept: int, hot_periods: Integers) -> Floats:
+        """Return stops no start has used up and that are not cold yet, array (lag, unit).
+
+        Each hot start uses the oldest stop that is still hot.
+        """
+        cooling = before.cooling
+        memory = len(cooling)
+        young = np.arange(1, memory + 1)[:, None] <= hot_periods
+        for period in range(kept):
+            hot = np.clip(self.start[period] - self.cold_start[period], 0.0, 1.0)
+            older = np.cumsum(cooling[::-1], axis=0)[::-1] - cooling
+            cooling = cooling - np.clip(hot - older, 0.0, cooling)
+            stopped = np.clip(self.stop[period], 0.0, 1.0)[None]
+            cooling = np.where(young, np.concatenate([stopped, cooling])[:memory], 0.0)
+        return cooling
 
 
 class WindowModel:
@@ -118,6 +136,9 @@ class WindowModel:
             self._entries = self.fleet.moving_entries(inputs, data)
             self.lines = LineRows(inputs, self.fleet)
             self._first, self._shift = inputs.first, 0
+            self._plan: Floats | None = None
+            self._relaxed_basis: tuple[Integers, Integers] | None = None
+            self._gap, self._seconds = inputs.gap, inputs.seconds
 
     def __repr__(self) -> str:
         rows, columns = self.fleet.matrix.shape
@@ -132,7 +153,10 @@ class WindowModel:
         data = fleet_data(inputs, state)
         self._load(inputs, data)
         try:
-            network = self._solve_with_lines(inputs)
+            network = self._begin(inputs)
+            self._solve_with_lines(inputs, network)
+            if inputs.mode == "optimal":
+                self._decide(inputs, state, network)
         except SolverError as failure:
             raise WindowError(failure.status, self._contradictions(failure)) from failure
         return self._solution(inputs, state, network)
@@ -156,7 +180,7 @@ class WindowModel:
         self._shift = shift if 0 < shift < inputs.periods else 0
         if not self._shift:
             return
-        columns, rows = self._solver.basis()
+        columns, rows = self._relaxed_basis or self._solver.basis()
         fleet_rows = self.fleet.matrix.shape[0]
         moved = self.lines.shifted(rows[fleet_rows:], shift, *inputs.rating.shape)
         self._solver.set_basis(
@@ -164,37 +188,111 @@ class WindowModel:
             np.concatenate([_shifted(rows[:fleet_rows], self.fleet.rows, shift), moved]),
         )
 
-    def _solve_with_lines(self, inputs: WindowInputs) -> "_Network":
-        """Solve, look for lines beyond their rating, add their rows, until there is none (3)."""
+    def _begin(self, inputs: WindowInputs) -> "_Network":
+        """Put the line rows that stand, and those that hours seen before will want, in place."""
         with self.counts.timed("network"):
             network = _Network(inputs)
             if inputs.limited:
                 self.lines.begin_window(self._solver, inputs, network.fixed)
                 self._add(inputs, network, self.lines.carried(self._shift, inputs))
+        return network
+
+    def _solve_with_lines(self, inputs: WindowInputs, network: "_Network") -> None:
+        """Solve, look for lines beyond their rating, add their rows, until there is none (3)."""
         while True:
             self._run()
-            with self.counts.timed("network"):
-                self._look(inputs, network)
-                missing = network.beyond(inputs) & ~self.lines.active(inputs)
-                if not (inputs.limited and missing.any()):
-                    return network
-                self._add(inputs, network, missing)
+            network.solution, network.row_dual = self._solver.solution()
+            if not (self._lines_added(inputs, network) or self._ties_turned(network)):
+                return
+
+    def _ties_turned(self, network: "_Network") -> bool:
+        """Close the lesser direction of ties that run both ways at once, if any.
+
+        Where a price is negative, sending there and back would burn energy in losses that no real
+        link has; what is left is the better direction of that solution.
+        """
+        forward, reverse = (self.fleet.columns[name] for name in ("tie_forward", "tie_reverse"))
+        sent, returned = network.solution[forward], network.solution[reverse]
+        both = np.minimum(sent, returned) > FLOW_TOLERANCE
+        if not both.any():
+            return False
+        lesser = np.where(sent < returned, forward, reverse)[both]
+        self._solver.fix_columns(lesser, np.zeros(len(lesser)))
+        return True
+
+    def _lines_added(self, inputs: WindowInputs, network: "_Network") -> bool:
+        """Look at the flows of a solution; add rows for lines beyond their rating, if any."""
+        with self.counts.timed("network"):
+            injection = self.lines.injection.injections(network.solution, inputs)
+            network.flow = inputs.topology.flows(injection)
+            if not inputs.limited:
+                return False
+            missing = network.beyond(inputs) & ~self.lines.active(inputs)
+            self._add(inputs, network, missing)
+            return bool(missing.any())
 
     def _add(self, inputs: WindowInputs, network: "_Network", missing: NDArray[np.bool_]) -> None:
         if missing.any():
             self.lines.add(self._solver, inputs, network.fixed, missing)
             self.counts.line_rows += int(missing.sum())
 
+    def _decide(self, inputs: WindowInputs, state: State, network: "_Network") -> None:
+        """Decide on and off, then solve again with the decisions fixed, for prices (2.3, 5.5).
+
+        Line rows found on the relaxation stand already; if the plan breaks others, they are added and
+        the search goes on from that plan. The basis of the relaxation is kept for the next window.
+        """
+        basis = self._solver.basis()
+        plan = self._last_plan()
+        while True:
+            with self.counts.timed("solve"):
+                decision = self._solver.run_integer(
+                    self.fleet.columns["on"].ravel(), self._gap, self._seconds, plan
+                )
+            self.counts.mip_solves += 1
+            network.solution = decision.values
+            plan = self._decisions_of(decision.values, 0)
+            if not self._lines_added(inputs, network):
+                break
+        self.counts.gaps.append(decision.gap)
+        self._plan = decision.values
+        self._solver.set_basis(*self._extended(basis))
+        self._fix(state, decision.values)
+        self._solve_with_lines(inputs, network)
+        self._relaxed_basis = self._extended(basis)
+
+    def _extended(self, basis: tuple[Integers, Integers]) -> tuple[Integers, Integers]:
+        columns, rows = basis
+        more = np.full(self._solver.rows - len(rows), BASIC)
+        return columns, np.concatenate([rows, more])
+
+    def _fix(self, state: State, plan: Floats) -> None:
+        """Fix on, start and stop at the plan's decisions."""
+        on = np.round(plan[self.fleet.columns["on"]])
+        before = np.where(np.isnan(state.on), on[0], np.nan_to_num(state.on))
+        change = np.diff(on, axis=0, prepend=before[None])
+        decided = {"on": on, "start": np.maximum(change, 0.0), "stop": np.maximum(-change, 0.0)}
+        for family, values in decided.items():
+            self._solver.fix_columns(self.fleet.columns[family].ravel(), values.ravel())
+
+    def _last_plan(self) -> Floats | None:
+        """Return the last window's decisions for the hours seen before; NaN for all else."""
+        if self._plan is None or not self._shift:
+            return None
+        return self._decisions_of(self._plan, self._shift)
+
+    def _decisions_of(self, plan: Floats, shift: int) -> Floats:
+        """Return a plan's on/off decisions, moved `shift` periods towards the start; NaN elsewhere."""
+        start = np.full(len(plan), np.nan)
+        places = self.fleet.columns["on"]
+        start[places[: len(places) - shift]] = np.round(plan[places[shift:]])
+        return start
+
     def _run(self) -> None:
         with self.counts.timed("solve"):
             self._solver.run()
         self.counts.lp_solves += 1
         self.counts.iterations += self._solver.iterations
-
-    def _look(self, inputs: WindowInputs, network: "_Network") -> None:
-        network.solution, network.row_dual = self._solver.solution()
-        injection = self.lines.injection.injections(network.solution, inputs)
-        network.flow = inputs.topology.flows(injection)
 
     def _contradictions(self, failure: SolverError) -> list[tuple[str, int, int]]:
         if "infeasible" not in failure.status:
@@ -213,7 +311,8 @@ class WindowModel:
 
     def _solution(self, inputs: WindowInputs, state: State, network: "_Network") -> WindowSolution:
         values = self.fleet.named(network.solution)
-        values.pop("exchange")
+        for family in ("exchange", "energy_short", "stopped", "matched"):
+            values.pop(family, None)
         if inputs.mode == "given":
             given = given_commitment(inputs, state)
             decided = {"on": given.on, "start": given.start, "stop": given.stop}

@@ -29,6 +29,7 @@ Integers = NDArray[np.int64]
 
 _SOLVE_TOLERANCE = 1e-6
 _BRIDGE_TOLERANCE = 1e-7
+_COLUMNS = 16  # more right-hand sides at once wake the BLAS threads, which costs more than it saves
 
 
 class Topology:
@@ -103,8 +104,9 @@ class Topology:
     def angles(self, injection: Floats) -> Floats:
         """Return bus angles in rad, array (bus, column), for injections of that shape in MW."""
         angle = np.zeros(injection.shape)
-        if len(self._kept):
-            angle[self._kept] = self._factor.solve(np.ascontiguousarray(injection[self._kept]))
+        for start in range(0, injection.shape[1] if len(self._kept) else 0, _COLUMNS):
+            block = slice(start, start + _COLUMNS)
+            angle[self._kept, block] = self._factor.solve(injection[self._kept, block])
         return angle
 
     @cached_property

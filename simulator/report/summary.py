@@ -142,7 +142,7 @@ def _hours(dataset: xr.Dataset) -> Table:
 def _lines(dataset: xr.Dataset) -> Table:
     currency = dataset.attrs["currency"]
     table = _table(
-        "Congested lines", "line", "hours", "hours at limit", f"mean {currency}/MW/h when priced",
+        "Congested lines", "line", "hours", "hours at limit", f"{currency}/MWh when priced",
         f"rent {currency}",
     )  # fmt: skip
     frame = pd.DataFrame({

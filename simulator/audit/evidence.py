@@ -1,0 +1,230 @@
+"""What the audit looks at: the dataset and the case as arrays on the same periods and elements.
+
+Public names: `DIMENSIONS`, `Evidence`, `gather`, `summed`.
+"""
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from functools import cached_property
+
+import numpy as np
+import pandas as pd
+import xarray as xr
+from numpy.typing import NDArray
+
+from simulator.case import Case, series
+from simulator.errors import AuditError
+
+__all__ = ["DIMENSIONS", "Evidence", "gather", "summed"]
+
+Floats = NDArray[np.float64]
+Integers = NDArray[np.int64]
+Booleans = NDArray[np.bool_]
+
+DIMENSIONS: Mapping[str, tuple[str, ...]] = {
+    **dict.fromkeys(
+        ("unit_output", "unit_available", "unit_on", "unit_start", "unit_cost", "unit_start_cost",
+         "emissions"), ("time", "unit")),
+    **dict.fromkeys(("renewable_available", "renewable_output", "curtailment"), ("time", "plant")),
+    **dict.fromkeys(("storage_charge", "storage_discharge", "stored_energy"), ("time", "store")),
+    **dict.fromkeys(("load_demand", "load_unserved"), ("time", "load")),
+    **dict.fromkeys(
+        ("surplus", "price", "price_energy", "price_congestion", "price_loss"), ("time", "bus")),
+    "tie_flow": ("time", "tie"),
+    **dict.fromkeys(
+        ("line_flow", "line_rating", "line_shadow_price", "congestion_rent"), ("time", "line")),
+    **dict.fromkeys(("congestion_hours", "hours_at_limit"), ("line",)),
+    "cost": ("time", "component"),
+    "window": ("time",),
+}  # fmt: skip
+"""The variables that are audited, and their dimensions (results-format.md)."""
+
+COMPONENTS = (
+    "unit_running", "unit_start", "renewable", "storage", "unserved", "surplus", "reserve_shortage",
+)  # fmt: skip
+MODES = ("given", "relaxed", "optimal")
+LIMITS = ("none", "lines")
+
+
+@dataclass(frozen=True, eq=False)
+class Evidence:
+    """A run and its case, side by side.
+
+    names : dimension → labels in the order of the case's table
+    span : the run's periods on the case's time axis; hours : their local starts
+    length : Δ, h; mode, limits : what the run was asked for
+    values : variable → array with the dimensions of `DIMENSIONS`; NaN for what is endless and is not
+        the rating of a line
+    """
+
+    case: Case
+    names: Mapping[str, pd.Index]
+    span: slice
+    length: float
+    mode: str
+    limits: str
+    values: Mapping[str, Floats] = field(repr=False)
+
+    def __getitem__(self, variable: str) -> Floats:
+        return self.values[variable]
+
+    @property
+    def hours(self) -> pd.DatetimeIndex:
+        """Local starts of the periods."""
+        return self.case.time.local[self.span]
+
+    @property
+    def periods(self) -> int:
+        """Number of periods."""
+        return self.span.stop - self.span.start
+
+    @cached_property
+    def elapsed(self) -> Floats:
+        """Hours from the start of the run to that of each period, array (period, 1)."""
+        hours: Floats = np.arange(float(self.periods))[:, None] * self.length
+        return hours
+
+    @cached_property
+    def window_ends(self) -> Booleans:
+        """Whether what the solver saw next is not kept: the last kept period of each window (period,)."""
+        ends: Booleans = np.append(np.diff(self["window"]) != 0, [True])
+        return ends
+
+    def bus(self, table: pd.DataFrame, column: str = "bus") -> Integers:
+        """Return the positions of the buses some elements are at."""
+        return self.names["bus"].get_indexer(pd.Index(table[column]))
+
+    @cached_property
+    def tie_share(self) -> Floats:
+        """What planned outages leave of each tie, array (period, tie), 0 to 1."""
+        return series.available_share(self.case, "dc_tie", self.names["tie"], self.span)
+
+    @cached_property
+    def store_share(self) -> Floats:
+        """What planned outages leave of the power of each store, array (period, store), 0 to 1."""
+        return series.available_share(self.case, "storage", self.names["store"], self.span)
+
+    @cached_property
+    def demand_at_bus(self) -> Floats:
+        """Demand of the case, array (period, bus), MW."""
+        demand = series.load_demand(self.case, self.span)
+        return summed(demand, self.bus(self.case.loads), len(self.names["bus"]))
+
+    @cached_property
+    def tie_delivered(self) -> Floats:
+        """Share of what enters a tie that arrives, array (tie,)."""
+        delivered: Floats = 1 - self.case.dc_ties["loss_percent"].to_numpy(float) / 100
+        return delivered
+
+    @cached_property
+    def injection(self) -> Floats:
+        """Net injection at each bus, from the dataset, array (period, bus), MW (1.2)."""
+        case, buses = self.case, len(self.names["bus"])
+        stored = self["storage_discharge"] - self["storage_charge"]
+        served = self["load_demand"] - self["load_unserved"]
+        sent, back = np.maximum(self["tie_flow"], 0.0), np.maximum(-self["tie_flow"], 0.0)
+        arrives = self.tie_delivered
+        return (
+            summed(self["unit_output"], self.bus(case.units), buses)
+            + summed(self["renewable_output"], self.bus(case.renewables), buses)
+            + summed(stored, self.bus(case.storage), buses)
+            - summed(served, self.bus(case.loads), buses)
+            + summed(arrives * back - sent, self.bus(case.dc_ties, "from_bus"), buses)
+            + summed(arrives * sent - back, self.bus(case.dc_ties, "to_bus"), buses)
+            - self["surplus"]
+        )
+
+
+def summed(values: Floats, place: Integers, places: int) -> Floats:
+    """Sum values (period, element) at the places of the elements, array (period, place).
+
+    >>> summed(np.array([[1.0, 2.0, 4.0]]), np.array([1, 0, 1]), 3)
+    array([[2., 5., 0.]])
+    """
+    total = np.zeros((len(values), places))
+    np.add.at(total.T, place, values.T)
+    return total
+
+
+def gather(case: Case, dataset: xr.Dataset) -> Evidence:
+    """Lay dataset and case side by side; raise `AuditError` where they do not belong together."""
+    names = {
+        "bus": case.buses.index, "line": case.lines.index, "unit": case.units.index,
+        "plant": case.renewables.index, "store": case.storage.index, "tie": case.dc_ties.index,
+        "load": case.loads.index, "component": pd.Index(COMPONENTS),
+    }  # fmt: skip
+    for dimension, expected in names.items():
+        _same_elements(dataset, dimension, expected)
+    _no_products(dataset)
+    if case.settings.network.losses:
+        raise _unfit("the case", "must be without network losses", "losses", "audit it without")
+    return Evidence(
+        case=case, names=names, span=_span(case, dataset), length=_length(case, dataset),
+        mode=_choice(dataset, "commitment", MODES), limits=_choice(dataset, "limits", LIMITS),
+        values={name: _values(dataset, name, dims) for name, dims in DIMENSIONS.items()},
+    )  # fmt: skip
+
+
+def _unfit(subject: str, rule: str, found: object, remedy: str) -> AuditError:
+    return AuditError(f"{subject}, {rule}, found {found}, {remedy}")
+
+
+_RERUN = "run the case again"
+
+
+def _same_elements(dataset: xr.Dataset, dimension: str, expected: pd.Index) -> None:
+    subject, rule = f"dimension {dimension} of the dataset", "must name the elements of the case"
+    if dimension not in dataset.coords:
+        raise _unfit(subject, rule, "none", _RERUN)
+    found = [str(name) for name in dataset[dimension].to_numpy()]
+    if found != [str(name) for name in expected]:
+        other = [name for name in found if name not in expected][:5] or "another order or number"
+        raise _unfit(subject, rule, other, _RERUN)
+
+
+def _no_products(dataset: xr.Dataset) -> None:
+    if dataset.sizes.get("product", 0):
+        rule = "must be empty, since reserves are not audited in this version"
+        found = f"{dataset.sizes['product']} products"
+        raise _unfit("dimension product of the dataset", rule, found, "leave reserves out")
+
+
+def _length(case: Case, dataset: xr.Dataset) -> float:
+    length = dataset.attrs.get("period_hours")
+    if length != case.time.period_hours:
+        rule = f"must be the {case.time.period_hours:g} h of the case"
+        raise _unfit("attribute period_hours of the dataset", rule, length, _RERUN)
+    return float(length)
+
+
+def _choice(dataset: xr.Dataset, attribute: str, known: tuple[str, ...]) -> str:
+    value = dataset.attrs.get(attribute)
+    if value not in known:
+        rule = f"must be one of {', '.join(known)}"
+        raise _unfit(f"attribute {attribute} of the dataset", rule, value, _RERUN)
+    return str(value)
+
+
+def _span(case: Case, dataset: xr.Dataset) -> slice:
+    """Find the run's periods on the case's time axis."""
+    subject, rule = "dimension time of the dataset", "must be periods of the case, without gap"
+    times = dataset.indexes.get("time")
+    if not isinstance(times, pd.DatetimeIndex) or not len(times):
+        raise _unfit(subject, rule, "no times", _RERUN)
+    places = case.time.periods.get_indexer(times.tz_localize("UTC"))
+    first = int(places[0])
+    if first < 0 or not np.array_equal(places, np.arange(first, first + len(places))):
+        raise _unfit(subject, rule, f"{times[0]} to {times[-1]}", _RERUN)
+    return slice(first, first + len(places))
+
+
+def _values(dataset: xr.Dataset, name: str, dimensions: tuple[str, ...]) -> Floats:
+    subject, rule = f"variable {name} of the dataset", f"must be there over {', '.join(dimensions)}"
+    if name not in dataset:
+        raise _unfit(subject, rule, "none", _RERUN)
+    variable = dataset[name]
+    if set(variable.dims) != set(dimensions):
+        raise _unfit(subject, rule, f"it over {', '.join(map(str, variable.dims))}", _RERUN)
+    values = variable.transpose(*dimensions).to_numpy().astype(float)
+    endless = np.isinf(values) & ((name != "line_rating") | (values < 0))
+    return np.where(endless, np.nan, values)

@@ -1,0 +1,151 @@
+"""All rules that look at more than one table, and what is odd but allowed.
+
+Public names: `broken_rules`, `oddities`.
+"""
+
+from collections.abc import Iterator
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from simulator.case.clock import Stamps, read_stamps
+from simulator.case.curves import curve_problems
+from simulator.case.declaration import Declaration
+from simulator.case.folder import SETTINGS
+from simulator.case.profiles import profile_problems
+from simulator.case.references import dangling, repeated
+from simulator.case.sheet import Sheet
+from simulator.case.wording import file_problem, number, quoted
+from simulator.errors import Problem
+
+__all__ = ["broken_rules", "oddities"]
+
+WHOLE = 1e-9
+"""A count of periods this close to a whole number is whole."""
+
+
+def broken_rules(declaration: Declaration) -> list[Problem]:
+    """Return every fault of a declaration that no table shows on its own."""
+    return [
+        *_no_bus(declaration),
+        *repeated(declaration),
+        *dangling(declaration),
+        *curve_problems(declaration),
+        *profile_problems(declaration),
+        *_outage_times(declaration),
+        *_horizon(declaration),
+        *_initial_hours(declaration),
+    ]
+
+
+def oddities(declaration: Declaration) -> list[Problem]:
+    """Return what is allowed but probably not meant."""
+    return [
+        *_negative_reactance(declaration),
+        *_lonely_buses(declaration),
+        *_idle_operation_cost(declaration),
+        *_outages_beyond(declaration),
+    ]
+
+
+def _no_bus(declaration: Declaration) -> Iterator[Problem]:
+    buses = declaration.sheets["buses"]
+    if buses.whole and buses.frame.empty:
+        yield file_problem(buses.table.path, "must have a bus", "none", "add a row for each bus")
+
+
+def _outage_times(declaration: Declaration) -> Iterator[Problem]:
+    """Yield outages whose times cannot be read, or do not follow one another."""
+    outages, zone = declaration.sheets["outages"], declaration.time_zone
+    if zone is None:
+        return
+    read = {column: read_stamps(outages[column], zone) for column in ("from", "until")}
+    for column, stamps in read.items():
+        for faulty, rule, remedy in _stamp_rules(stamps, zone):
+            written = faulty & (outages[column] != "")
+            yield from outages.problems(written, column, (rule, remedy))
+    start, until = read["from"], read["until"]
+    backward = np.asarray(start.early >= until.early) & ~start.ambiguous & ~until.ambiguous
+    words = "must be after from", "exchange or correct them"
+    yield from outages.problems(backward, "until", words, lambda place: _span(outages, place))
+
+
+def _span(outages: Sheet, place: int) -> str:
+    return f"{quoted(outages['from'].iloc[place])} until {quoted(outages['until'].iloc[place])}"
+
+
+def _stamp_rules(stamps: Stamps, zone: str) -> tuple[tuple[NDArray[np.bool_], str, str], ...]:
+    return (
+        (stamps.malformed, "must be an ISO 8601 time", "write it like 2027-01-11T06:00"),
+        (stamps.skipped, f"must exist in {zone}", "the clock change skips it: write a later time"),
+        (
+            stamps.ambiguous,
+            f"must come once in {zone}",
+            "the clock change repeats it: add an offset",
+        ),
+    )
+
+
+def _horizon(declaration: Declaration) -> Iterator[Problem]:
+    if declaration.settings is None or declaration.time is None:
+        return
+    length = declaration.time.period_hours
+    for key, hours in declaration.settings.horizon.model_dump().items():
+        if abs(hours / length - round(hours / length)) > WHOLE:
+            place = f"horizon.{key}"
+            row = declaration.setting_rows.get(place, 1)
+            rule = f"must be a whole number of periods of {number(length)} h"
+            words = f"setting {quoted(place)}", rule, number(hours), "choose a multiple of a period"
+            yield Problem(SETTINGS, row, place, *words)
+
+
+def _initial_hours(declaration: Declaration) -> Iterator[Problem]:
+    """Yield initial hours that are no whole number of periods, as minimum times count periods."""
+    if declaration.time is None:
+        return
+    units, length = declaration.sheets["units"], declaration.time.period_hours
+    periods = units["initial_hours"] / length
+    words = f"must be a whole number of periods of {number(length)} h", "round it to periods"
+    yield from units.problems((periods - periods.round()).abs() > WHOLE, "initial_hours", words)
+
+
+def _negative_reactance(declaration: Declaration) -> Iterator[Problem]:
+    lines = declaration.sheets["lines"]
+    words = "is usually positive", "keep it only for series compensation"
+    yield from lines.problems(lines["reactance_pu"] < 0, "reactance_pu", words)
+
+
+def _lonely_buses(declaration: Declaration) -> Iterator[Problem]:
+    """Yield buses that have something connected but no line and no tie."""
+    sheets = declaration.sheets
+    links = sheets["lines"], sheets["dc_ties"]
+    tied = pd.concat([link[end] for link in links for end in ("from_bus", "to_bus")])
+    users = [sheets[name] for name in ("units", "renewables", "storage", "loads")]
+    at_bus = pd.concat([sheet["bus"] for sheet in users]).value_counts()
+    buses = sheets["buses"]
+    if len(buses.frame) > 1:
+        lonely = ~buses["bus"].isin(tied) & buses["bus"].isin(at_bus.index)
+        words = "is an island of its own, without line and tie", "connect it if that is not meant"
+        yield from buses.problems(
+            lonely, "bus", words, lambda place: f"{at_bus[buses['bus'].iloc[place]]} elements there"
+        )
+
+
+def _idle_operation_cost(declaration: Declaration) -> Iterator[Problem]:
+    units = declaration.sheets["units"]
+    offered = units["unit"].isin(declaration.sheets["offers"]["unit"])
+    words = "is not added, since offers are complete costs", "leave it out, or add it to the offers"
+    idle = offered & (units["variable_om_per_mwh"] != 0)
+    yield from units.problems(idle, "variable_om_per_mwh", words)
+
+
+def _outages_beyond(declaration: Declaration) -> Iterator[Problem]:
+    outages, time = declaration.sheets["outages"], declaration.time
+    if time is not None:
+        end = time.periods[-1] + pd.Timedelta(hours=time.period_hours)
+        start = read_stamps(outages["from"], time.time_zone).early
+        until = read_stamps(outages["until"], time.time_zone).early
+        beyond = np.asarray((until <= time.periods[0]) | (start >= end))
+        words = "is wholly outside the hourly data", "nothing to do if that is meant"
+        yield from outages.problems(beyond, "from", words, lambda place: _span(outages, place))

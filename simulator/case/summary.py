@@ -1,0 +1,77 @@
+"""What a case holds, in a few lines of text.
+
+Public names: `summary`.
+"""
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+import pandas as pd
+
+from simulator.case.wording import number
+
+if TYPE_CHECKING:
+    from simulator.case.model import Case
+
+__all__ = ["summary"]
+
+
+def summary(case: "Case") -> str:
+    """Return name, hours covered, counts, MW by technology and peak load."""
+    rows = {
+        "hours": _hours(case),
+        "network": _network(case),
+        "units": _fleet(case.units, "max_output_mw"),
+        "renewables": _fleet(case.renewables, "capacity_mw"),
+        "storage": _storage(case),
+        "loads": _loads(case),
+        "outages": str(len(case.outages)),
+        "warnings": str(len(case.warnings)),
+    }
+    lines = [f"  {label:<11} {text}" for label, text in rows.items()]
+    return "\n".join([case.settings.name, *lines])
+
+
+def _hours(case: "Case") -> str:
+    time = case.time
+    end = time.local[-1] + pd.Timedelta(hours=time.period_hours)
+    periods = f"{len(time)} periods of {number(time.period_hours)} h"
+    return f"{_moment(time.local[0])} to {_moment(end)} {time.time_zone}, {periods}"
+
+
+def _moment(time: pd.Timestamp) -> str:
+    return time.strftime("%Y-%m-%d %H:%M")
+
+
+def _network(case: "Case") -> str:
+    return f"{len(case.buses)} buses, {len(case.lines)} lines, {len(case.dc_ties)} DC ties"
+
+
+def _fleet(table: pd.DataFrame, column: str) -> str:
+    total = f"{len(table)}, {_mw(table[column].sum())}"
+    by_technology = table.groupby("technology")[column].sum().sort_values(ascending=False)
+    parts = [f"{name or 'unnamed'} {_mw(power)}" for name, power in by_technology.items()]
+    return f"{total}: {', '.join(parts)}" if len(table) else "0"
+
+
+def _mw(power: float) -> str:
+    return f"{power:,.0f} MW"
+
+
+def _storage(case: "Case") -> str:
+    stores = case.storage
+    if stores.empty:
+        return "0"
+    return (
+        f"{len(stores)}, {_mw(stores['discharge_mw'].sum())}, {stores['energy_mwh'].sum():,.0f} MWh"
+    )
+
+
+def _loads(case: "Case") -> str:
+    loads = case.loads
+    if loads.empty:
+        return "0"
+    scale = loads.groupby("profile")["scale_mw"].sum()
+    total = case.profiles[scale.index].to_numpy() @ scale.to_numpy()
+    peak = int(np.argmax(total))
+    return f"{len(loads)}, peak {_mw(total[peak])} at {_moment(case.time.local[peak])}"

@@ -1,0 +1,25 @@
+"""Good runs, solved once."""
+
+import pytest
+
+from simulator.horizon import plan_run, run
+from simulator.results import to_dataset
+from tests.audit.plants import HOURS, town_case
+
+
+@pytest.fixture(scope="session")
+def town(tmp_path_factory):
+    return town_case(tmp_path_factory.mktemp("town") / "case")
+
+
+@pytest.fixture(scope="session")
+def solved(town):
+    """The day of the case, in windows that look past what is kept."""
+    plan = plan_run(town, hours=HOURS, window_hours=12, keep_hours=8, commitment="given")
+    return to_dataset(run(town, plan))
+
+
+@pytest.fixture
+def dataset(solved):
+    """A copy of the good dataset, to do anything with."""
+    return solved.copy(deep=True)

@@ -1,0 +1,1 @@
+"""Tests of the case folder and the case read from it."""

@@ -1,0 +1,67 @@
+"""The border to HiGHS: every status has words, options are checked, failures are raised."""
+
+import highspy
+import numpy as np
+import pytest
+from scipy import sparse
+
+from simulator.dispatch import solver
+from simulator.dispatch.compiled import Vectors
+from simulator.dispatch.solver import STATUS, LinearSolver
+
+
+def program(lower: float, upper: float) -> LinearSolver:
+    """Minimise 2x + 3y with lower ≤ x + y ≤ upper, 0 ≤ x ≤ 4, 0 ≤ y ≤ 10."""
+    vectors = Vectors(
+        np.zeros(2), np.array([4.0, 10.0]), np.array([2.0, 3.0]), np.array([lower]), np.array([upper])
+    )  # fmt: skip
+    return LinearSolver(sparse.csc_array(np.array([[1.0, 1.0]])), vectors)
+
+
+def test_every_status_of_the_solver_has_words():
+    known = {getattr(status, "name", status) for status in STATUS}
+    assert known == set(highspy.HighsModelStatus.__members__)
+    assert all(STATUS.values())
+
+
+def test_a_wrong_option_or_value_is_refused():
+    lp = program(5, 20)
+    lp.set_option("random_seed", 3)
+    failure = solver.SolverError
+    with pytest.raises(failure, match="no_such_option"):
+        lp.set_option("no_such_option", 1)
+    with pytest.raises(failure, match="presolve"):
+        lp.set_option("presolve", "perhaps")
+
+
+def test_a_small_program_has_the_solution_found_by_hand():
+    """x is cheaper: 4 of it and 1 of y; one more asked for costs 3."""
+    lp = program(5, 20)
+    lp.run()
+    values, duals = lp.solution()
+    assert lp.objective == pytest.approx(11)
+    assert values == pytest.approx([4, 1])
+    assert duals == pytest.approx([3])
+
+
+def test_an_infeasible_program_is_not_believed_to_be_solved():
+    lp = program(15, 20)
+    with pytest.raises(solver.SolverError, match="infeasible"):
+        lp.run()
+    rows, columns = lp.contradictions()
+    assert len(rows) + len(columns) > 0
+
+
+def test_rows_added_and_deleted_move_the_optimum():
+    lp = program(5, 20)
+    lp.run()
+    only_x = sparse.csr_array(np.array([[1.0, 0.0]]))
+    lp.add_rows(only_x, np.array([0.0]), np.array([1.5]))
+    lp.run()
+    assert lp.objective == pytest.approx(2 * 1.5 + 3 * 3.5)
+    lp.set_row_bounds(np.array([1]), np.array([0.0]), np.array([3.0]))
+    lp.run()
+    assert lp.objective == pytest.approx(2 * 3 + 3 * 2)
+    lp.delete_rows(np.array([1]))
+    lp.run()
+    assert (lp.rows, lp.objective) == (1, pytest.approx(11))
