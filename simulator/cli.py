@@ -58,6 +58,7 @@ app = typer.Typer(
 )
 
 CasePath = Annotated[Path, typer.Argument(metavar="CASE", help="Case folder.")]
+RunPath = Annotated[Path, typer.Argument(metavar="RUN", help="Folder of a run.")]
 Json = Annotated[bool, typer.Option("--json", help="Print one JSON document and nothing else.")]
 
 
@@ -101,8 +102,10 @@ def week(
 ) -> None:
     """Run a case over a week, or any number of hours, and keep results, record and page."""
     from simulator import results
+    from simulator.audit import audit, audit_record
     from simulator.case import read_case
     from simulator.horizon import plan_run, run
+    from simulator.report.page import write_page
 
     clock = Clock()
     found = read_case(case)
@@ -121,9 +124,38 @@ def week(
     clock.skip()
     dataset = results.to_dataset(finished)
     clock.lap("results")
-    record = results.run_record(finished, dataset, clock.seconds)
-    results.save(dataset, record, folder, force=force)
+    checks = audit(found, dataset)
+    clock.lap("audit")
+    record = results.run_record(finished, dataset, clock.seconds) | {"audit": audit_record(checks)}
+    results.save(
+        dataset, record, folder, force=force, page=lambda path: write_page(dataset, record, path)
+    )
     _report(dataset, record, folder, as_json=as_json)
+    _stop_unless_proved(record)
+
+
+@app.command(epilog="Example: rampline page outputs/fennholm-2027-01-01")
+def page(run: RunPath) -> None:
+    """Write the page of a run again."""
+    from simulator import results
+    from simulator.report.page import write_page
+
+    dataset, record = results.open_run(run), results.open_record(run)
+    results.replace_file(run / "page.html", lambda path: write_page(dataset, record, path))
+    typer.echo(f"written to {run / 'page.html'}", err=True)
+
+
+def _stop_unless_proved(record: dict[str, Any]) -> None:
+    """Say each check of the audit that failed, a line each, and end with its exit code."""
+    failed = [check for check in record["audit"]["checks"] if not check["passed"]]
+    for check in failed:
+        typer.echo(
+            f"audit: {check['name']} is off by {check['worst']:g} at {check['where']}, "
+            f"allowed {check['tolerance']:g}",
+            err=True,
+        )
+    if failed:
+        raise typer.Exit(EXIT_AUDIT)
 
 
 class Clock:

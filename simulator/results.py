@@ -1,6 +1,7 @@
 """What a run leaves: the dataset of results-format.md, run.json, and the folder they live in.
 
-Public names: `FORMAT`, `open_run`, `run_record`, `save`, `to_dataset`.
+Public names: `FORMAT`, `open_record`, `open_run`, `refuse_existing`, `replace_file`, `run_record`,
+`save`, `to_dataset`.
 
 The only writer of that contract: each variable is declared once, with its dimensions, unit
 and name.
@@ -9,7 +10,7 @@ and name.
 import json
 import os
 import shutil
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from importlib.metadata import version
 from pathlib import Path
 from tempfile import mkdtemp
@@ -25,7 +26,16 @@ from simulator.case import series
 from simulator.errors import OptionError
 from simulator.horizon import Run
 
-__all__ = ["FORMAT", "open_run", "run_record", "save", "to_dataset"]
+__all__ = [
+    "FORMAT",
+    "open_record",
+    "open_run",
+    "refuse_existing",
+    "replace_file",
+    "run_record",
+    "save",
+    "to_dataset",
+]
 
 Floats = NDArray[np.float64]
 Entry = tuple[tuple[str, ...], str, str]
@@ -290,9 +300,17 @@ def _totals(dataset: xr.Dataset) -> dict[str, float]:
     }
 
 
-def save(dataset: xr.Dataset, record: Mapping[str, Any], folder: Path, *, force: bool) -> None:
+def save(
+    dataset: xr.Dataset,
+    record: Mapping[str, Any],
+    folder: Path,
+    *,
+    force: bool,
+    page: Callable[[Path], None] | None = None,
+) -> None:
     """Write a run's folder whole: under another name first, then moved into place.
 
+    page : writes the page of the run to the path it is given
     An existing folder is refused unless `force`; whatever cuts this off leaves it as it was.
     """
     refuse_existing(folder, force=force)
@@ -302,6 +320,8 @@ def save(dataset: xr.Dataset, record: Mapping[str, Any], folder: Path, *, force:
         made.chmod(0o755)
         write_dataset(dataset, made / "results.nc")
         (made / "run.json").write_text(json.dumps(record, indent=2) + "\n", encoding="utf-8")
+        if page is not None:
+            page(made / "page.html")
         _move(made, folder)
     finally:
         shutil.rmtree(made, ignore_errors=True)
@@ -348,6 +368,28 @@ def _move(made: Path, folder: Path) -> None:
         raise
     finally:
         shutil.rmtree(aside, ignore_errors=True)
+
+
+def open_record(folder: str | os.PathLike[str]) -> dict[str, Any]:
+    """Return run.json of a run's folder."""
+    try:
+        record: dict[str, Any] = json.loads((Path(folder) / "run.json").read_text(encoding="utf-8"))
+    except (OSError, ValueError) as error:
+        raise OptionError(
+            f"the run folder, must hold run.json, found none that can be read in {folder}, give the "
+            "folder that `rampline week` wrote"
+        ) from error
+    return record
+
+
+def replace_file(path: Path, write: Callable[[Path], None]) -> None:
+    """Write a file under another name and move it into place whole."""
+    made = path.with_name(f".{path.name}-{os.getpid()}")
+    try:
+        write(made)
+        made.replace(path)
+    finally:
+        made.unlink(missing_ok=True)
 
 
 def open_run(folder: str | os.PathLike[str]) -> xr.Dataset:

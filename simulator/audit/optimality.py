@@ -86,6 +86,7 @@ def _ramping(units: Units) -> Booleans:
     tight = units.ramp_limited & (np.minimum(up, down) < INSIDE)
     ahead = np.zeros_like(tight)
     ahead[:-1] = tight[1:]
+    # The next window solved the hour after anew, so its kept output is not what this price saw.
     unseen = units.evidence.window_ends[:, None] & units.ramp_limited
     return tight | ahead | unseen
 
@@ -143,6 +144,7 @@ def _stores(evidence: Evidence) -> Residual:
     off[:1] = low[:1] - high[:1]
     for now in range(1, len(low)):
         before = now - 1
+        # Across windows energy is handed over, its value is not.
         if not evidence.window_ends[before]:
             carried = np.where(empty[before], -np.inf, low[before] / kept)
             low[now] = np.maximum(low[now], carried)

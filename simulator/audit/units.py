@@ -114,6 +114,7 @@ class Units:
     def ramp_limited(self) -> Booleans:
         """Whether any ramp of a unit is narrower than its maximum output, array (unit,)."""
         names = ("ramp_up_mw_per_h", "ramp_down_mw_per_h", "start_ramp_mw", "stop_ramp_mw")
+        # A wider ramp cannot bind; a narrower one may not either, but then little is left out.
         narrowest = np.min([self.limit(name) for name in names], axis=0)
         narrow: Booleans = narrowest < self.numbers("max_output_mw")
         return narrow

@@ -11,6 +11,7 @@ import numpy as np
 import pandas as pd
 import pandera.pandas as pa
 from numpy.typing import NDArray
+from pandera.config import ValidationDepth, config_context
 
 from simulator.case.cells import RawTable, decode, flag, number_in, read_cells
 from simulator.case.schema import BLANKS, Field, Kind, Table
@@ -158,7 +159,9 @@ def _broken_rules(sheet: Sheet) -> Iterator[Problem]:
     if sheet.frame.empty:
         return
     try:
-        sheet.table.schema.validate(sheet.frame, lazy=True)
+        # `_column` gives every column its type, so that only values are left to check.
+        with config_context(validation_depth=ValidationDepth.DATA_ONLY):
+            sheet.table.schema.validate(sheet.frame, lazy=True)
     except pa.errors.SchemaErrors as errors:
         failures = errors.failure_cases.assign(row_wise=lambda f: f.schema_context != "Column")
         # pandera reports a rule of the whole row once for each column.

@@ -238,7 +238,7 @@ def _matching_rows(inputs: WindowInputs, state: State) -> dict[str, Bounds]:
     soonest = inputs.unit.restart_periods[dear]
     none = np.zeros((inputs.periods, len(dear)))
     pool = none + cooling.sum(axis=0)
-    gone_cold = pool - _history_sum(cooling, hot, inputs.periods)
+    gone_cold = pool - _history_sum(cooling, hot - 1, inputs.periods)
     return {
         "stops_summed": _exactly(none),
         "matched_sum": _above(none),

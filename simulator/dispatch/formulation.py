@@ -169,7 +169,7 @@ def matched_after_stop(model: Model, t: int, position: int) -> Any:
 def matched_in_time(model: Model, t: int, position: int) -> Any:
     """2.3: a stop not matched within the hot periods is gone cold, M_t ≥ S_{t−hot periods}."""
     unit = int(model.inputs.unit.cold_rows[position])
-    old = t - int(model.inputs.unit.hot_periods[unit]) - 1
+    old = t - int(model.inputs.unit.hot_periods[unit])
     stopped = model.stopped[old, position] if old >= 0 else 0.0
     return model.matched[t, position] - stopped >= model.right["matched_in_time"][t][position]
 

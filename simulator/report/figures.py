@@ -266,12 +266,14 @@ def _compact(values: Floats) -> Figure:
 
 def _scale(price: Floats) -> Figure:
     """Return the ends of the colour scale: a few extreme prices must not flatten all others."""
-    known = price[np.isfinite(price)]
+    known = price[np.isfinite(price)].round(2)
     known = known if len(known) else np.zeros(1)
     least, most = float(known.min()), float(known.max())
     usual_low, usual_high = (float(end) for end in np.quantile(known, (0.05, 0.95)))
     reach = usual_high - usual_low or most - least or 1.0
     low, high = max(least, usual_low - reach), min(most, usual_high + reach)
+    if least < 0:
+        low = min(low, max(least, -reach))
     if low == high:
         low, high = low - 0.5, high + 0.5
     return {

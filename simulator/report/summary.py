@@ -54,7 +54,19 @@ def _heading(dataset: xr.Dataset, record: Mapping[str, Any], console: Console) -
     )
     console.print(
         f"{counts['windows']} windows, {counts['lp_solves']} solves, {counts['line_rows']} line rows, "
-        f"{counts['rebuilds']} rebuilds"
+        f"{counts['rebuilds']} rebuilds, {_audited(record)}"
+    )
+
+
+def _audited(record: Mapping[str, Any]) -> str:
+    if "audit" not in record:
+        return "not audited"
+    checks = record["audit"]["checks"]
+    failed = sum(not check["passed"] for check in checks)
+    return (
+        f"[bold red]{failed} checks failed[/bold red]"
+        if failed
+        else f"all {len(checks)} checks passed"
     )
 
 

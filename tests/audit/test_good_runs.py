@@ -16,6 +16,7 @@ from tests.dispatch.drawing import drawn
 from tests.support import write_case
 
 RTS_GMLC = Path(__file__).parents[2].parent / "shared" / "data" / "rts-gmlc"
+WRONG_WAY = (210, "one window", "given")
 WINDOWS = {"one window": (99, 99), "seen ahead": (5, 2), "one by one": (1, 1)}
 
 
@@ -33,18 +34,15 @@ def solved(case, mode, window=99, keep=99, limits="lines"):
     return to_dataset(run(case, plan))
 
 
-def without_tie_losses(tables):
-    """Take losses off ties: at negative prices they would run both ways to burn power."""
-    ties = [row | {"loss_percent": None} for row in tables["dc_ties"]]
-    return tables | {"dc_ties": ties}
-
-
 @pytest.mark.parametrize("mode", MODES)
 @pytest.mark.parametrize("windows", WINDOWS)
 @pytest.mark.parametrize("seed", range(200, 212))
-def test_random_cases_pass(tmp_path, seed, windows, mode):
+def test_random_cases_pass(request, tmp_path, seed, windows, mode):
+    if (seed, windows, mode) == WRONG_WAY:
+        reason = "of a tie that would run both ways, the direction that pays is closed"
+        request.applymarker(pytest.mark.xfail(reason=reason, strict=True))
     try:
-        case = case_of(tmp_path / "case", **without_tie_losses(drawn(seed)))
+        case = case_of(tmp_path / "case", **drawn(seed))
         dataset = solved(case, mode, *WINDOWS[windows])
     except (CaseError, SolveError):
         pytest.skip("the case contradicts itself")
@@ -56,8 +54,7 @@ def test_random_cases_pass(tmp_path, seed, windows, mode):
 
 @pytest.mark.parametrize("mode", MODES)
 def test_periods_of_a_quarter_hour_pass(tmp_path, mode):
-    cells = {("network/dc_ties.csv", 2, "loss_percent"): ""}
-    case = read_case(write_case(tmp_path / "case", cells=cells, hours=12, step=15))
+    case = read_case(write_case(tmp_path / "case", hours=12, step=15))
     assert not failed(audit(case, solved(case, mode, 24, 12)))
 
 
@@ -65,8 +62,7 @@ def test_periods_of_a_quarter_hour_pass(tmp_path, mode):
     ("start", "twice"), [("2026-10-25T00:00", "+00:00"), ("2026-03-29T00:00", None)]
 )
 def test_days_of_a_clock_change_pass_and_name_local_hours(tmp_path, start, twice):
-    cells = {("network/dc_ties.csv", 2, "loss_percent"): ""}
-    case = read_case(write_case(tmp_path / "case", cells=cells, hours=12, start=start))
+    case = read_case(write_case(tmp_path / "case", hours=12, start=start))
     dataset = solved(case, "relaxed", 6, 3)
     assert not failed(audit(case, dataset))
     dataset["line_flow"].to_numpy()[2, 1] += 1.0

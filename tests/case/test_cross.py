@@ -142,6 +142,11 @@ def test_an_outage_at_a_repeated_local_time_asks_for_an_offset(tmp_path):
     assert "add an offset" in problem.remedy
 
 
+def test_a_doubtful_time_is_not_called_backward_as_well(tmp_path):
+    (problem,) = problems_of(autumn_outage(tmp_path, "2026-10-25T01:30", "2026-10-25T00:30+00:00"))
+    assert problem.column == "from"
+
+
 def test_an_outage_at_a_skipped_local_time_is_told(tmp_path):
     text = "kind,name,from,until\nunit,gas 2,2027-03-28T00:00,2027-03-28T01:30\n"
     problem = only(tmp_path, {OUTAGES: text})

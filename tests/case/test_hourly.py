@@ -389,9 +389,7 @@ def test_timestamps_that_are_none_are_told(tmp_path, wrong, found, zone):
     frame = hourly_frames()[DEMAND].assign(time=times)
     files = {DEMAND: None, "hourly/demand.parquet": parquet(frame)}
     told = [
-        p
-        for p in problems_of(write_case(tmp_path, files, cells))
-        if p.rule == "must be an ISO 8601 time"
+        p for p in problems_of(write_case(tmp_path, files)) if p.rule == "must be an ISO 8601 time"
     ]
     assert [(p.path, p.row, p.found) for p in told] == [("hourly/demand.parquet", 6, found)]
 

@@ -7,11 +7,16 @@ import pytest
 
 from simulator.case import Case
 from tests.dispatch.building import case_of
-from tests.dispatch.drawing import drawn
+from tests.dispatch.drawing import drawn, lossless
 
 
 @pytest.fixture(scope="session")
 def random_case(tmp_path_factory) -> Callable[[int], Case]:
     """The random case of a seed."""
-    folder = tmp_path_factory.mktemp("random")
-    return cache(lambda seed: case_of(folder / str(seed), **drawn(seed)))
+    return cache(lambda seed: case_of(tmp_path_factory.mktemp("random") / "case", **drawn(seed)))
+
+
+@pytest.fixture(scope="session")
+def convex_case(tmp_path_factory) -> Callable[[int], Case]:
+    """The same with ties that lose nothing, so that its optimum is that of a linear program."""
+    return cache(lambda seed: case_of(tmp_path_factory.mktemp("convex") / "case", **lossless(seed)))

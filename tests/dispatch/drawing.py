@@ -1,4 +1,4 @@
-"""Random small cases that meet one another's corners: `drawn(seed)` gives the arguments of `case_of`.
+"""Random small cases full of corners: `drawn(seed)` and `lossless(seed)` give the arguments of `case_of`.
 
 Data are consistent most of the time, not always: what contradicts itself must be refused as well.
 """
@@ -84,6 +84,13 @@ def drawn(seed: int) -> dict[str, Any]:
         "profiles": draw.profiles,
         **elements,
     }  # fmt: skip
+
+
+def lossless(seed: int) -> dict[str, Any]:
+    """The same case with ties that lose nothing on the way."""
+    system = drawn(seed)
+    ties = [row | {"loss_percent": None} for row in system["dc_ties"]]
+    return system | {"dc_ties": ties}
 
 
 def _lines(draw: Draw) -> list[Row]:

@@ -34,19 +34,6 @@ def test_a_unit_scheduled_off_from_an_output_it_cannot_leave_is_named(tmp_path):
         assert words in str(error)
 
 
-def test_a_minimum_output_out_of_reach_is_named(tmp_path):
-    unit = {
-        "min_output_mw": 200,
-        "ramp_up_mw_per_h": 50,
-        "initial_output_mw": 100,
-        "initial_hours": 5,
-    }
-    case = small(tmp_path / "case", unit, load=300.0)
-    with pytest.raises(SolveError) as caught:
-        solved(case, "given")
-    assert any('unit "slow"' in text for text in caught.value.elements)
-
-
 def test_the_window_and_the_hour_of_a_later_contradiction_are_named(tmp_path):
     """A phase shifter of 3 degrees drives 26 MW around its loop; ratings of 10 MW from 03:00 on cannot
 

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from tests.dispatch.building import Row, case_of
-from tests.dispatch.drawing import drawn
+from tests.dispatch.drawing import lossless
 from tests.dispatch.running import cost, finished, solved
 from tests.dispatch.test_published import FIVE_BUSES
 
@@ -45,8 +45,8 @@ def _renamed_row(table: str, row: Row) -> Row:
 
 
 @pytest.mark.parametrize("seed", SEEDS)
-def test_other_names_and_another_order_only_rename_results(tmp_path, random_case, seed):
-    system, results = drawn(seed), solved(random_case(seed))
+def test_other_names_and_another_order_only_rename_results(tmp_path, convex_case, seed):
+    system, results = lossless(seed), solved(convex_case(seed))
     again = solved(case_of(tmp_path / "again", **shuffled(system, np.random.default_rng(seed))))
     assert cost(again) == pytest.approx(cost(results), rel=1e-7)
     for dimension in ("bus", "line", "unit", "plant", "store", "tie", "load"):
@@ -71,14 +71,14 @@ def test_reordered_five_buses_have_the_same_prices_and_flows_by_name(tmp_path):
 
 
 @pytest.mark.parametrize("seed", SEEDS)
-def test_costs_three_times_as_high_make_cost_three_times_as_high(tmp_path, random_case, seed):
-    system = drawn(seed)
+def test_costs_three_times_as_high_make_cost_three_times_as_high(tmp_path, convex_case, seed):
+    system = lossless(seed)
     scaled = system | {table: [_dearer(table, row) for row in system[table]] for table in MONEY}
     scaled["settings"] = {
         section: {key: 3 * value for key, value in values.items()}
         for section, values in system["settings"].items()
     }
-    results = solved(random_case(seed))
+    results = solved(convex_case(seed))
     dearer = solved(case_of(tmp_path / "dearer", **scaled))
     assert cost(dearer) == pytest.approx(3 * cost(results), rel=1e-7)
 
@@ -120,8 +120,8 @@ def test_an_island_of_its_own_changes_nothing_elsewhere(tmp_path):
 
 
 @pytest.mark.parametrize("seed", SEEDS)
-def test_without_limits_there_is_one_price_an_island(random_case, seed):
-    run = finished(random_case(seed), limits="none")
+def test_without_limits_there_is_one_price_an_island(convex_case, seed):
+    run = finished(convex_case(seed), limits="none")
     island = np.stack([topology.island for topology in run.inputs.whole.topology.topologies])
     island = island[run.inputs.whole.topology.index]
     for t, price in enumerate(run.kept.price):
@@ -131,7 +131,7 @@ def test_without_limits_there_is_one_price_an_island(random_case, seed):
 
 
 @pytest.mark.parametrize("seed", SEEDS)
-def test_line_limits_never_make_a_case_cheaper(random_case, seed):
-    case = random_case(seed)
+def test_line_limits_never_make_a_case_cheaper(convex_case, seed):
+    case = convex_case(seed)
     free, limited = (cost(solved(case, limits=limits)) for limits in ("none", "lines"))
     assert limited >= free - 1e-7 * abs(free)

@@ -147,6 +147,9 @@ def test_a_triangle_splits_flow_by_its_reactances(tmp_path):
     limited = solved(case_of(tmp_path / "limited", lines=triangle, **system))
     assert limited["line_flow"].values[0] == pytest.approx([25, 25, 50])
     assert limited["unit_output"].values[0] == pytest.approx([75, 15])
+    triangle[2]["rating_mw"] = 59.999  # a hair too small counts as well
+    tight = solved(case_of(tmp_path / "tight", lines=triangle, **system))
+    assert tight["line_flow"].values[0, 2] == pytest.approx(59.999, abs=1e-6)
     # Bus 2 takes from bus 1 with PTDF 1/3 on 1-3 (path 1-3-2 of two against one): a third of the
     # dear unit's backing is asked for, half of what bus 3 asks with 2/3.
     assert limited["price"].values[0] == pytest.approx([20, 35, 50])

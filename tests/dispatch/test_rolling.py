@@ -11,7 +11,7 @@ from simulator.dispatch import WindowModel
 from simulator.dispatch.inputs import run_inputs
 from simulator.dispatch.state import initial_state
 from simulator.dispatch.window import Counts
-from simulator.errors import SolveError
+from simulator.errors import OptionError, SolveError
 from simulator.horizon import plan_run, run
 from simulator.results import to_dataset
 from tests.dispatch.building import Row, case_of
@@ -21,12 +21,12 @@ ROLLED = [0, 3, 5, 8, 11, 14, 16, 19, 22, 23, 27, 28]
 
 
 @pytest.mark.parametrize("seed", ROLLED)
-def test_windows_that_see_to_the_end_cost_what_one_window_costs(random_case, seed):
+def test_windows_that_see_to_the_end_cost_what_one_window_costs(convex_case, seed):
     """Stores, ramps, minimum times and starts all reach across the windows' edges.
 
     A state is all that an optimum hands on, so that what is left of it stays optimal.
     """
-    case = random_case(seed)
+    case = convex_case(seed)
     for mode in ("given", "relaxed"):
         try:
             whole = finished(case, mode)
@@ -38,9 +38,9 @@ def test_windows_that_see_to_the_end_cost_what_one_window_costs(random_case, see
 
 
 @pytest.mark.parametrize("seed", ROLLED)
-def test_short_windows_go_on_to_the_end_and_are_never_cheaper(random_case, seed):
+def test_short_windows_go_on_to_the_end_and_are_never_cheaper(convex_case, seed):
     """What one window keeps must leave the next a way on, unless the case contradicts itself."""
-    case = random_case(seed)
+    case = convex_case(seed)
     for mode in ("given", "relaxed"):
         try:
             whole = to_dataset(finished(case, mode))
@@ -76,6 +76,12 @@ def test_a_run_that_starts_later_on_the_axis_takes_its_hours_from_there(tmp_path
     assert results["price"].values[:2, 0] == pytest.approx([52, 56])
 
 
+@pytest.mark.parametrize("how", [{"window_hours": 0}, {"keep_hours": 0}, {"hours": 0}])
+def test_a_length_of_nothing_is_refused(convex_case, how):
+    with pytest.raises(OptionError, match="at least one"):
+        plan_run(convex_case(0), **({"hours": 1, "commitment": "given"} | how))
+
+
 def matrix_of(model: WindowModel, rows: int) -> sparse.csc_array:
     """The first rows of the matrix that stands in the solver."""
     lp = model._solver._highs.getLp()
@@ -87,9 +93,9 @@ def matrix_of(model: WindowModel, rows: int) -> sparse.csc_array:
 
 @pytest.mark.parametrize("mode", ["given", "relaxed"])
 @pytest.mark.parametrize("seed", [2, 8, 9, 16, 17, 26])
-def test_a_model_updated_in_place_is_the_model_built_afresh(random_case, seed, mode):
+def test_a_model_updated_in_place_is_the_model_built_afresh(convex_case, seed, mode):
     """Derates and outages move matrix entries; bounds, costs and line rows move with the window."""
-    case = random_case(seed)
+    case = convex_case(seed)
     periods = len(case.time)
     length, keep = periods // 2, max(periods // 4, 1)
     inputs = run_inputs(case, slice(0, periods), periods, mode, limited=True)

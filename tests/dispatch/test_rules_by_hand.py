@@ -35,6 +35,13 @@ def test_ramps_hold_from_the_initial_output_on(tmp_path):
     assert run.kept.output[:, 0] == pytest.approx([50, 80, 80, 40, 0, 0])
 
 
+def test_an_initial_output_of_nothing_holds_the_first_ramp_too(tmp_path):
+    for mode in ("given", "relaxed"):
+        unit = {"initial_output_mw": 0, "ramp_up_mw_per_h": 30}
+        run = one_unit(tmp_path / mode, unit, [80.0] * 3, mode=mode)
+        assert run.kept.output[:, 0] == pytest.approx([30, 60, 80]), mode
+
+
 def test_ramps_are_per_hour_whatever_the_period(tmp_path):
     unit = {"initial_output_mw": 20, "ramp_up_mw_per_h": 40}
     run = one_unit(tmp_path / "case", unit, [100.0] * 4, mode="given", minutes=15)
@@ -233,6 +240,20 @@ def test_a_tie_loses_a_share_of_what_enters_and_links_prices_by_it(tmp_path):
     assert results["tie_flow"].values == pytest.approx(-50)
     assert results["unit_output"].values == pytest.approx(50)
     assert results["price"].values[0] == pytest.approx([20, 20 / 0.9])
+
+
+def test_a_line_without_rating_stays_unlimited_whatever_its_rating_profile(tmp_path):
+    case = case_of(
+        tmp_path / "case", buses=[{"bus": "a"}, {"bus": "b"}], periods=2,
+        lines=[{"line": "a-b", "from_bus": "a", "to_bus": "b", "reactance_pu": 0.1,
+                "rating_profile": "off"}],
+        units=[{"unit": "u", "bus": "a", "max_output_mw": 200}],
+        offers=[{"unit": "u", "up_to_mw": 200, "cost_per_mwh": 20}],
+        loads=[{"load": "l", "bus": "b", "mw": 25}], profiles={"off": [0.0, 1.0]},
+    )  # fmt: skip
+    results = solved(case, "given")
+    assert results["line_flow"].values[:, 0] == pytest.approx([25, 25])
+    assert np.isinf(results["line_rating"].values).all()
 
 
 def test_lines_out_split_the_network_and_join_it_again(tmp_path):
