@@ -145,6 +145,54 @@ def page(run: RunPath) -> None:
     typer.echo(f"written to {run / 'page.html'}", err=True)
 
 
+@app.command(epilog="Example: rampline export outputs/fennholm-2027-01-01 workbook --to xlsx")
+def export(
+    run: RunPath,
+    folder: Annotated[Path, typer.Argument(metavar="DIR", help="Folder to write to.")],
+    *,
+    kind: Annotated[str, typer.Option("--to", help="xlsx | csv | parquet | geojson")],
+    force: Annotated[bool, typer.Option(help="Replace an earlier export.")] = False,
+    as_json: Json = False,
+) -> None:
+    """Write a run's results for other programs: a workbook, tables, or a map layer."""
+    from simulator import results
+    from simulator.report.export import export_run
+
+    dataset, record = results.open_run(run), results.open_record(run)
+    made = export_run(dataset, record, kind, folder, force=force)
+    if as_json:
+        _print_json({"folder": str(folder), "files": made.files, "left_out": made.left_out})
+    if made.left_out:
+        typer.echo(f"left out, nothing in the case: {', '.join(made.left_out)}", err=True)
+    typer.echo(f"written to {folder}", err=True)
+
+
+@app.command(epilog="Example: rampline compare outputs/today outputs/new-line --page changes.html")
+def compare(
+    first: Annotated[Path, typer.Argument(metavar="RUN", help="Folder of the run to start from.")],
+    second: Annotated[Path, typer.Argument(metavar="RUN", help="Folder of the other run.")],
+    *,
+    page: Annotated[Path | None, typer.Option(help="Also write an HTML page to this file.")] = None,
+    as_json: Json = False,
+) -> None:
+    """Say what changes from one run to another over the same hours."""
+    from rich.console import Console
+
+    from simulator import results
+    from simulator.report import comparison, comparison_page
+
+    names = str(first), str(second)
+    records = results.open_record(first), results.open_record(second)
+    found = comparison.compare(results.open_run(first), results.open_run(second), names, records)
+    if page is not None:
+        comparison_page.write_comparison(found, page)
+        typer.echo(f"written to {page}", err=True)
+    if as_json:
+        _print_json(comparison.comparison_record(found))
+    else:
+        comparison_page.print_comparison(found, Console())
+
+
 def _stop_unless_proved(record: dict[str, Any]) -> None:
     """Say each check of the audit that failed, a line each, and end with its exit code."""
     failed = [check for check in record["audit"]["checks"] if not check["passed"]]

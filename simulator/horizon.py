@@ -23,7 +23,7 @@ __all__ = ["Plan", "Run", "plan_run", "run"]
 Integers = NDArray[np.int64]
 Progress = Callable[[int, int], None]
 
-MODES = ("given", "relaxed")
+MODES = ("given", "relaxed", "optimal")
 LIMITS = ("none", "lines")
 _ROUNDING = 1e-9
 WEEK = 168.0

@@ -22,8 +22,9 @@ SECONDS = {"read": 0.1, "results": 0.2, "total": 0.5}
 
 @pytest.fixture(scope="module")
 def finished_run(tmp_path_factory):
-    """A case with something of every kind, two windows of a day."""
-    case = small_case(tmp_path_factory.mktemp("small") / "case")
+    """A case with something of every kind and more wind than it can take, two windows of a day."""
+    cells = {("fleet/renewables.csv", 2, "capacity_mw"): "400"}
+    case = small_case(tmp_path_factory.mktemp("small") / "case", cells=cells)
     return finished(case, "relaxed", window=36, keep=24)
 
 
@@ -109,7 +110,8 @@ def test_numbers_of_one_element_agree_with_each_other(dataset):
     assert by_component["unit_running"] == pytest.approx(float(dataset["unit_cost"].sum()))
     assert by_component["unit_start"] == pytest.approx(float(dataset["unit_start_cost"].sum()))
     assert (dataset["line_shadow_price"] >= 0).all()
-    assert float(dataset["congestion_hours"].sum()) > 0
+    for name in ("congestion_hours", "curtailment", "storage_charge", "unit_start_cost"):
+        assert float(dataset[name].sum()) > 0, name
 
 
 def test_times_are_utc_and_windows_are_numbered(dataset, finished_run):

@@ -1,6 +1,6 @@
 """The one border to HiGHS: options checked, every status mapped, failures raised.
 
-Public names: `BASIC`, `LinearSolver`, `SolverError`, `STATUS`.
+Public names: `BASIC`, `Decision`, `LinearSolver`, `SolverError`, `STATUS`.
 
 HiGHS reports a wrong option only by a return code, and `run()` may return "ok" on an infeasible model,
 so every call's code is checked and only the model status is believed.
@@ -17,7 +17,7 @@ from scipy import sparse
 
 from simulator.dispatch.compiled import Vectors
 
-__all__ = ["BASIC", "STATUS", "LinearSolver", "SolverError"]
+__all__ = ["BASIC", "STATUS", "Decision", "LinearSolver", "SolverError"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -70,10 +70,10 @@ class SolverError(Exception):
 
 @dataclass(frozen=True, eq=False)
 class Decision:
-    """The best plan found: values of all columns, and the relative gap it is proved to."""
+    """The best plan found: values of all columns, and the bound no plan's objective is below."""
 
     values: Floats
-    gap: float
+    bound: float
 
 
 class _Quiet(highspy.Highs):
@@ -123,11 +123,11 @@ class LinearSolver:
         self._check(self._highs.changeColsCost(size, columns, vectors.cost), "costs")
         self.set_row_bounds(np.arange(len(vectors.row_lower)), vectors.row_lower, vectors.row_upper)
 
-    def fix_columns(self, columns: Integers, values: Floats) -> None:
-        """Fix some columns at values."""
+    def set_column_bounds(self, columns: Integers, lower: Floats, upper: Floats) -> None:
+        """Replace the bounds of some columns."""
         places = columns.astype(np.int32)
-        code = self._highs.changeColsBounds(len(places), places, values, values)
-        self._check(code, "fixed columns")
+        code = self._highs.changeColsBounds(len(places), places, lower, upper)
+        self._check(code, "column bounds")
 
     def set_row_bounds(self, rows: Integers, lower: Floats, upper: Floats) -> None:
         """Replace the bounds of some rows."""
@@ -210,7 +210,7 @@ class LinearSolver:
             raise SolverError(STATUS[status.name])
         if status not in {highspy.HighsModelStatus.kOptimal, highspy.HighsModelStatus.kTimeLimit}:
             raise SolverError(STATUS[status.name])
-        return Decision(np.asarray(self._highs.getSolution().col_value), float(info.mip_gap))
+        return Decision(np.asarray(self._highs.getSolution().col_value), float(info.mip_dual_bound))
 
     @property
     def iterations(self) -> int:

@@ -15,13 +15,16 @@ from simulator.dispatch.compiled import CompiledFleet, compile_fleet
 from simulator.dispatch.fleet import FleetData, fleet_data, given_commitment
 from simulator.dispatch.inputs import WindowInputs
 from simulator.dispatch.limits import FLOW_TOLERANCE, LineRows
-from simulator.dispatch.solver import BASIC, LinearSolver, SolverError
+from simulator.dispatch.solver import BASIC, Decision, LinearSolver, SolverError
 from simulator.dispatch.state import State
 
 __all__ = ["Counts", "WindowError", "WindowModel", "WindowSolution"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
+
+SURE = 0.01
+"""The relaxation is sure of a decision this close to 0 or 1; only where the search starts hangs on it."""
 
 
 @dataclass
@@ -138,7 +141,6 @@ class WindowModel:
             self._first, self._shift = inputs.first, 0
             self._plan: Floats | None = None
             self._relaxed_basis: tuple[Integers, Integers] | None = None
-            self._gap, self._seconds = inputs.gap, inputs.seconds
 
     def __repr__(self) -> str:
         rows, columns = self.fleet.matrix.shape
@@ -156,7 +158,7 @@ class WindowModel:
             network = self._begin(inputs)
             self._solve_with_lines(inputs, network)
             if inputs.mode == "optimal":
-                self._decide(inputs, state, network)
+                self._decide(inputs, state, data, network)
         except SolverError as failure:
             raise WindowError(failure.status, self._contradictions(failure)) from failure
         return self._solution(inputs, state, network)
@@ -217,7 +219,8 @@ class WindowModel:
         if not both.any():
             return False
         lesser = np.where(sent < returned, forward, reverse)[both]
-        self._solver.fix_columns(lesser, np.zeros(len(lesser)))
+        closed = np.zeros(len(lesser))
+        self._solver.set_column_bounds(lesser, closed, closed)
         return True
 
     def _lines_added(self, inputs: WindowInputs, network: "_Network") -> bool:
@@ -236,30 +239,57 @@ class WindowModel:
             self.lines.add(self._solver, inputs, network.fixed, missing)
             self.counts.line_rows += int(missing.sum())
 
-    def _decide(self, inputs: WindowInputs, state: State, network: "_Network") -> None:
+    def _decide(
+        self, inputs: WindowInputs, state: State, data: FleetData, network: "_Network"
+    ) -> None:
         """Decide on and off, then solve again with the decisions fixed, for prices (2.3, 5.5).
 
-        Line rows found on the relaxation stand already; if the plan breaks others, they are added and
-        the search goes on from that plan. The basis of the relaxation is kept for the next window.
+        Line rows found on the relaxation stand already. Where the fixed solve needs more, the bound
+        of the search still holds, so its plan is good if it is within the gap even so; if not, the
+        search goes on from that plan. The relaxation's basis is kept for the next window.
         """
-        basis = self._solver.basis()
-        plan = self._last_plan()
+        basis, deadline = self._solver.basis(), time.perf_counter() + inputs.seconds
+        plan, bound = self._first_plan(inputs, data, network.solution), -np.inf
         while True:
-            with self.counts.timed("solve"):
-                decision = self._solver.run_integer(
-                    self.fleet.columns["on"].ravel(), self._gap, self._seconds, plan
-                )
-            self.counts.mip_solves += 1
-            network.solution = decision.values
-            plan = self._decisions_of(decision.values, 0)
-            if not self._lines_added(inputs, network):
+            decision = self._search(inputs, plan, deadline - time.perf_counter())
+            bound, standing = max(bound, decision.bound), len(self.lines)
+            self._solver.set_basis(*self._extended(basis))
+            self._fix(state, decision.values)
+            self._solve_with_lines(inputs, network)
+            gap = _gap(self._solver.objective, bound)
+            if gap <= inputs.gap or len(self.lines) == standing or time.perf_counter() > deadline:
                 break
-        self.counts.gaps.append(decision.gap)
+            plan = self._decisions_of(decision.values, 0)
+            self._solver.set_vectors(self.fleet.vectors(data))
+        self.counts.gaps.append(gap)
         self._plan = decision.values
-        self._solver.set_basis(*self._extended(basis))
-        self._fix(state, decision.values)
-        self._solve_with_lines(inputs, network)
         self._relaxed_basis = self._extended(basis)
+
+    def _search(self, inputs: WindowInputs, start: Floats | None, seconds: float) -> Decision:
+        on = self.fleet.columns["on"].ravel()
+        with self.counts.timed("solve"):
+            decision = self._solver.run_integer(on, inputs.gap, max(seconds, 0.1), start)
+        self.counts.mip_solves += 1
+        return decision
+
+    def _first_plan(self, inputs: WindowInputs, data: FleetData, relaxed: Floats) -> Floats | None:
+        """Return a plan to start the search from: the best with what the relaxation is sure of fixed.
+
+        Few decisions are left open then, so it is found at once; it starts from the last window's plan
+        for the hours seen before, and if it has none that plan is the start itself.
+        """
+        on, last = self.fleet.columns["on"].ravel(), self._last_plan()
+        lower, upper = (bound.ravel() for bound in data.columns["on"])
+        sure_on, sure_off = relaxed[on] >= 1 - SURE, relaxed[on] <= SURE
+        self._solver.set_column_bounds(
+            on, np.where(sure_on, upper, lower), np.where(sure_off, lower, upper)
+        )
+        try:
+            return self._decisions_of(self._search(inputs, last, inputs.seconds).values, 0)
+        except SolverError:
+            return last
+        finally:
+            self._solver.set_column_bounds(on, lower, upper)
 
     def _extended(self, basis: tuple[Integers, Integers]) -> tuple[Integers, Integers]:
         columns, rows = basis
@@ -273,7 +303,8 @@ class WindowModel:
         change = np.diff(on, axis=0, prepend=before[None])
         decided = {"on": on, "start": np.maximum(change, 0.0), "stop": np.maximum(-change, 0.0)}
         for family, values in decided.items():
-            self._solver.fix_columns(self.fleet.columns[family].ravel(), values.ravel())
+            places, fixed = self.fleet.columns[family].ravel(), values.ravel()
+            self._solver.set_column_bounds(places, fixed, fixed)
 
     def _last_plan(self) -> Floats | None:
         """Return the last window's decisions for the hours seen before; NaN for all else."""
@@ -331,6 +362,11 @@ class WindowModel:
         """Return price_n = (dual of n's balance row)/Δ + Σ_l PTDF_ln·μ_l, array (period, bus) (5.1)."""
         energy = network.row_dual[self.fleet.rows["balance"]][:, inputs.cells.cell]
         return energy / inputs.period_hours + inputs.topology.collected(line_dual)
+
+
+def _gap(cost: float, bound: float) -> float:
+    """Return the relative gap between a plan's cost and a bound that no plan is below."""
+    return max(cost - bound, 0.0) / max(abs(cost), 1e-9)
 
 
 def _shifted(status: Integers, families: Mapping[str, Integers], shift: int) -> Integers:

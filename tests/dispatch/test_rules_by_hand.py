@@ -197,19 +197,21 @@ def test_a_store_moves_energy_less_its_losses(tmp_path):
 
 
 def test_final_energy_is_there_at_the_end_of_the_run_though_windows_look_past_it(tmp_path):
-    """A look past the end, where power is dear, must not sell what has to be left at the end."""
-    price = [10.0, 10, 10, 10, 500, 500]
+    """A full store must not sell in the dear last hours what it could buy back cheaply after the end."""
+    price = [10.0, 11, 500, 600, 10, 12]
     case = case_of(
         tmp_path / "case", buses=[{"bus": "b"}], periods=6,
         units=[{"unit": "u", "bus": "b", "max_output_mw": 100, "fuel": "oil"}],
         heat_rates=[{"unit": "u", "up_to_mw": 100, "heat_rate_gj_per_mwh": 1}],
         fuels=[{"fuel": "oil", "price_per_gj": 1, "price_profile": "oil"}],
-        storage=[{"store": "s", "bus": "b", "charge_mw": 10, "energy_mwh": 40, "initial_mwh": 20}],
+        storage=[{"store": "s", "bus": "b", "charge_mw": 10, "energy_mwh": 20, "initial_mwh": 20}],
         loads=[{"load": "l", "bus": "b", "mw": 50}], profiles={"oil": price},
     )  # fmt: skip
     run = finished(case, "given", periods=4, window=3, keep=1)
-    assert run.kept.stored[-1, 0] >= 20 - 1e-6
+    assert run.kept.stored[:, 0] == pytest.approx([20, 20, 20, 20])
     assert run.inputs.whole.periods == 6
+    longer = finished(case, "given", periods=6)
+    assert longer.kept.stored[:, 0] == pytest.approx([20, 20, 10, 0, 10, 20])
 
 
 def test_end_value_is_what_energy_is_worth_to_a_window_that_sees_no_further(tmp_path):
