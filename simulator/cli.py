@@ -98,13 +98,16 @@ def week(
         Path | None, typer.Option(help="Folder of results; by default outputs/<case>-<first day>.")
     ] = None,
     force: Annotated[bool, typer.Option(help="Replace an earlier run's folder.")] = False,
+    congestion_cost: Annotated[
+        bool, typer.Option(help="Run again without line limits and say what the limits cost.")
+    ] = False,
     as_json: Json = False,
 ) -> None:
     """Run a case over a week, or any number of hours, and keep results, record and page."""
     from simulator import results
     from simulator.audit import audit, audit_record
     from simulator.case import read_case
-    from simulator.horizon import plan_run, run
+    from simulator.horizon import plan_run, run, without_limits
     from simulator.report.page import write_page
 
     clock = Clock()
@@ -121,12 +124,14 @@ def week(
     clock.lap("read")
     with _progress() as show:
         finished = run(found, plan, show)
+        twin = without_limits(finished, show) if congestion_cost else None
     clock.skip()
     dataset = results.to_dataset(finished)
     clock.lap("results")
     checks = audit(found, dataset)
     clock.lap("audit")
-    record = results.run_record(finished, dataset, clock.seconds) | {"audit": audit_record(checks)}
+    record = results.run_record(finished, dataset, clock.seconds, twin)
+    record["audit"] = audit_record(checks)
     results.save(
         dataset, record, folder, force=force, page=lambda path: write_page(dataset, record, path)
     )

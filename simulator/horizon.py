@@ -1,10 +1,10 @@
 """Windows rolled over a run, and the state handed from one to the next (formulation.md 4).
 
-Public names: `Plan`, `Run`, `plan_run`, `run`.
+Public names: `Plan`, `Run`, `plan_run`, `run`, `without_limits`.
 """
 
 from collections.abc import Callable
-from dataclasses import dataclass, field, fields
+from dataclasses import dataclass, field, fields, replace
 from datetime import date, datetime
 
 import numpy as np
@@ -18,7 +18,7 @@ from simulator.dispatch.state import initial_state
 from simulator.dispatch.window import Counts, WindowError
 from simulator.errors import OptionError, SolveError
 
-__all__ = ["Plan", "Run", "plan_run", "run"]
+__all__ = ["Plan", "Run", "plan_run", "run", "without_limits"]
 
 Integers = NDArray[np.int64]
 Progress = Callable[[int, int], None]
@@ -68,6 +68,7 @@ class Run:
     kept : the kept periods of all windows, end to end
     window : array (period,), the window a period was kept from
     counts : solves, rows, builds and seconds
+    model : the model of the last window, from which a like run may start
     """
 
     case: Case
@@ -76,6 +77,7 @@ class Run:
     kept: WindowSolution
     window: Integers
     counts: Counts = field(repr=False)
+    model: WindowModel | None = field(default=None, repr=False)
 
     @property
     def times(self) -> pd.DatetimeIndex:
@@ -188,9 +190,26 @@ def run(case: Case, plan: Plan, progress: Progress | None = None) -> Run:
     Raises `SolveError` with the window, the solver's status and the elements that contradict.
     """
     inputs = run_inputs(case, plan.span, plan.periods, plan.mode, limited=plan.limits != "none")
-    state = initial_state(case, inputs.whole.unit)
+    return _rolled(case, plan, inputs, None, progress)
+
+
+def without_limits(limited: Run, progress: Progress | None = None) -> Run:
+    """Run the same hours again with no line limits, on the model the first run left (5.4)."""
+    plan = replace(limited.plan, limits="none")
+    whole = replace(limited.inputs.whole, limited=False)
+    inputs = replace(limited.inputs, whole=whole)
+    return _rolled(limited.case, plan, inputs, limited.model, progress)
+
+
+def _rolled(
+    case: Case,
+    plan: Plan,
+    inputs: RunInputs,
+    model: WindowModel | None,
+    progress: Progress | None,
+) -> Run:
+    state, counts = initial_state(case, inputs.whole.unit), Counts()
     solved: list[tuple[int, WindowSolution]] = []
-    model, counts = None, Counts()
     spans = plan.windows
     for number, (start, length) in enumerate(spans):
         if progress:
@@ -203,7 +222,7 @@ def run(case: Case, plan: Plan, progress: Progress | None = None) -> Run:
         state = solution.state_after(state, kept, inputs.whole.unit.hot_periods)
     if progress:
         progress(len(spans), len(spans))
-    return Run(case, plan, inputs, _joined(solved), _window_numbers(solved), counts)
+    return Run(case, plan, inputs, _joined(solved), _window_numbers(solved), counts, model)
 
 
 def _model_for(
@@ -211,6 +230,7 @@ def _model_for(
 ) -> WindowModel:
     """Return a model that fits: the last one, or a new one where the window's shape is another."""
     if model is not None and model.fits(window):
+        model.counts = counts
         return model
     return WindowModel(window, state, counts)
 

@@ -1,14 +1,20 @@
-"""Prices taken apart and congestion accounted for (formulation.md 5): pure functions of arrays.
+"""Prices taken apart and congestion accounted for (formulation.md 5): pure functions.
 
-Public names: `congestion_rent`, `energy_and_congestion`, `reference_weights`.
+Public names: `congestion_rent`, `energy_and_congestion`, `price_cause`, `reference_weights`.
 
 Arrays have periods first; prices are currency/MWh, powers MW, Δ is the length of a period in h.
 """
 
 import numpy as np
+import pandas as pd
+import xarray as xr
 from numpy.typing import NDArray
 
-__all__ = ["congestion_rent", "energy_and_congestion", "reference_weights"]
+from simulator.case import Case, series
+from simulator.errors import OptionError
+from simulator.grid import Network, Topology
+
+__all__ = ["congestion_rent", "energy_and_congestion", "price_cause", "reference_weights"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -55,3 +61,60 @@ def energy_and_congestion(
 def congestion_rent(line_dual: Floats, flow: Floats, period_hours: float) -> Floats:
     """Return the rent of each line, array (period, line), currency: shadow price × |flow| × Δ (5.2)."""
     return np.abs(line_dual) * np.abs(flow) * period_hours
+
+
+PRICED = 1e-6
+
+
+def price_cause(
+    case: Case, dataset: xr.Dataset, bus: str, hours: slice | str | None = None
+) -> pd.DataFrame:
+    """Say which line causes how much of a bus's congestion part, hour by hour (5.1).
+
+    hours : what `dataset.sel(time=…)` takes, UTC; by default the whole run
+    Frame indexed by (time, line), one row a priced line and hour: `ptdf` (of the load-weighted
+    reference, dimensionless), `shadow_price` and `contribution` (currency/MWh). The contributions of
+    an hour sum to `price_congestion` at the bus. Raises `OptionError` for an unknown bus.
+    """
+    if bus not in dataset.indexes["bus"]:
+        raise OptionError(
+            f'the bus, must be one of the run, found "{bus}", choose one of its {dataset.sizes["bus"]} buses'
+        )
+    chosen = dataset if hours is None else dataset.sel(time=hours)
+    chosen = chosen.expand_dims("time") if "time" not in chosen.dims else chosen
+    times = chosen.indexes["time"]
+    places = case.time.periods.get_indexer(times.tz_localize("UTC"))
+    factors = _bus_factors(case, chosen, bus, slice(int(places[0]), int(places[-1]) + 1))
+    shadow = chosen["line_shadow_price"].to_numpy()
+    period, line = np.nonzero(shadow > PRICED)
+    priced, ptdf = shadow[period, line], factors[period, line]
+    flow = chosen["line_flow"].to_numpy()[period, line]
+    index = pd.MultiIndex.from_arrays(
+        [times[period], chosen.indexes["line"][line]], names=["time", "line"]
+    )
+    return pd.DataFrame(
+        {"ptdf": ptdf, "shadow_price": priced, "contribution": -np.sign(flow) * priced * ptdf},
+        index,
+    )
+
+
+def _bus_factors(case: Case, dataset: xr.Dataset, bus: str, span: slice) -> Floats:
+    """Return the PTDF of one bus less that of its island's reference, array (period, line)."""
+    schedule = Network.of(case).schedule(series.in_service(case, span))
+    place = dataset.indexes["bus"].get_loc(bus)
+    owner = dataset.indexes["bus"].get_indexer(pd.Index(dataset["load_bus"].to_numpy()))
+    demand = series.sum_by(dataset["load_demand"].to_numpy(), owner, dataset.sizes["bus"])
+    factors = np.zeros((len(demand), dataset.sizes["line"]))
+    for number in np.unique(schedule.index):
+        here = schedule.index == number
+        factors[here] = _against_reference(schedule.topologies[number], place, demand[here])
+    return factors
+
+
+def _against_reference(topology: Topology, place: int, demand: Floats) -> Floats:
+    """Return PTDF_ln − Σ_m weight_m·PTDF_lm, array (period, line), of bus n at `place`."""
+    island = np.broadcast_to(topology.island, demand.shape)
+    weights = reference_weights(demand, island) * (topology.island == topology.island[place])
+    injected = -weights
+    injected[:, place] += 1.0
+    return topology.flows(injected) - topology.shift_flow

@@ -247,8 +247,13 @@ def _ramp_limited(run: Run) -> NDArray[np.bool_]:
     return found
 
 
-def run_record(run: Run, dataset: xr.Dataset, seconds: Mapping[str, float]) -> dict[str, Any]:
-    """Return run.json as a plain dictionary, audit not included."""
+def run_record(
+    run: Run, dataset: xr.Dataset, seconds: Mapping[str, float], unlimited: Run | None = None
+) -> dict[str, Any]:
+    """Return run.json as a plain dictionary, audit not included.
+
+    unlimited : the same run without line limits, if what they cost is wanted (formulation.md 5.4)
+    """
     counts, axis = run.counts, run.case.time
     end = run.times[-1] + pd.Timedelta(hours=axis.period_hours)
     spent = {**counts.seconds, **seconds}
@@ -258,7 +263,7 @@ def run_record(run: Run, dataset: xr.Dataset, seconds: Mapping[str, float]) -> d
         "from": run.times[0].tz_convert(axis.time_zone).isoformat(),
         "until": end.tz_convert(axis.time_zone).isoformat(),
         "settings": _settings(run),
-        "totals": _totals(dataset),
+        "totals": _totals(dataset) | _congestion_cost(dataset, unlimited),
         "counts": {
             "windows": int(run.window[-1]) + 1, "lp_solves": counts.lp_solves,
             "mip_solves": counts.mip_solves, "line_rows": counts.line_rows,
@@ -267,6 +272,13 @@ def run_record(run: Run, dataset: xr.Dataset, seconds: Mapping[str, float]) -> d
         "seconds": {name: round(value, 4) for name, value in spent.items()},
         "versions": {name: version(name) for name in PACKAGES},
     }  # fmt: skip
+
+
+def _congestion_cost(dataset: xr.Dataset, unlimited: Run | None) -> dict[str, float]:
+    if unlimited is None:
+        return {}
+    free = float(_costs(unlimited)["cost"].sum())
+    return {"congestion_cost": float(dataset["cost"].sum()) - free}
 
 
 def _settings(run: Run) -> dict[str, Any]:

@@ -112,6 +112,11 @@ class LineRows:
         lower[strange], upper[strange] = -np.inf, np.inf
         solver.set_row_bounds(self.rows, lower, upper)
 
+    def open(self, solver: LinearSolver) -> None:
+        """Let every row hold nothing: for a run without line limits on a model that has some."""
+        free = np.full(len(self), np.inf)
+        solver.set_row_bounds(self.rows, -free, free)
+
     def _strange(self, inputs: WindowInputs) -> Booleans:
         strange: Booleans = self.topology != inputs.topology.index[self.period]
         return strange

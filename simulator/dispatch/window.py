@@ -197,6 +197,8 @@ class WindowModel:
             if inputs.limited:
                 self.lines.begin_window(self._solver, inputs, network.fixed)
                 self._add(inputs, network, self.lines.carried(self._shift, inputs))
+            else:
+                self.lines.open(self._solver)
         return network
 
     def _solve_with_lines(self, inputs: WindowInputs, network: "_Network") -> None:

@@ -202,6 +202,9 @@ def _totals(view: View) -> Section:
         ("Emissions", amount(emitted), "t CO\N{SUBSCRIPT TWO}"),
         ("Congestion rent", money(rent), view.currency),
     ]
+    avoidable = view.run.get("totals", {}).get("congestion_cost")
+    if avoidable is not None:
+        shown.append(("Congestion cost", money(avoidable), f"{view.currency} against no limits"))
     if spilled > NEGLIGIBLE:
         shown.append(("Spilled at buses", amount(spilled), "MWh"))
     return Section("totals", "Totals", figures=shown)

@@ -52,6 +52,11 @@ def _heading(dataset: xr.Dataset, record: Mapping[str, Any], console: Console) -
         f"{totals['served_mwh']:,.0f} MWh, curtailed {totals['curtailed_mwh']:,.0f} MWh, spilled "
         f"{totals['surplus_mwh']:,.1f} MWh, emitted {totals['emissions_t']:,.0f} t"
     )
+    if "congestion_cost" in totals:
+        console.print(
+            f"congestion cost {totals['congestion_cost']:,.0f} {escape(dataset.attrs['currency'])}: "
+            "total cost less that of the same run without line limits"
+        )
     console.print(
         f"{counts['windows']} windows, {counts['lp_solves']} solves, {counts['line_rows']} line rows, "
         f"{counts['rebuilds']} rebuilds, {_audited(record)}"
