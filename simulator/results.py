@@ -1,7 +1,7 @@
 """What a run leaves: the dataset of results-format.md, run.json, and the folder they live in.
 
-Public names: `FORMAT`, `open_record`, `open_run`, `refuse_existing`, `replace_file`, `run_record`,
-`save`, `to_dataset`.
+Public names: `FORMAT`, `made_whole`, `open_record`, `open_run`, `refuse_existing`, `replace_file`,
+`run_record`, `save`, `to_dataset`.
 
 The only writer of that contract: each variable is declared once, with its dimensions, unit
 and name.
@@ -9,11 +9,11 @@ and name.
 
 import json
 import os
-import shutil
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
+from contextlib import contextmanager
 from importlib.metadata import version
 from pathlib import Path
-from tempfile import mkdtemp
+from tempfile import TemporaryDirectory
 from typing import Any
 
 import numpy as np
@@ -28,6 +28,7 @@ from simulator.horizon import Run
 
 __all__ = [
     "FORMAT",
+    "made_whole",
     "open_record",
     "open_run",
     "refuse_existing",
@@ -326,17 +327,43 @@ def save(
     An existing folder is refused unless `force`; whatever cuts this off leaves it as it was.
     """
     refuse_existing(folder, force=force)
-    folder.parent.mkdir(parents=True, exist_ok=True)
-    made = Path(mkdtemp(prefix=f".{folder.name}-", dir=folder.parent))
-    try:
-        made.chmod(0o755)
+    with made_whole(folder, "--out") as made:
         write_dataset(dataset, made / "results.nc")
         (made / "run.json").write_text(json.dumps(record, indent=2) + "\n", encoding="utf-8")
         if page is not None:
             page(made / "page.html")
-        _move(made, folder)
-    finally:
-        shutil.rmtree(made, ignore_errors=True)
+
+
+@contextmanager
+def made_whole(folder: Path, option: str) -> Iterator[Path]:
+    """Yield an empty folder that takes the place of `folder` once all went well.
+
+    option : what the caller named the folder by, for the message if it cannot be written
+    """
+    try:
+        folder.parent.mkdir(parents=True, exist_ok=True)
+        with TemporaryDirectory(prefix=f".{folder.name}-", dir=folder.parent) as scratch:
+            made = Path(scratch) / "new"
+            made.mkdir()
+            yield made
+            _swap(made, folder, Path(scratch) / "old")
+    except OSError as error:
+        raise OptionError(
+            f"{option}, must be a folder that can be written, found {folder} ({error.strerror}), "
+            "choose another folder"
+        ) from error
+
+
+def _swap(made: Path, folder: Path, aside: Path) -> None:
+    """Put the new folder in place of an old one; the old one is back if that is cut off."""
+    if folder.exists():
+        folder.rename(aside)
+    try:
+        made.rename(folder)
+    except BaseException:
+        if aside.exists():
+            aside.rename(folder)
+        raise
 
 
 def refuse_existing(folder: Path, *, force: bool) -> None:
@@ -363,23 +390,6 @@ def write_dataset(dataset: xr.Dataset, path: Path) -> None:
     }
     encoding["time"] = {"units": "minutes since 1970-01-01 00:00:00", "dtype": "int64"}
     dataset.to_netcdf(path, engine="netcdf4", encoding=encoding)
-
-
-def _move(made: Path, folder: Path) -> None:
-    """Put the new folder in place of an old one; the old one is back if that fails."""
-    if not folder.exists():
-        made.rename(folder)
-        return
-    aside = Path(mkdtemp(prefix=f".{folder.name}-old-", dir=folder.parent))
-    old = aside / "run"
-    folder.rename(old)
-    try:
-        made.rename(folder)
-    except OSError:
-        old.rename(folder)
-        raise
-    finally:
-        shutil.rmtree(aside, ignore_errors=True)
 
 
 def open_record(folder: str | os.PathLike[str]) -> dict[str, Any]:
@@ -412,7 +422,12 @@ def open_run(folder: str | os.PathLike[str]) -> xr.Dataset:
             f"the run folder, must hold results.nc, found none in {folder}, give the folder that "
             "`rampline week` wrote"
         )
-    dataset = xr.load_dataset(path, engine="netcdf4")
+    try:
+        dataset = xr.load_dataset(path, engine="netcdf4")
+    except OSError as error:
+        raise OptionError(
+            f"{path}, must be a netCDF file, found one that cannot be read, run the case again"
+        ) from error
     if dataset.attrs.get("format") != FORMAT:
         raise OptionError(
             f"{path}, must be results format {FORMAT}, found {dataset.attrs.get('format')}, "

@@ -8,11 +8,9 @@ A folder is made whole: under another name first, then moved into place.
 import json
 import math
 import re
-from collections.abc import Callable, Iterator, Mapping, Sequence
-from contextlib import contextmanager
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from tempfile import TemporaryDirectory
 from typing import Any
 
 import pandas as pd
@@ -22,6 +20,7 @@ from openpyxl.cell import WriteOnlyCell
 from openpyxl.cell.cell import ILLEGAL_CHARACTERS_RE
 from openpyxl.styles import Alignment, Font
 from openpyxl.utils import get_column_letter
+from pandas.api.types import is_object_dtype
 
 from simulator.case.wording import listed, quoted
 from simulator.errors import OptionError
@@ -29,7 +28,7 @@ from simulator.report.geojson import LAYERS, feature_collections
 from simulator.report.moments import read_clock
 from simulator.report.page import CAUTION
 from simulator.report.view import View
-from simulator.results import VARIABLES
+from simulator.results import VARIABLES, made_whole
 
 __all__ = ["FORMATS", "Export", "Sheet", "export_run", "refuse_folder", "sheets"]
 
@@ -38,11 +37,11 @@ DIMENSIONS = ("bus", "line", "unit", "plant", "store", "tie", "load")
 """The dimensions whose elements have a table of their own, with what the dataset says of them."""
 
 RISKY = ("=", "+", "-", "@", "\t", "\r", "\n", "\uff1d", "\uff0b", "\uff0d", "\uff20")
-"""Beginnings that make a spreadsheet read a text as a formula (OWASP, "CSV Injection"); the last four
-are the full-width forms of the first four."""
+"""Beginnings that make a spreadsheet read a text as a formula (OWASP, "CSV Injection", typed from
+memory); the last four are the full-width forms of the first four."""
 
 MOST_ROWS, MOST_COLUMNS, LONGEST_NAME = 1_048_576, 16_384, 31
-"""What a sheet of a workbook holds at most, and the length of its name (ECMA-376 and its readers)."""
+"""What spreadsheets hold in a sheet, and the longest name of one; typed from memory."""
 NOT_IN_A_NAME = re.compile(r"[\[\]:*?/\\]")
 NARROWEST, WIDEST = 13, 60
 
@@ -79,7 +78,7 @@ def export_run(
         )
     folder = folder.resolve()
     refuse_folder(folder, force=force)
-    with _made_whole(folder) as made:
+    with made_whole(folder, "DIR") as made:
         return FORMATS[kind](View(dataset, record), made)
 
 
@@ -108,35 +107,6 @@ def _is_ours(path: Path) -> bool:
     return path.is_file() and path.name in ours
 
 
-@contextmanager
-def _made_whole(folder: Path) -> Iterator[Path]:
-    """Yield an empty folder that takes the place of `folder` once all went well."""
-    try:
-        folder.parent.mkdir(parents=True, exist_ok=True)
-        with TemporaryDirectory(prefix=f".{folder.name}-", dir=folder.parent) as scratch:
-            made = Path(scratch) / "new"
-            made.mkdir()
-            yield made
-            _swap(made, folder, Path(scratch) / "old")
-    except OSError as error:
-        raise OptionError(
-            f"DIR, must be a folder that can be written, found {folder} ({error.strerror}), "
-            "choose another folder"
-        ) from error
-
-
-def _swap(made: Path, folder: Path, aside: Path) -> None:
-    """Put the new folder in place of an old one; the old one is back if that is cut off."""
-    if folder.exists():
-        folder.rename(aside)
-    try:
-        made.rename(folder)
-    except BaseException:
-        if aside.exists():
-            aside.rename(folder)
-        raise
-
-
 def sheets(view: View) -> list[Sheet]:
     """Return a run's tables: what it is about, its elements, then a table a variable."""
     elements = [_elements(view.dataset, name) for name in DIMENSIONS if view.size(name)]
@@ -153,6 +123,7 @@ def _about(view: View) -> Sheet:
     dataset, run, edges = view.dataset, view.run, view.clock.edges
     rows: list[tuple[str, Any]] = [
         ("case", view.case_name),
+        ("caution", CAUTION),
         ("from", edges[0].isoformat(timespec="minutes")),
         ("until", edges[-1].isoformat(timespec="minutes")),
         ("time zone", str(dataset.attrs.get("time_zone", "UTC"))),
@@ -163,7 +134,6 @@ def _about(view: View) -> Sheet:
         *_prefixed("total", run.get("totals")),
         *((str(name), _described(view, str(name))) for name in dataset.data_vars),
         ("blank number", "unlimited, or not known"),
-        ("caution", CAUTION),
         *_prefixed("made with", run.get("versions")),
     ]
     return Sheet("about", pd.DataFrame(rows, columns=["term", "value"], dtype=object))
@@ -184,9 +154,11 @@ def _prefixed(prefix: str, values: Mapping[str, Any] | None) -> list[tuple[str, 
 
 
 def _described(view: View, name: str) -> str:
-    variable = view.dataset[name]
-    text = f"{variable.attrs.get('long_name', name)}, {_unit(view, name)}, by "
-    text += " and ".join(map(str, variable.dims))
+    variable, unit = view.dataset[name], _unit(view, name)
+    label = str(variable.attrs.get("long_name", name))
+    text = (
+        f"{label}{'' if unit == '1' else f', {unit}'}, by {' and '.join(map(str, variable.dims))}"
+    )
     return text if variable.size else f"{text}; left out, it has no element in this case"
 
 
@@ -256,7 +228,7 @@ def _write_parquet(view: View, folder: Path) -> Export:
     """Write a file a table; times keep their zone, an unlimited rating stays infinite."""
     tables = sheets(view)
     for sheet in tables:
-        mixed = [name for name, kind in sheet.frame.dtypes.items() if kind == object]
+        mixed = [name for name, kind in sheet.frame.dtypes.items() if is_object_dtype(kind)]
         frame = sheet.frame.astype(dict.fromkeys(mixed, str))
         frame.to_parquet(folder / f"{sheet.name}.parquet", index=False)
     return Export(tuple(f"{sheet.name}.parquet" for sheet in tables), _left_out(view.dataset))
@@ -353,7 +325,7 @@ def _heading(page: Any, text: str) -> Any:
 
 def _book_cell(page: Any, value: Any) -> Any:
     if isinstance(value, str):
-        return _text(page, value)
+        return _text(page, value) if value else None
     return value.to_pydatetime() if isinstance(value, pd.Timestamp) else _finite(value)
 
 

@@ -1,6 +1,6 @@
 """One self-contained HTML page from a run: no network, the same bytes for the same run.
 
-Public names: `page_html`, `write_page`.
+Public names: `CAUTION`, `asset`, `environment`, `page_html`, `policy`, `write_page`.
 """
 
 import hashlib
@@ -21,7 +21,7 @@ from simulator.report.tables import unserved_spans
 from simulator.report.view import View, script_json
 from simulator.report.wording import number
 
-__all__ = ["page_html", "write_page"]
+__all__ = ["CAUTION", "asset", "environment", "page_html", "policy", "write_page"]
 
 CAUTION = (
     "Rampline is a planning aid. It is not for real-time control or switching. Local grid codes, the "
@@ -40,12 +40,12 @@ def page_html(dataset: xr.Dataset, run: Mapping[str, Any]) -> str:
     parts = sections(view)
     notice = unserved_notice(view)
     scripts = {
-        "theme": _asset("theme.js"), "library": get_plotlyjs(), "page": _asset("page.js")
+        "theme": asset("theme.js"), "library": get_plotlyjs(), "page": asset("page.js")
     }  # fmt: skip
-    return _environment().get_template("page.html").render(
+    return environment().get_template("page.html").render(
         view=view, sections=parts, notice=notice,
         spans=unserved_spans(view) if notice else None, caution=CAUTION, title=_title(view),
-        style=Markup(_asset("page.css") + _asset("print.css")), policy=_policy(scripts.values()),
+        style=Markup(asset("page.css") + asset("print.css")), policy=policy(scripts.values()),
         scripts={name: Markup(text) for name, text in scripts.items()},
         data=Markup(script_json(_data(view, parts))), made_by=_made_by(run),
         number=number,
@@ -72,7 +72,7 @@ def _made_by(run: Mapping[str, Any]) -> str:
     return ", ".join(f"{name} {versions[name]}" for name in sorted(versions))
 
 
-def _policy(scripts: Any) -> str:
+def policy(scripts: Any) -> str:
     """Return a content security policy: these scripts alone, and nothing from anywhere else."""
     hashes = " ".join(f"'sha256-{_digest(text)}'" for text in scripts)
     return (
@@ -85,12 +85,14 @@ def _digest(text: str) -> str:
     return b64encode(hashlib.sha256(text.encode()).digest()).decode()
 
 
-def _asset(name: str) -> str:
+def asset(name: str) -> str:
+    """Return the text of a file in templates/."""
     return (resources.files("simulator.report") / "templates" / name).read_text("utf-8")
 
 
 @lru_cache(maxsize=1)
-def _environment() -> Environment:
+def environment() -> Environment:
+    """Return the template environment: everything escaped, anything missing an error."""
     return Environment(
         loader=PackageLoader("simulator.report"),
         autoescape=True,
