@@ -29,7 +29,7 @@ class UnitData:
 
     ramp_up, ramp_down : most change of output in one period, MW (ramp × Δ)
     start_ramp, stop_ramp : most output in the first and the last period of a run, MW
-    no_load : currency/h; hot_start, cold_start : currency a start
+    hot_start, cold_start : currency a start
     up_periods, down_periods : minimum up and down times in periods, at least 1
     restart_periods : soonest start after a stop: minimum down time, or one period for units that an
         outage of this run takes out, which may return at once
@@ -46,7 +46,6 @@ class UnitData:
     ramp_down: Floats
     start_ramp: Floats
     stop_ramp: Floats
-    no_load: Floats
     hot_start: Floats
     cold_start: Floats
     up_periods: Integers
@@ -221,8 +220,7 @@ def run_inputs(case: Case, span: slice, run_periods: int, mode: str, *, limited:
 
 
 _UNIT_NUMBERS = (
-    "ramp_up_mw_per_h", "ramp_down_mw_per_h", "start_ramp_mw", "stop_ramp_mw", "no_load_cost_per_h",
-    "start_cost", "cold_start_cost", "max_output_mw",
+    "ramp_up_mw_per_h", "ramp_down_mw_per_h", "start_ramp_mw", "stop_ramp_mw", "start_cost", "cold_start_cost", "max_output_mw",
 )  # fmt: skip
 
 
@@ -259,7 +257,6 @@ def _unit_data(case: Case, block_unit: Integers, least: Floats, taken_out: Boole
     return UnitData(
         bus=_bus(case, units["bus"]),
         ramp_up=ramp_up, ramp_down=ramp_down, start_ramp=start_ramp, stop_ramp=stop_ramp,
-        no_load=numbers["no_load_cost_per_h"],
         hot_start=numbers["start_cost"], cold_start=numbers["cold_start_cost"],
         up_periods=np.maximum(_periods_up(units["min_up_h"], length), 1),
         down_periods=down, restart_periods=np.where(taken_out, 1, down),

@@ -85,7 +85,6 @@ class LineRows:
         self._columns = fleet.matrix.shape[1]
         empty = np.zeros(0, dtype=int)
         self.line, self.period, self.topology, self.idle = (empty.copy() for _ in range(4))
-        self.added = 0
 
     def __len__(self) -> int:
         return len(self.line)
@@ -165,7 +164,6 @@ class LineRows:
         self.period = np.concatenate([self.period, period])
         self.topology = np.concatenate([self.topology, topology])
         self.idle = np.concatenate([self.idle, np.zeros(len(line), dtype=int)])
-        self.added += len(line)
 
     def _matrix(
         self, inputs: WindowInputs, line: Integers, period: Integers, topology: Integers

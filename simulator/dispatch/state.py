@@ -36,13 +36,6 @@ class State:
     cooling: Floats
     stored: Floats
 
-    @property
-    def periods_in_state(self) -> Floats:
-        """Periods since a unit's last full start or stop, array (unit,); inf if beyond memory."""
-        switched = (self.starts > 1 - 1e-6) | (self.stops > 1 - 1e-6)
-        first = switched.argmax(axis=0) + 1.0
-        return np.where(switched.any(axis=0), first, np.inf)
-
 
 def initial_state(case: Case, unit: UnitData) -> State:
     """Return the state before the run's first period, from the case's initial columns.
