@@ -220,7 +220,8 @@ def run_inputs(case: Case, span: slice, run_periods: int, mode: str, *, limited:
 
 
 _UNIT_NUMBERS = (
-    "ramp_up_mw_per_h", "ramp_down_mw_per_h", "start_ramp_mw", "stop_ramp_mw", "start_cost", "cold_start_cost", "max_output_mw",
+    "ramp_up_mw_per_h", "ramp_down_mw_per_h", "start_ramp_mw", "stop_ramp_mw", "start_cost",
+    "cold_start_cost", "max_output_mw",
 )  # fmt: skip
 
 

@@ -227,6 +227,10 @@ class LinearSolver:
         found = self._highs.getSolution()
         return np.asarray(found.col_value), np.asarray(found.row_dual)
 
+    def reduced_costs(self) -> Floats:
+        """Return column duals of the last run."""
+        return np.asarray(self._highs.getSolution().col_dual)
+
     def contradictions(self) -> tuple[Integers, Integers]:
         """Return rows and columns that must be broken, in a solution that breaks as little as it can."""
         self._check(self._highs.feasibilityRelaxation(1.0, 1.0, 1.0), "a search for contradictions")

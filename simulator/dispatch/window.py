@@ -17,6 +17,7 @@ from simulator.dispatch.inputs import WindowInputs
 from simulator.dispatch.limits import FLOW_TOLERANCE, LineRows
 from simulator.dispatch.solver import BASIC, Decision, LinearSolver, SolverError
 from simulator.dispatch.state import State
+from simulator.dispatch.ties import TieDirections
 
 __all__ = ["Counts", "WindowError", "WindowModel", "WindowSolution"]
 
@@ -193,7 +194,7 @@ class WindowModel:
     def _begin(self, inputs: WindowInputs) -> "_Network":
         """Put the line rows that stand, and those that hours seen before will want, in place."""
         with self.counts.timed("network"):
-            network = _Network(inputs)
+            network = _Network(inputs, self.fleet.columns)
             if inputs.limited:
                 self.lines.begin_window(self._solver, inputs, network.fixed)
                 self._add(inputs, network, self.lines.carried(self._shift, inputs))
@@ -206,24 +207,9 @@ class WindowModel:
         while True:
             self._run()
             network.solution, network.row_dual = self._solver.solution()
-            if not (self._lines_added(inputs, network) or self._ties_turned(network)):
+            added = self._lines_added(inputs, network)
+            if not (added or network.ties.close(self._solver, network.solution)):
                 return
-
-    def _ties_turned(self, network: "_Network") -> bool:
-        """Close the lesser direction of ties that run both ways at once, if any.
-
-        Where a price is negative, sending there and back would burn energy in losses that no real
-        link has; what is left is the better direction of that solution.
-        """
-        forward, reverse = (self.fleet.columns[name] for name in ("tie_forward", "tie_reverse"))
-        sent, returned = network.solution[forward], network.solution[reverse]
-        both = np.minimum(sent, returned) > FLOW_TOLERANCE
-        if not both.any():
-            return False
-        lesser = np.where(sent < returned, forward, reverse)[both]
-        closed = np.zeros(len(lesser))
-        self._solver.set_column_bounds(lesser, closed, closed)
-        return True
 
     def _lines_added(self, inputs: WindowInputs, network: "_Network") -> bool:
         """Look at the flows of a solution; add rows for lines beyond their rating, if any."""
@@ -386,7 +372,8 @@ class _Network:
     row_dual: Floats
     flow: Floats
 
-    def __init__(self, inputs: WindowInputs) -> None:
+    def __init__(self, inputs: WindowInputs, columns: Mapping[str, Integers]) -> None:
+        self.ties = TieDirections(inputs, columns)
         self.fixed = inputs.topology.flows(-inputs.demand_at_bus)
 
     def beyond(self, inputs: WindowInputs) -> NDArray[np.bool_]:

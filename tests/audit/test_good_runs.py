@@ -16,7 +16,6 @@ from tests.dispatch.drawing import drawn
 from tests.support import write_case
 
 RTS_GMLC = Path(__file__).parents[2].parent / "shared" / "data" / "rts-gmlc"
-WRONG_WAY = (210, "one window", "given")
 WINDOWS = {"one window": (99, 99), "seen ahead": (5, 2), "one by one": (1, 1)}
 
 
@@ -37,10 +36,7 @@ def solved(case, mode, window=99, keep=99, limits="lines"):
 @pytest.mark.parametrize("mode", MODES)
 @pytest.mark.parametrize("windows", WINDOWS)
 @pytest.mark.parametrize("seed", range(200, 212))
-def test_random_cases_pass(request, tmp_path, seed, windows, mode):
-    if (seed, windows, mode) == WRONG_WAY:
-        reason = "of a tie that would run both ways, the direction that pays is closed"
-        request.applymarker(pytest.mark.xfail(reason=reason, strict=True))
+def test_random_cases_pass(tmp_path, seed, windows, mode):
     try:
         case = case_of(tmp_path / "case", **drawn(seed))
         dataset = solved(case, mode, *WINDOWS[windows])
