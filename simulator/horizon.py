@@ -219,7 +219,9 @@ def _rolled(
         solution = _solve(case, plan, model, window, state, start)
         kept = min(plan.keep, plan.periods - start)
         solved.append((kept, solution))
-        state = solution.state_after(state, kept, inputs.whole.unit.hot_periods)
+        state = solution.state_after(
+            state, kept, inputs.whole.unit.hot_periods, whole=plan.mode == "optimal"
+        )
     if progress:
         progress(len(spans), len(spans))
     return Run(case, plan, inputs, _joined(solved), _window_numbers(solved), counts, model)

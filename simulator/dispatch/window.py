@@ -93,8 +93,11 @@ class WindowSolution:
     line_dual: Floats
     objective: float
 
-    def state_after(self, before: State, kept: int, hot_periods: Integers) -> State:
-        """Return the state at the end of the first `kept` periods (formulation.md 4)."""
+    def state_after(self, before: State, kept: int, hot_periods: Integers, *, whole: bool) -> State:
+        """Return the state at the end of the first `kept` periods (formulation.md 4).
+
+        whole : decisions are whole, so that stops are matched with hot starts (mode `optimal`)
+        """
         memory = len(before.starts)
 
         def recent(now: Floats, past: Floats) -> Floats:
@@ -105,7 +108,7 @@ class WindowSolution:
             on=np.clip(self.on[kept - 1], 0.0, 1.0),
             starts=recent(self.start, before.starts),
             stops=recent(self.stop, before.stops),
-            cooling=self._cooling_after(before, kept, hot_periods),
+            cooling=self._cooling_after(before, kept, hot_periods) if whole else before.cooling,
             stored=self.stored[kept - 1],
         )
 

@@ -8,8 +8,8 @@ the same ones for the same network.
 
 from collections.abc import Hashable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
+from typing import Any
 
-import networkx as nx
 import numpy as np
 from numpy.typing import NDArray
 
@@ -80,6 +80,8 @@ def _middle(longitude: Floats) -> float:
 
 
 def _drawn(buses: int, edges: Iterable[Edge]) -> Positions:
+    import networkx as nx
+
     graph = nx.Graph()
     graph.add_nodes_from(range(buses))
     graph.add_edges_from((one, other) for one, other in edges if one != other)
@@ -94,8 +96,10 @@ def _size_and_first(island: list[int]) -> tuple[int, int]:
     return -len(island), island[0]
 
 
-def _one_island(graph: nx.Graph, buses: list[int]) -> Floats:
+def _one_island(graph: Any, buses: list[int]) -> Floats:
     """Place the buses of one island within a circle that grows with their number."""
+    import networkx as nx
+
     if len(buses) == 1:
         return np.zeros((1, 2))
     ordered = nx.Graph()

@@ -112,6 +112,6 @@ def test_a_model_updated_in_place_is_the_model_built_afresh(convex_case, seed, m
         rows = model.fleet.matrix.shape[0]
         difference = matrix_of(model, rows) - matrix_of(fresh, rows)
         assert abs(difference).max() < 1e-12
-        state = updated.state_after(state, keep, window.unit.hot_periods)
+        state = updated.state_after(state, keep, window.unit.hot_periods, whole=False)
     assert model is not None
     assert model.counts.builds == 1
