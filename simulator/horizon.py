@@ -13,14 +13,17 @@ from numpy.typing import NDArray
 
 from simulator.case import Case
 from simulator.dispatch import RunInputs, State, WindowInputs, WindowModel, WindowSolution
+from simulator.dispatch.counts import Counts
 from simulator.dispatch.inputs import run_inputs
+from simulator.dispatch.start import Start
 from simulator.dispatch.state import initial_state
-from simulator.dispatch.window import Counts, WindowError
+from simulator.dispatch.window import WindowError, shape_of
 from simulator.errors import OptionError, SolveError
 
 __all__ = ["Plan", "Run", "plan_run", "run", "without_limits"]
 
 Integers = NDArray[np.int64]
+Models = dict[tuple[object, ...], WindowModel]
 Progress = Callable[[int, int], None]
 
 MODES = ("given", "relaxed", "optimal")
@@ -68,7 +71,8 @@ class Run:
     kept : the kept periods of all windows, end to end
     window : array (period,), the window a period was kept from
     counts : solves, rows, builds and seconds
-    model : the model of the last window, from which a like run may start
+    models : a model for each shape of window, which a like run may use
+    starts : what each window left, from which the same window of a like run may start
     """
 
     case: Case
@@ -77,7 +81,8 @@ class Run:
     kept: WindowSolution
     window: Integers
     counts: Counts = field(repr=False)
-    model: WindowModel | None = field(default=None, repr=False)
+    models: Models = field(default_factory=dict, repr=False)
+    starts: tuple[Start, ...] = field(default=(), repr=False)
 
     @property
     def times(self) -> pd.DatetimeIndex:
@@ -183,31 +188,40 @@ def _too_long(case: Case, first: int, periods: int) -> str:
     )
 
 
-def run(case: Case, plan: Plan, progress: Progress | None = None) -> Run:
+def run(
+    case: Case, plan: Plan, progress: Progress | None = None, *, like: Run | None = None
+) -> Run:
     """Solve the windows of a plan one after another.
 
     progress : called with (windows done, windows in all) before the first and after each window
+    like : a run of the same plan; its model is used where it fits, and each window starts from what the
+        same window left there. What comes out depends on that run, not on what its model did since.
     Raises `SolveError` with the window, the solver's status and the elements that contradict.
     """
     inputs = run_inputs(case, plan.span, plan.periods, plan.mode, limited=plan.limits != "none")
-    return _rolled(case, plan, inputs, None, progress)
+    if like is None:
+        return _rolled(case, plan, inputs, {}, (), progress)
+    return _rolled(case, plan, inputs, dict(like.models), like.starts, progress)
 
 
 def without_limits(limited: Run, progress: Progress | None = None) -> Run:
-    """Run the same hours again with no line limits, on the model the first run left (5.4)."""
+    """Run the same hours again with no line limits, from what the first run left (5.4)."""
     plan = replace(limited.plan, limits="none")
     whole = replace(limited.inputs.whole, limited=False)
     inputs = replace(limited.inputs, whole=whole)
-    return _rolled(limited.case, plan, inputs, limited.model, progress)
+    starts = tuple(start.without_lines() for start in limited.starts)
+    return _rolled(limited.case, plan, inputs, dict(limited.models), starts, progress)
 
 
 def _rolled(
     case: Case,
     plan: Plan,
     inputs: RunInputs,
-    model: WindowModel | None,
+    models: Models,
+    starts: tuple[Start, ...],
     progress: Progress | None,
 ) -> Run:
+    """Roll over the windows; each starts from its own of `starts`, or from what the last one left."""
     state, counts = initial_state(case, inputs.whole.unit), Counts()
     solved: list[tuple[int, WindowSolution]] = []
     spans = plan.windows
@@ -215,8 +229,10 @@ def _rolled(
         if progress:
             progress(number, len(spans))
         window = inputs.window(number, start, length)
-        model = _model_for(model, window, state, counts)
-        solution = _solve(case, plan, model, window, state, start)
+        model = _model_for(models, window, state, counts)
+        before = solved[-1][1].left if solved else None
+        origin = starts[number] if starts else before
+        solution = _solve(case, plan, model, window, state, origin)
         kept = min(plan.keep, plan.periods - start)
         solved.append((kept, solution))
         state = solution.state_after(
@@ -224,26 +240,31 @@ def _rolled(
         )
     if progress:
         progress(len(spans), len(spans))
-    return Run(case, plan, inputs, _joined(solved), _window_numbers(solved), counts, model)
+    left = tuple(solution.left for _, solution in solved)
+    return Run(case, plan, inputs, _joined(solved), _window_numbers(solved), counts, models, left)
 
 
-def _model_for(
-    model: WindowModel | None, window: WindowInputs, state: State, counts: Counts
-) -> WindowModel:
-    """Return a model that fits: the last one, or a new one where the window's shape is another."""
-    if model is not None and model.fits(window):
-        model.counts = counts
-        return model
-    return WindowModel(window, state, counts)
+def _model_for(models: Models, window: WindowInputs, state: State, counts: Counts) -> WindowModel:
+    """Return a model of the window's shape: one used before, or a new one."""
+    shape = shape_of(window)
+    if shape not in models:
+        models[shape] = WindowModel(window, state, counts)
+    models[shape].counts = counts
+    return models[shape]
 
 
 def _solve(
-    case: Case, plan: Plan, model: WindowModel, window: WindowInputs, state: State, start: int
+    case: Case,
+    plan: Plan,
+    model: WindowModel,
+    window: WindowInputs,
+    state: State,
+    start: Start | None,
 ) -> WindowSolution:
     try:
-        return model.solve(window, state)
+        return model.solve(window, state, start)
     except WindowError as failure:
-        first = plan.first + start
+        first = plan.first + window.first
         elements = [_described(case, first, *broken) for broken in failure.broken]
         raise SolveError(window.number, failure.status, elements) from failure
 
@@ -279,9 +300,10 @@ def _joined(solved: list[tuple[int, WindowSolution]]) -> WindowSolution:
             [getattr(solution, item.name)[:kept] for kept, solution in solved]
         )
         for item in fields(WindowSolution)
-        if item.name != "objective"
+        if item.name not in ("objective", "left")
     }
-    return WindowSolution(**values, objective=sum(solution.objective for _, solution in solved))
+    objective = sum(solution.objective for _, solution in solved)
+    return WindowSolution(**values, objective=objective, left=solved[-1][1].left)
 
 
 def _window_numbers(solved: list[tuple[int, WindowSolution]]) -> Integers:

@@ -23,6 +23,7 @@ from numpy.typing import NDArray
 
 from simulator import prices
 from simulator.case import series
+from simulator.dispatch.counts import WindowRecord
 from simulator.errors import OptionError
 from simulator.horizon import Run
 
@@ -270,9 +271,22 @@ def run_record(
             "mip_solves": counts.mip_solves, "line_rows": counts.line_rows,
             "rebuilds": max(counts.builds - 1, 0), "simplex_iterations": counts.iterations,
         },
+        "windows": [_window_record(run, record) for record in counts.windows],
         "seconds": {name: round(value, 4) for name, value in spent.items()},
         "versions": {name: version(name) for name in PACKAGES},
     }  # fmt: skip
+
+
+def _window_record(run: Run, record: WindowRecord) -> dict[str, Any]:
+    """Return how a window went; `gap` is null where nothing is decided."""
+    first = run.times[run.plan.windows[record.window][0]]
+    return {
+        "window": record.window,
+        "from": first.tz_convert(run.case.time.time_zone).isoformat(),
+        "seconds": round(record.seconds, 4),
+        "gap": record.gap,
+        "time_limit": record.time_limit,
+    }
 
 
 def _congestion_cost(dataset: xr.Dataset, unlimited: Run | None) -> dict[str, float]:

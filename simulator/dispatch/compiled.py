@@ -8,7 +8,7 @@ The same positions carry a window's numbers in and its solution and duals back o
 import gc
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 from pyomo.opt import WriterFactory
 from scipy import sparse
 
-from simulator.dispatch.fleet import FleetData
+from simulator.dispatch.fleet import FleetData, within_reach
 from simulator.dispatch.formulation import state_fleet
 from simulator.dispatch.inputs import WindowInputs
 
@@ -44,11 +44,13 @@ class CompiledFleet:
 
     matrix : sparse array (row, column)
     columns, rows : family → array (period, element), positions in the matrix
+    keys : array (entry,), column × rows + row of each entry, rising
     """
 
     matrix: sparse.csc_array
     columns: Mapping[str, Integers]
     rows: Mapping[str, Integers]
+    keys: Integers = field(repr=False)
 
     def vectors(self, data: FleetData) -> Vectors:
         """Lay a window's numbers out in the order of the matrix."""
@@ -64,30 +66,16 @@ class CompiledFleet:
             vectors.row_upper[self.rows[family]] = upper
         return vectors
 
-    def moving_entries(
-        self, inputs: WindowInputs, data: FleetData
-    ) -> tuple[Integers, Integers, Floats]:
-        """Return row, column and value of every entry that derates and outages may change."""
-        parts = [
-            self._entries(row, column, values, inputs)
-            for (row, column), values in data.coefficients.items()
-        ]
-        if not parts:
-            return np.zeros(0, int), np.zeros(0, int), np.zeros(0)
-        rows, columns, values = zip(*parts, strict=True)
-        return np.concatenate(rows), np.concatenate(columns), np.concatenate(values)
+    def filled(self, inputs: WindowInputs, data: FleetData) -> sparse.csc_array:
+        """Return the matrix with the entries that derates and outages change as they are in a window."""
+        matrix = self.matrix.copy()
+        rows, columns, values = _moving_entries(self.rows, self.columns, inputs, data)
+        matrix.data[self._places(rows, columns)] = values
+        return matrix
 
-    def _entries(
-        self, row: str, column: str, values: NDArray[Any], inputs: WindowInputs
-    ) -> tuple[Integers, Integers, Floats]:
-        rows, columns = self.rows[row], self.columns[column]
-        if values.ndim == 3:  # noqa: PLR2004  (lag, period, unit)
-            return _lagged_entries(rows, columns, values, inputs)
-        if row == "block_width":
-            columns = columns[:, inputs.unit.block_unit]
-        if len(values) < len(rows):  # a row that looks one period ahead
-            rows, columns = rows[:-1], columns[1:]
-        return rows.ravel(), columns.ravel(), values.ravel()
+    def _places(self, rows: Integers, columns: Integers) -> Integers:
+        """Positions of entries in the matrix's data."""
+        return np.searchsorted(self.keys, columns * self.matrix.shape[0] + rows)
 
     def named(self, solution: Floats) -> dict[str, Floats]:
         """Take a solution apart: family → array (period, element)."""
@@ -102,19 +90,41 @@ class CompiledFleet:
         return _name(self.columns, column)
 
 
+def _moving_entries(
+    rows: Mapping[str, Integers],
+    columns: Mapping[str, Integers],
+    inputs: WindowInputs,
+    data: FleetData,
+) -> tuple[Integers, Integers, Floats]:
+    """Return row, column and value of every entry that derates and outages may change."""
+    parts = [
+        _entries(row, rows[row], columns[column], values, inputs)
+        for (row, column), values in data.coefficients.items()
+    ]
+    if not parts:
+        return np.zeros(0, int), np.zeros(0, int), np.zeros(0)
+    row, column, value = zip(*parts, strict=True)
+    return np.concatenate(row), np.concatenate(column), np.concatenate(value)
+
+
+def _entries(
+    family: str, rows: Integers, columns: Integers, values: NDArray[Any], inputs: WindowInputs
+) -> tuple[Integers, Integers, Floats]:
+    if values.ndim == 3:  # noqa: PLR2004  (lag, period, unit)
+        return _lagged_entries(rows, columns, values, within_reach(family, inputs))
+    if family == "block_width":
+        columns = columns[:, inputs.unit.block_unit]
+    if len(values) < len(rows):  # a row that looks one period ahead
+        rows, columns = rows[:-1], columns[1:]
+    return rows.ravel(), columns.ravel(), values.ravel()
+
+
 def _lagged_entries(
-    rows: Integers, columns: Integers, values: NDArray[Any], inputs: WindowInputs
+    rows: Integers, columns: Integers, values: NDArray[Any], reach: NDArray[np.bool_]
 ) -> tuple[Integers, Integers, Floats]:
     """Entries that tie period t to the periods `lag` before it, for the lags some unit has."""
-    lag, period, unit = np.nonzero(_within_reach(values, inputs))
+    lag, period, unit = np.nonzero(reach)
     return rows[period, unit], columns[period - lag, unit], values[lag, period, unit].astype(float)
-
-
-def _within_reach(values: NDArray[Any], inputs: WindowInputs) -> NDArray[np.bool_]:
-    lag = np.arange(len(values))[:, None, None]
-    period = np.arange(inputs.periods)[None, :, None]
-    longest = np.maximum(inputs.unit.up_periods, inputs.unit.down_periods)
-    return (lag <= period) & (lag < longest)
 
 
 def _name(families: Mapping[str, Integers], position: int) -> tuple[str, int, int]:
@@ -152,10 +162,14 @@ def _compile(model: Any) -> CompiledFleet:
     for variable in model.component_data_objects(pyo.Var):
         column_at.setdefault(id(variable), len(column_at))
     absent = sparse.csc_array((len(form.rows), len(column_at) - len(form.columns)))
+    matrix = sparse.csc_array(sparse.hstack([form.A, absent]))
+    matrix.sort_indices()
+    owner = np.repeat(np.arange(matrix.shape[1]), np.diff(matrix.indptr))
     return CompiledFleet(
-        matrix=sparse.csc_array(sparse.hstack([form.A, absent])),
+        matrix=matrix,
         columns=_positions(model, pyo.Var, column_at),
         rows=_positions(model, pyo.Constraint, row_at),
+        keys=owner * matrix.shape[0] + matrix.indices,
     )
 
 

@@ -1,6 +1,6 @@
 """The numbers of one window's fleet half: bounds, costs, right-hand sides and moving coefficients.
 
-Public names: `FleetData`, `Given`, `fleet_data`, `given_commitment`.
+Public names: `FleetData`, `Given`, `fleet_data`, `given_commitment`, `within_reach`.
 
 `formulation.py` states the rows these numbers belong to. A new window changes only what is here, as
 whole arrays; a family's array is (period, element) in the order of its elements.
@@ -16,7 +16,7 @@ from simulator.case import series
 from simulator.dispatch.inputs import WindowInputs
 from simulator.dispatch.state import State
 
-__all__ = ["FleetData", "Given", "fleet_data", "given_commitment"]
+__all__ = ["FleetData", "Given", "fleet_data", "given_commitment", "within_reach"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -73,8 +73,8 @@ def fleet_data(inputs: WindowInputs, state: State) -> FleetData:
     costs |= _commitment_costs(inputs)
     rows |= _commitment_rows(inputs, state)
     if inputs.mode == "optimal":
-        columns |= _matching_columns(inputs)
-        rows |= _matching_rows(inputs, state)
+        columns |= _matching_columns(inputs) | _tie_way_columns(inputs)
+        rows |= _matching_rows(inputs, state) | _tie_way_rows(inputs)
     else:
         rows |= _cold_start_rows(inputs, state)
     return FleetData(columns, costs, rows, _coefficients(inputs), committed=True)
@@ -247,6 +247,16 @@ def _matching_rows(inputs: WindowInputs, state: State) -> dict[str, Bounds]:
     }
 
 
+def _tie_way_columns(inputs: WindowInputs) -> dict[str, Bounds]:
+    """1 where a lossy tie runs forward, 0 where it runs in reverse: a decision of mode `optimal`."""
+    return {"tie_way": _between(0.0, np.ones((inputs.periods, len(inputs.tie_lossy))))}
+
+
+def _tie_way_rows(inputs: WindowInputs) -> dict[str, Bounds]:
+    reverse = np.tile(inputs.tie_widest[1, inputs.tie_lossy], (inputs.periods, 1))
+    return {"forward_way": _below(np.zeros_like(reverse)), "reverse_way": _below(reverse)}
+
+
 def _given_rows(inputs: WindowInputs, state: State, given: Given) -> dict[str, Bounds]:
     """Rows of mode `given`: all that on/off decisions enter is on the right-hand side."""
     up, down = _ramp_limits(inputs, state)
@@ -334,6 +344,16 @@ def _switch_limits(inputs: WindowInputs) -> dict[tuple[str, str], Floats | Boole
         ("block_width", "start"): np.where(short & (start < stop), 0.0, start),
         ("block_width", "stop"): np.where(short & (start >= stop), 0.0, stop)[:-1],
     }
+
+
+def within_reach(family: str, inputs: WindowInputs) -> Booleans:
+    """Tell which lags of `minimum_up` or `minimum_down` a row may have: array (lag, period, unit)."""
+    unit = inputs.unit
+    asked = unit.up_periods if family == "minimum_up" else unit.down_periods
+    lags = int(min(asked.max(initial=1), inputs.periods))
+    lag, period = np.arange(lags)[:, None, None], np.arange(inputs.periods)[None, :, None]
+    reach: Booleans = (lag <= period) & (lag < asked)
+    return reach
 
 
 def _start_counts(inputs: WindowInputs) -> Booleans:

@@ -1,9 +1,10 @@
 """The fleet half of a window, stated in Pyomo: readable here, compiled once, never solved from here.
 
-Public names: `state_fleet`.
+Public names: `MOVING`, `state_fleet`.
 
-Index t is the period, the other index the position of the element; Δ is the period in hours. Numbers
-that change from window to window come from `FleetData`; those written here stay for the whole run.
+Index t is the period, the other index the position of the element; Δ is the period in hours. What is
+written here stays for the whole run and hangs on no window's numbers: these come from `FleetData`, and
+coefficients among them stand here as `MOVING`.
 """
 
 from typing import Any
@@ -15,11 +16,15 @@ from numpy.typing import NDArray
 from simulator.dispatch.fleet import FleetData
 from simulator.dispatch.inputs import WindowInputs
 
-__all__ = ["state_fleet"]
+__all__ = ["MOVING", "state_fleet"]
 
 Model = Any
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
+
+
+MOVING = 1.0
+"""Stands for a coefficient that derates and outages may change; each window puts its own in place."""
 
 
 def state_fleet(inputs: WindowInputs, data: FleetData) -> Model:
@@ -27,7 +32,6 @@ def state_fleet(inputs: WindowInputs, data: FleetData) -> Model:
     model = pyo.ConcreteModel()
     model.inputs, model.data = inputs, data
     model.right = {family: _right_hand_sides(*bounds) for family, bounds in data.rows.items()}
-    model.moving = {entry: values.tolist() for entry, values in data.coefficients.items()}
     model.blocks_of = _members(inputs.unit.block_unit, len(inputs.unit.bus))
     for family, (lower, _) in data.columns.items():
         setattr(model, family, pyo.Var(*_ranges(lower)))
@@ -54,8 +58,7 @@ def output_split(model: Model, t: int, unit: int) -> Any:
     above = sum(model.block[t, block] for block in model.blocks_of[unit])
     if not model.data.committed:
         return model.output[t, unit] - above == model.right["output_split"][t][unit]
-    minimum = model.moving["output_split", "on"][t][unit]
-    return model.output[t, unit] + minimum * model.on[t, unit] - above == 0.0
+    return model.output[t, unit] + MOVING * model.on[t, unit] - above == 0.0
 
 
 def block_width(model: Model, t: int, block: int) -> Any:
@@ -65,12 +68,11 @@ def block_width(model: Model, t: int, block: int) -> Any:
     stop ramp in the last: 2.2 implies it for whole decisions, here it tightens the relaxation.
     """
     unit = int(model.inputs.unit.block_unit[block])
-    width = model.moving["block_width", "on"][t][block]
-    used = model.block[t, block] + width * model.on[t, unit]
+    used = model.block[t, block] + MOVING * model.on[t, unit]
     if model.inputs.mode == "optimal":
-        used += model.moving["block_width", "start"][t][block] * model.start[t, unit]
+        used += MOVING * model.start[t, unit]
         if t + 1 < model.inputs.periods:
-            used += model.moving["block_width", "stop"][t][block] * model.stop[t + 1, unit]
+            used += MOVING * model.stop[t + 1, unit]
     return used <= 0.0
 
 
@@ -118,15 +120,15 @@ def switching(model: Model, t: int, unit: int) -> Any:
 
 def minimum_up(model: Model, t: int, unit: int) -> Any:
     """2.3: Σ starts within the minimum up time ≤ on_t (Rajan & Takriti, IBM RC23628, 2005)."""
-    counts = model.moving["minimum_up", "start"]
-    started = sum(model.start[t - lag, unit] for lag in range(len(counts)) if counts[lag][t][unit])
+    lags = min(int(model.inputs.unit.up_periods[unit]), t + 1)
+    started = sum(model.start[t - lag, unit] for lag in range(lags))
     return started - model.on[t, unit] <= model.right["minimum_up"][t][unit]
 
 
 def minimum_down(model: Model, t: int, unit: int) -> Any:
     """2.3: Σ stops within the minimum down time ≤ 1 − on_t (same source)."""
-    counts = model.moving["minimum_down", "stop"]
-    stopped = sum(model.stop[t - lag, unit] for lag in range(len(counts)) if counts[lag][t][unit])
+    lags = min(int(model.inputs.unit.down_periods[unit]), t + 1)
+    stopped = sum(model.stop[t - lag, unit] for lag in range(lags))
     return stopped + model.on[t, unit] <= model.right["minimum_down"][t][unit]
 
 
@@ -172,6 +174,22 @@ def matched_in_time(model: Model, t: int, position: int) -> Any:
     old = t - int(model.inputs.unit.hot_periods[unit])
     stopped = model.stopped[old, position] if old >= 0 else 0.0
     return model.matched[t, position] - stopped >= model.right["matched_in_time"][t][position]
+
+
+def forward_way(model: Model, t: int, position: int) -> Any:
+    """1.4: a lossy tie runs one way at a time, forward_t ≤ widest·way_t."""
+    tie = int(model.inputs.tie_lossy[position])
+    widest = float(model.inputs.tie_widest[0, tie])
+    sent = model.tie_forward[t, tie] - widest * model.tie_way[t, position]
+    return sent <= model.right["forward_way"][t][position]
+
+
+def reverse_way(model: Model, t: int, position: int) -> Any:
+    """1.4: a lossy tie runs one way at a time, reverse_t ≤ widest·(1 − way_t)."""
+    tie = int(model.inputs.tie_lossy[position])
+    widest = float(model.inputs.tie_widest[1, tie])
+    sent = model.tie_reverse[t, tie] + widest * model.tie_way[t, position]
+    return sent <= model.right["reverse_way"][t][position]
 
 
 def store_balance(model: Model, t: int, store: int) -> Any:
@@ -251,5 +269,7 @@ OPTIMAL_ROWS = {
     "matched_sum": matched_sum,
     "matched_after_stop": matched_after_stop,
     "matched_in_time": matched_in_time,
+    "forward_way": forward_way,
+    "reverse_way": reverse_way,
 }
 ROWS = {"given": GIVEN_ROWS, "relaxed": RELAXED_ROWS, "optimal": OPTIMAL_ROWS}

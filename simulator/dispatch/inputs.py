@@ -107,6 +107,8 @@ class WindowInputs:
         `final_mwh` can still be reached, MWh; ends_run : the window reaches the end of the run
     charge, discharge : arrays (store,), MW
     tie_forward, tie_reverse (period, tie), MW entering; tie_delivered : share that arrives
+    tie_lossy : positions of the ties that lose something; tie_widest : array (direction, tie), MW, the
+        most either way with nothing out
     demand (period, load); unserved_cost (load,); surplus_cost, short_cost : currency/MWh
     rating (period, line), MW; topology : which topology holds when; joined (period, pair)
     """
@@ -145,6 +147,8 @@ class WindowInputs:
     tie_from: Integers
     tie_to: Integers
     tie_delivered: Floats
+    tie_lossy: Integers
+    tie_widest: Floats
     tie_forward: Floats
     tie_reverse: Floats
     load_bus: Integers
@@ -348,6 +352,8 @@ def _tie_inputs(case: Case, span: slice) -> dict[str, Any]:
         "tie_from": _bus(case, ties["from_bus"]),
         "tie_to": _bus(case, ties["to_bus"]),
         "tie_delivered": 1 - ties["loss_percent"].to_numpy(float) / 100,
+        "tie_lossy": np.flatnonzero(ties["loss_percent"].to_numpy(float) > 0),
+        "tie_widest": ties[["forward_mw", "reverse_mw"]].to_numpy(float).T,
         "tie_forward": share * ties["forward_mw"].to_numpy(float),
         "tie_reverse": share * ties["reverse_mw"].to_numpy(float),
     }

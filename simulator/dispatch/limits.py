@@ -13,12 +13,14 @@ from scipy import sparse
 from simulator.dispatch.compiled import CompiledFleet
 from simulator.dispatch.inputs import WindowInputs
 from simulator.dispatch.solver import BASIC, LinearSolver
+from simulator.dispatch.start import Start
 
 __all__ = ["FLOW_TOLERANCE", "InjectionMap", "LineRows"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
 Booleans = NDArray[np.bool_]
+Statuses = NDArray[np.int8]
 
 FLOW_TOLERANCE = 1e-6
 """A flow further than this beyond its rating, MW, asks for a row."""
@@ -77,67 +79,54 @@ class LineRows:
     """The line rows that stand in a solver's model, in the order in which they stand there.
 
     line, period, topology : arrays (row,); idle : windows in which a row has not been at its limit
+    carried : how many rows the window began with for limits met in hours seen before
     """
+
+    carried = 0
 
     def __init__(self, inputs: WindowInputs, fleet: CompiledFleet) -> None:
         self.injection = InjectionMap(inputs, dict(fleet.columns))
         self._first_row = fleet.matrix.shape[0]
         self._columns = fleet.matrix.shape[1]
-        empty = np.zeros(0, dtype=int)
+        self._known: dict[tuple[int, int], int] = {}
+        self._factors = sparse.csr_array((0, self.injection.at_bus.shape[1]))
+        self._clear()
+
+    def _clear(self) -> None:
+        empty = np.zeros(0, dtype=np.int64)
         self.line, self.period, self.topology, self.idle = (empty.copy() for _ in range(4))
 
     def __len__(self) -> int:
         return len(self.line)
 
-    @property
-    def rows(self) -> Integers:
-        """Positions of the rows in the model."""
-        return self._first_row + np.arange(len(self))
+    def begin_window(
+        self, solver: LinearSolver, inputs: WindowInputs, fixed: Floats, start: Start | None
+    ) -> Statuses:
+        """Add the rows a window starts with to a model that has none; return their statuses.
 
-    def begin_window(self, solver: LinearSolver, inputs: WindowInputs, fixed: Floats) -> None:
-        """Give every row its bounds in a new window, and let go of those that no longer serve.
-
-        A row whose period now has another topology is opened at once; it and rows idle for several
-        windows are deleted as soon as they are basic, since only then the basis survives.
+        They are the rows that stood, with new bounds, less those that no longer serve: idle for several
+        windows, or of a period that now has another topology; and rows for what was at its limit in
+        hours seen before.
         """
-        leave = self._strange(inputs) | (self.idle >= _IDLE_WINDOWS)
-        if leave.any():
-            row_status = solver.basis()[1]
-            gone = leave & (row_status[self.rows] == BASIC)
-            solver.delete_rows(self.rows[gone])
-            self._take(~gone)
-        lower, upper = self._bounds(inputs, fixed, self.line, self.period)
-        strange = self._strange(inputs)
-        lower[strange], upper[strange] = -np.inf, np.inf
-        solver.set_row_bounds(self.rows, lower, upper)
-
-    def open(self, solver: LinearSolver) -> None:
-        """Let every row hold nothing: for a run without line limits on a model that has some."""
-        free = np.full(len(self), np.inf)
-        solver.set_row_bounds(self.rows, -free, free)
-
-    def _strange(self, inputs: WindowInputs) -> Booleans:
-        strange: Booleans = self.topology != inputs.topology.index[self.period]
-        return strange
-
-    def shifted(self, status: Integers, shift: int, periods: int, lines: int) -> Integers:
-        """Return row statuses moved `shift` periods towards the start; basic where none is known."""
-        by_place = np.full((periods + shift, lines), BASIC)
-        by_place[self.period, self.line] = status
-        moved = by_place[self.period + shift, self.line]
-        return np.where(self.period < periods - shift, moved, status)
-
-    def carried(self, shift: int, inputs: WindowInputs) -> Booleans:
-        """Tell which (period, line) were at their limit in the last window and have no row here yet."""
-        wanted = np.zeros(inputs.rating.shape, dtype=bool)
-        bound = (self.idle == 0) & (self.period >= shift)
-        wanted[self.period[bound] - shift, self.line[bound]] = True
-        return wanted & ~self.active(inputs)
-
-    def _take(self, keep: Booleans) -> None:
-        self.line, self.period, self.topology, self.idle = (
-            values[keep] for values in (self.line, self.period, self.topology, self.idle)
+        self._clear()
+        self.carried = 0
+        if start is None or not inputs.limited:
+            return np.zeros(0, dtype=np.int8)
+        shift = start.moved_to(inputs.first, inputs.periods)
+        serve = (start.idle < _IDLE_WINDOWS) & (
+            start.topology == inputs.topology.index[start.period]
         )
+        carried = _carried(start, shift, inputs.rating.shape)
+        carried[start.period[serve], start.line[serve]] = False
+        period, line = np.nonzero(carried)
+        self.carried = len(line)
+        self._add(
+            solver, inputs, fixed, np.concatenate([start.line[serve], line]),
+            np.concatenate([start.period[serve], period]),
+            np.concatenate([start.idle[serve], np.zeros(len(line), dtype=np.int64)]),
+        )  # fmt: skip
+        moved = _moved_statuses(start, shift, inputs.rating.shape)[serve]
+        return np.concatenate([moved, np.full(len(line), BASIC, dtype=np.int8)])
 
     def _bounds(
         self, inputs: WindowInputs, fixed: Floats, line: Integers, period: Integers
@@ -146,10 +135,9 @@ class LineRows:
         return -rating - base, rating - base
 
     def active(self, inputs: WindowInputs) -> Booleans:
-        """Tell which (period, line) have a row that holds in this window."""
-        here = self.topology == inputs.topology.index[self.period]
+        """Tell which (period, line) have a row."""
         found = np.zeros(inputs.rating.shape, dtype=bool)
-        found[self.period[here], self.line[here]] = True
+        found[self.period, self.line] = True
         return found
 
     def add(
@@ -157,33 +145,74 @@ class LineRows:
     ) -> None:
         """Add rows for `missing`, array (period, line)."""
         period, line = np.nonzero(missing)
+        self._add(solver, inputs, fixed, line, period, np.zeros(len(line), dtype=np.int64))
+
+    def _add(
+        self, solver: LinearSolver, inputs: WindowInputs, fixed: Floats,
+        line: Integers, period: Integers, idle: Integers,
+    ) -> None:  # fmt: skip
+        if not len(line):
+            return
         topology = inputs.topology.index[period]
         lower, upper = self._bounds(inputs, fixed, line, period)
         solver.add_rows(self._matrix(inputs, line, period, topology), lower, upper)
         self.line = np.concatenate([self.line, line])
         self.period = np.concatenate([self.period, period])
         self.topology = np.concatenate([self.topology, topology])
-        self.idle = np.concatenate([self.idle, np.zeros(len(line), dtype=int)])
+        self.idle = np.concatenate([self.idle, idle])
 
     def _matrix(
         self, inputs: WindowInputs, line: Integers, period: Integers, topology: Integers
     ) -> sparse.csr_array:
         """Coefficients of new rows, sparse array (row, column): PTDF of each line over injections."""
-        factors = np.zeros((len(line), self.injection.at_bus.shape[1]))
-        for number in np.unique(topology):
-            here = topology == number
-            lines, place = np.unique(line[here], return_inverse=True)
-            ptdf = inputs.topology.topologies[number].ptdf_rows(lines)
-            factors[here] = (self.injection.at_bus.T @ ptdf.T).T[place]
-        row, injection = np.nonzero(np.abs(factors) > _SMALLEST_FACTOR)
-        columns = self.injection.columns[period[row], injection]
+        self._learn(inputs, line, topology)
+        keys = zip(topology.tolist(), line.tolist(), strict=True)
+        rows = self._factors[[self._known[key] for key in keys]]
+        owner = np.repeat(period, np.diff(rows.indptr))
+        columns = self.injection.columns[owner, rows.indices]
         shape = (len(line), self._columns)
-        return sparse.csr_array((factors[row, injection], (row, columns)), shape=shape)
+        return sparse.csr_array((rows.data, columns, rows.indptr), shape=shape)
+
+    def _learn(self, inputs: WindowInputs, line: Integers, topology: Integers) -> None:
+        """Work out the factors of lines that never had a row under their topology."""
+        for number in np.unique(topology).tolist():
+            lines = np.unique(line[topology == number])
+            fresh = np.array(
+                [one for one in lines.tolist() if (number, one) not in self._known], int
+            )
+            if not len(fresh):
+                continue
+            ptdf = inputs.topology.topologies[number].ptdf_rows(fresh)
+            factors = (self.injection.at_bus.T @ ptdf.T).T
+            factors[np.abs(factors) <= _SMALLEST_FACTOR] = 0.0
+            known = len(self._known)
+            self._known |= {(number, one): known + at for at, one in enumerate(fresh.tolist())}
+            self._factors = sparse.vstack([self._factors, sparse.csr_array(factors)], format="csr")
 
     def duals(self, row_dual: Floats, inputs: WindowInputs) -> Floats:
-        """Return signed duals of line limits, array (period, line), and note which rows are idle."""
-        own = row_dual[self._first_row :]
-        self.idle = np.where(np.abs(own) > 0, 0, self.idle + 1)
+        """Return signed duals of line limits, array (period, line)."""
         found = np.zeros(inputs.rating.shape)
-        np.add.at(found, (self.period, self.line), own)
+        np.add.at(found, (self.period, self.line), row_dual[self._first_row :])
         return found
+
+    def idle_after(self, row_dual: Floats) -> Integers:
+        """Return in how many windows each row has not been at its limit, this one included."""
+        at_limit = np.abs(row_dual[self._first_row :]) > 0
+        return np.where(at_limit, 0, self.idle + 1)
+
+
+def _moved_statuses(start: Start, shift: int, shape: tuple[int, ...]) -> Statuses:
+    """Return statuses of the rows that stood, moved along with the hours; basic where none is known."""
+    periods, lines = shape
+    by_place = np.full((periods + shift, lines), BASIC, dtype=np.int8)
+    by_place[start.period, start.line] = start.line_rows
+    moved = by_place[start.period + shift, start.line]
+    return np.where(start.period < periods - shift, moved, start.line_rows)
+
+
+def _carried(start: Start, shift: int, shape: tuple[int, ...]) -> Booleans:
+    """Tell which (period, line) were at their limit in the last window."""
+    wanted = np.zeros(shape, dtype=bool)
+    bound = (start.idle == 0) & (start.period >= shift)
+    wanted[start.period[bound] - shift, start.line[bound]] = True
+    return wanted

@@ -21,6 +21,7 @@ __all__ = ["BASIC", "STATUS", "Decision", "LinearSolver", "SolverError"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
+Statuses = NDArray[np.int8]
 
 OPTIONS: Mapping[str, Any] = {
     "output_flag": False,
@@ -86,10 +87,13 @@ class _Quiet(highspy.Highs):
 class LinearSolver:
     """One HiGHS object that lives as long as the shape of its model, and keeps its basis."""
 
-    def __init__(self, matrix: sparse.csc_array, vectors: Vectors) -> None:
+    def __init__(self) -> None:
         self._highs: Any = _Quiet()  # type: ignore[no-untyped-call]  # its stubs lack many methods
         for name, value in OPTIONS.items():
             self.set_option(name, value)
+
+    def load(self, matrix: sparse.csc_array, vectors: Vectors) -> None:
+        """Put a model in place of the last one; nothing of that one's solution or basis is left."""
         lp = highspy.HighsLp()
         lp.num_row_, lp.num_col_ = matrix.shape
         lp.col_cost_, lp.col_lower_, lp.col_upper_ = vectors.cost, vectors.lower, vectors.upper
@@ -134,13 +138,6 @@ class LinearSolver:
         code = self._highs.changeRowsBounds(len(rows), rows.astype(np.int32), lower, upper)
         self._check(code, "row bounds")
 
-    def set_entries(self, rows: Integers, columns: Integers, values: Floats) -> None:
-        """Replace single matrix entries: the few that a derate or an outage moves."""
-        for row, column, value in zip(
-            rows.tolist(), columns.tolist(), values.tolist(), strict=True
-        ):
-            self._check(self._highs.changeCoeff(row, column, value), "a coefficient")
-
     def add_rows(self, matrix: sparse.csr_array, lower: Floats, upper: Floats) -> None:
         """Append rows; the basis is kept, the new rows enter as basic."""
         starts, indices = matrix.indptr[:-1].astype(np.int32), matrix.indices.astype(np.int32)
@@ -149,16 +146,12 @@ class LinearSolver:
         )
         self._check(code, "line rows")
 
-    def delete_rows(self, rows: Integers) -> None:
-        """Delete rows that are basic, so that the basis stays valid."""
-        self._check(self._highs.deleteRows(len(rows), rows.astype(np.int32)), "a deletion of rows")
-
-    def basis(self) -> tuple[Integers, Integers]:
+    def basis(self) -> tuple[Statuses, Statuses]:
         """Return the status of every column and row as numbers; `BASIC` marks the basic ones."""
         found = self._highs.getBasis()
         return _numbers(found.col_status), _numbers(found.row_status)
 
-    def set_basis(self, columns: Integers, rows: Integers) -> None:
+    def set_basis(self, columns: Statuses, rows: Statuses) -> None:
         """Start the next run from these statuses; what is singular or miscounted is repaired."""
         basis = highspy.HighsBasis()
         basis.col_status = [_STATUSES[number] for number in columns.tolist()]
@@ -247,8 +240,8 @@ _STATUSES = list(highspy.HighsBasisStatus.__members__.values())
 BASIC = int(highspy.HighsBasisStatus.kBasic)
 
 
-def _numbers(statuses: Any) -> Integers:
-    return np.fromiter(map(int, statuses), dtype=np.int64, count=len(statuses))
+def _numbers(statuses: Any) -> Statuses:
+    return np.fromiter(map(int, statuses), dtype=np.int8, count=len(statuses))
 
 
 def _outside(values: Any, lower: Any, upper: Any) -> Integers:

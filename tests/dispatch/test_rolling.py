@@ -8,9 +8,9 @@ import pytest
 from scipy import sparse
 
 from simulator.dispatch import WindowModel
+from simulator.dispatch.counts import Counts
 from simulator.dispatch.inputs import run_inputs
 from simulator.dispatch.state import initial_state
-from simulator.dispatch.window import Counts
 from simulator.errors import OptionError, SolveError
 from simulator.horizon import plan_run, run
 from simulator.results import to_dataset

@@ -72,7 +72,7 @@ def _rows(table: pd.DataFrame) -> list[tuple[str, Row]]:
     return list(table.to_dict("index").items())
 
 
-def written_out(case: Case, mode: str, *, limits: bool = True) -> Program:
+def written_out(case: Case, mode: str, *, limits: bool = True, one_way: bool = False) -> Program:
     """Return the program of a case; its optimum is what a run of one window must cost."""
     model = Model(case, mode, limits)
     for name, unit in _rows(case.units):
@@ -81,6 +81,8 @@ def written_out(case: Case, mode: str, *, limits: bool = True) -> Program:
     for name, store in _rows(case.storage):
         _store(model, name, store)
     _ties(model)
+    if one_way:
+        _ways(model)
     _loads_and_surplus(model)
     _lines(model)
     _balances(model)
@@ -306,6 +308,19 @@ def _ties(model: Model) -> None:
                 model.program.column((way, e, t), 0, limit * share[t])
                 model.injected[sending, t].append((-1, (way, e, t)))
                 model.injected[receiving, t].append((arrives, (way, e, t)))
+
+
+def _ways(model: Model) -> None:
+    """A tie runs forward or in reverse, not both at once."""
+    for e, tie in _rows(model.case.dc_ties):
+        for t in model.periods:
+            way = ("way", e, t)
+            model.program.column(way, 0, 1)
+            model.program.whole.add(way)
+            sent = [(1, ("forward", e, t)), (-tie["forward_mw"], way)]
+            model.program.row(("ahead", e, t), sent, "<=", 0)
+            sent = [(1, ("reverse", e, t)), (tie["reverse_mw"], way)]
+            model.program.row(("back", e, t), sent, "<=", tie["reverse_mw"])
 
 
 def _loads_and_surplus(model: Model) -> None:
