@@ -94,6 +94,12 @@ def week(
     keep_hours: Annotated[float | None, typer.Option(help="What is kept of it.")] = None,
     commitment: Annotated[str | None, typer.Option(help="given | relaxed | optimal")] = None,
     limits: Annotated[str | None, typer.Option(help="none | lines | secure")] = None,
+    pricing: Annotated[
+        str | None,
+        typer.Option(
+            help="fixed | relaxed: prices with on/off decisions fixed, or of the relaxation."
+        ),
+    ] = None,
     out: Annotated[
         Path | None, typer.Option(help="Folder of results; by default outputs/<case>-<first day>.")
     ] = None,
@@ -114,7 +120,7 @@ def week(
     found = read_case(case)
     plan = plan_run(
         found, start, hours, window_hours=window_hours, keep_hours=keep_hours,
-        commitment=commitment, limits=limits,
+        commitment=commitment, limits=limits, pricing=pricing,
     )  # fmt: skip
     folder = (
         out or Path("outputs") / f"{case.resolve().name}-{found.time.local[plan.first]:%Y-%m-%d}"

@@ -28,6 +28,7 @@ Progress = Callable[[int, int], None]
 
 MODES = ("given", "relaxed", "optimal")
 LIMITS = ("none", "lines")
+PRICING = ("fixed", "relaxed")
 _ROUNDING = 1e-9
 WEEK = 168.0
 
@@ -40,6 +41,16 @@ class Plan:
     seen : how many periods from the first the hourly data hold, look-ahead included
     window, keep : periods one optimisation sees, and how many of them are kept
     mode, limits : commitment mode and line limits
+    pricing : where prices come from in mode `optimal`. `fixed`: the linear program that is left when the
+        on/off decisions are fixed (formulation.md 5.5). `relaxed`: the window's relaxation, that is,
+        all of formulation.md 2 from the state the plan handed over, with every on, start and stop of
+        every unit free to be any share from 0 to 1 and the tightening rows of mode `optimal` in place.
+        A unit that sets such a price is on in part, so that minimum output, no-load and start costs
+        are spread over what it gives while it runs. Output, flows and costs are the plan's either way;
+        limits that bind in the relaxation need not be met by the plan's flows. The idea is that of
+        convex hull prices, which the relaxation gives where its rows describe each unit exactly
+        (Gribik, Hogan & Pope, Market-Clearing Electricity Prices and Energy Uplift, 2007; Hua & Baldick,
+        IEEE Trans. Power Systems 32(5), 2017; both cited from memory) and comes near elsewhere.
     """
 
     first: int
@@ -49,6 +60,7 @@ class Plan:
     keep: int
     mode: str
     limits: str
+    pricing: str = "fixed"
 
     @property
     def windows(self) -> list[tuple[int, int]]:
@@ -104,6 +116,7 @@ def plan_run(
     keep_hours: float | None = None,
     commitment: str | None = None,
     limits: str | None = None,
+    pricing: str | None = None,
 ) -> Plan:
     """Turn what a caller asks for into a `Plan`; what is left out comes from the case.
 
@@ -130,7 +143,7 @@ def plan_run(
         raise OptionError(
             "network.losses, must be false in this version, found true, set it to false in case.toml"
         )
-    return Plan(first, periods, seen, window, keep, mode, chosen)
+    return Plan(first, periods, seen, window, keep, mode, chosen, _pricing(pricing, mode))
 
 
 def _or(asked: float | None, otherwise: float) -> float:
@@ -144,6 +157,16 @@ def _choice(option: str, value: str, known: tuple[str, ...]) -> str:
             f"pass {option} {known[-1]}"
         )
     return value
+
+
+def _pricing(pricing: str | None, mode: str) -> str:
+    chosen = _choice("--pricing", pricing or "fixed", PRICING)
+    if chosen == "relaxed" and mode != "optimal":
+        raise OptionError(
+            "--pricing relaxed, must go with whole on/off decisions, "
+            f"found --commitment {mode}, pass --commitment optimal"
+        )
+    return chosen
 
 
 def _periods(case: Case, hours: float, option: str) -> int:

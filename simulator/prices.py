@@ -59,8 +59,11 @@ def energy_and_congestion(
 
 
 def congestion_rent(line_dual: Floats, flow: Floats, period_hours: float) -> Floats:
-    """Return the rent of each line, array (period, line), currency: shadow price × |flow| × Δ (5.2)."""
-    return np.abs(line_dual) * np.abs(flow) * period_hours
+    """Return the rent of each line, array (period, line), currency (5.2).
+
+    Shadow price × flow × Δ, the flow counted in the direction of the limit: |flow| where it is met.
+    """
+    return np.where(flow == 0, 0.0, -line_dual * flow) * period_hours
 
 
 PRICED = 1e-6

@@ -94,20 +94,33 @@ VARIABLES: Mapping[str, Entry] = {
 }
 
 
+OF_DECISIONS: Mapping[str, Entry] = {
+    "price_fixed": (("time", "bus"), PRICE, "locational price with the decisions fixed"),
+    "price_relaxed": (("time", "bus"), PRICE, "locational price of the relaxation"),
+    "line_limit_side": (
+        ("time", "line"),
+        "1",
+        "limit that is priced: 1 from from_bus to to_bus, -1 the other way, 0 none",
+    ),
+}
+"""What mode `optimal` has besides: `price` is that of the two its attribute `pricing` names."""
+
+
 def to_dataset(run: Run) -> xr.Dataset:
     """Return the results of a run as one labelled dataset (results-format.md)."""
     coordinates = _coordinates(run)
     values = _powers(run) | _lines_and_prices(run) | _costs(run) | _summaries(run)
+    written = {**VARIABLES, **(OF_DECISIONS if run.plan.mode == "optimal" else {})}
     variables = {
         name: (dims, values[name], {"units": unit, "long_name": label})
-        for name, (dims, unit, label) in VARIABLES.items()
+        for name, (dims, unit, label) in written.items()
     }
     settings = run.case.settings
     attributes = {
         "Conventions": "CF-1.11", "format": FORMAT, "title": f"Dispatch of {settings.name}",
         "case_name": settings.name, "currency": settings.currency, "time_zone": settings.time_zone,
         "period_hours": run.case.time.period_hours, "commitment": run.plan.mode,
-        "limits": run.plan.limits, "base_mva": settings.base_mva,
+        "limits": run.plan.limits, "pricing": run.plan.pricing, "base_mva": settings.base_mva,
     }  # fmt: skip
     return xr.Dataset(variables, coordinates, attributes)
 
@@ -168,21 +181,32 @@ def _powers(run: Run) -> dict[str, Floats]:
 
 def _lines_and_prices(run: Run) -> dict[str, Floats]:
     kept, inputs = run.kept, run.kept_inputs
+    price, line_dual = _priced(run)
     island = np.stack([topology.island for topology in inputs.topology.topologies])
     island = island[inputs.topology.index]
     weights = prices.reference_weights(inputs.demand_at_bus, island)
-    energy, congestion = prices.energy_and_congestion(kept.price, weights, island)
+    energy, congestion = prices.energy_and_congestion(price, weights, island)
     none = np.zeros((len(run.times), 0))
     return {
-        "line_shadow_price": np.abs(kept.line_dual),
-        "congestion_rent": prices.congestion_rent(kept.line_dual, kept.flow, inputs.period_hours),
-        "price": kept.price,
+        "line_shadow_price": np.abs(line_dual),
+        "line_limit_side": -np.sign(line_dual).astype(np.int8),
+        "congestion_rent": prices.congestion_rent(line_dual, kept.flow, inputs.period_hours),
+        "price": price,
+        "price_fixed": kept.price,
+        "price_relaxed": kept.relaxed_price,
         "price_energy": energy,
         "price_congestion": congestion,
-        "price_loss": np.zeros_like(kept.price),
+        "price_loss": np.zeros_like(price),
         "reserve_price": none,
         "reserve_shortage": none,
     }
+
+
+def _priced(run: Run) -> tuple[Floats, Floats]:
+    """Return prices (period, bus) and line duals (period, line) as the plan asks for them."""
+    if run.plan.pricing == "relaxed":
+        return run.kept.relaxed_price, run.kept.relaxed_line_dual
+    return run.kept.price, run.kept.line_dual
 
 
 def _costs(run: Run) -> dict[str, Floats]:
@@ -231,7 +255,7 @@ def _summaries(run: Run) -> dict[str, Any]:
     length = inputs.period_hours
     at_limit = np.abs(kept.flow) >= inputs.rating - AT_LIMIT
     return {
-        "congestion_hours": (np.abs(kept.line_dual) > PRICED).sum(axis=0) * length,
+        "congestion_hours": (np.abs(_priced(run)[1]) > PRICED).sum(axis=0) * length,
         "hours_at_limit": at_limit.sum(axis=0) * length,
         "ramp_limited_hours": _ramp_limited(run).sum(axis=0) * length,
         "window": run.window,
@@ -305,6 +329,7 @@ def _settings(run: Run) -> dict[str, Any]:
         "hours": run.plan.periods * length, "period_hours": length,
     }  # fmt: skip
     settings["commitment"]["mode"] = run.plan.mode
+    settings["commitment"]["pricing"] = run.plan.pricing
     settings["network"]["limits"] = run.plan.limits
     return settings
 

@@ -39,11 +39,18 @@ DIMENSIONS: Mapping[str, tuple[str, ...]] = {
 }  # fmt: skip
 """The variables that are audited, and their dimensions (results-format.md)."""
 
+OF_DECISIONS: Mapping[str, tuple[str, ...]] = {
+    **dict.fromkeys(("price_fixed", "price_relaxed"), ("time", "bus")),
+    "line_limit_side": ("time", "line"),
+}
+"""What a run in mode `optimal` has besides."""
+
 COMPONENTS = (
     "unit_running", "unit_start", "renewable", "storage", "unserved", "surplus", "reserve_shortage",
 )  # fmt: skip
 MODES = ("given", "relaxed", "optimal")
 LIMITS = ("none", "lines")
+PRICING = ("fixed", "relaxed")
 
 
 @dataclass(frozen=True, eq=False)
@@ -52,7 +59,7 @@ class Evidence:
 
     names : dimension → labels in the order of the case's table
     span : the run's periods on the case's time axis; hours : their local starts
-    length : Δ, h; mode, limits : what the run was asked for
+    length : Δ, h; mode, limits, pricing : what the run was asked for
     values : variable → array with the dimensions of `DIMENSIONS`; NaN for what is endless and is not
         the rating of a line
     """
@@ -63,10 +70,28 @@ class Evidence:
     length: float
     mode: str
     limits: str
+    pricing: str
     values: Mapping[str, Floats] = field(repr=False)
 
     def __getitem__(self, variable: str) -> Floats:
         return self.values[variable]
+
+    @property
+    def price_of_plan(self) -> Floats:
+        """Return prices of the linear program whose optimum the amounts are, array (period, bus)."""
+        return self["price_fixed" if self.mode == "optimal" else "price"]
+
+    @cached_property
+    def limit_side(self) -> Floats:
+        """Which limit of a line is priced: 1 at +F, −1 at −F, array (period, line).
+
+        Told by the dataset where decisions are made, since a relaxation's limits are not the plan's;
+        elsewhere by the flow, and 0 where there is none.
+        """
+        if self.mode == "optimal":
+            return self["line_limit_side"]
+        side: Floats = np.sign(self["line_flow"])
+        return side
 
     @property
     def hours(self) -> pd.DatetimeIndex:
@@ -158,10 +183,12 @@ def gather(case: Case, dataset: xr.Dataset) -> Evidence:
     _no_products(dataset)
     if case.settings.network.losses:
         raise _unfit("the case", "must be without network losses", "losses", "audit it without")
+    mode = _choice(dataset, "commitment", MODES)
+    wanted = {**DIMENSIONS, **(OF_DECISIONS if mode == "optimal" else {})}
     return Evidence(
-        case=case, names=names, span=_span(case, dataset), length=_length(case, dataset),
-        mode=_choice(dataset, "commitment", MODES), limits=_choice(dataset, "limits", LIMITS),
-        values={name: _values(dataset, name, dims) for name, dims in DIMENSIONS.items()},
+        case=case, names=names, span=_span(case, dataset), length=_length(case, dataset), mode=mode,
+        limits=_choice(dataset, "limits", LIMITS), pricing=_choice(dataset, "pricing", PRICING),
+        values={name: _values(dataset, name, dims) for name, dims in wanted.items()},
     )  # fmt: skip
 
 

@@ -3,7 +3,9 @@
 Public names: `optimality_checks`.
 
 For whatever supplies at a cost: where some is taken, the price is at least the cost; where more could
-be taken, at most. So it equals the cost strictly between the limits. What is checked:
+be taken, at most. So it equals the cost strictly between the limits. In mode `optimal` prices are those
+with the decisions fixed, whichever kind the run was asked for: amounts are no optimum at the
+relaxation's. What is checked:
 
 units : every block of the cost curve that a unit may use as far as it is on, in all modes, with the
     blocks filled from the lowest up. Left out are the hours in which a ramp may set the price too: the
@@ -60,7 +62,7 @@ def _mismatch(taken: Floats, room: Floats, cost: Floats, price: Floats) -> Float
 
 
 def _units(evidence: Evidence, units: Units) -> Residual:
-    price = evidence["price"][:, evidence.bus(units.table)]
+    price = evidence.price_of_plan[:, evidence.bus(units.table)]
     taken, room = units.block_taken, units.block_room
     by_block = _mismatch(taken, room - taken, units.block_cost, price[:, units.block_unit])
     by_block = np.where(_falling(units), 0.0, by_block)
@@ -96,7 +98,7 @@ def _renewables(evidence: Evidence) -> Residual:
     offer = plants["offer_per_mwh"].to_numpy(float)
     taken = evidence["renewable_output"]
     room = evidence["renewable_available"] - taken
-    price = evidence["price"][:, evidence.bus(plants)]
+    price = evidence.price_of_plan[:, evidence.bus(plants)]
     return Residual("plant", evidence.names["plant"], "", _mismatch(taken, room, offer, price))
 
 
@@ -105,7 +107,7 @@ def _unserved(evidence: Evidence) -> Residual:
     worth = loads["unserved_per_mwh"].to_numpy(float)
     taken = evidence["load_unserved"]
     room = np.maximum(evidence["load_demand"], 0.0) - taken
-    price = evidence["price"][:, evidence.bus(loads)]
+    price = evidence.price_of_plan[:, evidence.bus(loads)]
     return Residual("load", evidence.names["load"], "", _mismatch(taken, room, worth, price))
 
 
@@ -113,14 +115,16 @@ def _surplus(evidence: Evidence) -> Residual:
     """Surplus takes power off a bus, so it supplies at less than nothing: price ≥ −penalty."""
     penalty = np.array(evidence.case.settings.penalties.surplus)
     taken = evidence["surplus"]
-    off = _mismatch(taken, np.full(taken.shape, np.inf), penalty, -evidence["price"])
+    off = _mismatch(taken, np.full(taken.shape, np.inf), penalty, -evidence.price_of_plan)
     return Residual("bus", evidence.names["bus"], "", off)
 
 
 def _ties(evidence: Evidence) -> list[Residual]:
     """Take a tie as supply of its receiving end at the price of its sending end, over what arrives."""
     ties, flow = evidence.case.dc_ties, evidence["tie_flow"]
-    ends = {end: evidence["price"][:, evidence.bus(ties, end)] for end in ("from_bus", "to_bus")}
+    ends = {
+        end: evidence.price_of_plan[:, evidence.bus(ties, end)] for end in ("from_bus", "to_bus")
+    }
     found = []
     for sign, direction, sending, receiving in (
         (1.0, "forward", "from_bus", "to_bus"),
@@ -168,7 +172,7 @@ def _value_bounds(evidence: Evidence) -> tuple[Floats, Floats]:
     Charging supplies energy in store at price/η_c, discharging takes it at η_d·(price − throughput).
     """
     stores, share = evidence.case.storage, evidence.store_share
-    price = evidence["price"][:, evidence.bus(stores)]
+    price = evidence.price_of_plan[:, evidence.bus(stores)]
     charging = price / stores["charge_efficiency"].to_numpy(float)
     throughput = stores["throughput_cost_per_mwh"].to_numpy(float)
     discharging = (price - throughput) * stores["discharge_efficiency"].to_numpy(float)

@@ -2,9 +2,10 @@
 
 Public names: `price_checks`.
 
-Datasets hold shadow prices without sign; the sign of a line's dual is against its flow. Where a line
-with a shadow price carries nothing (its rating is zero) the sign is open, and what needs it is left
-out for that island and period.
+Datasets hold shadow prices without sign; the sign of a line's dual is against its flow, or, in mode
+`optimal`, against the side the dataset names. Where a line with a shadow price carries nothing (its
+rating is zero) and no side is named the sign is open, and what needs it is left out for that island and
+period. Prices of a relaxation come with its shadow prices, whose limits the plan need not be at.
 """
 
 import numpy as np
@@ -32,6 +33,7 @@ def price_checks(evidence: Evidence, network: Network) -> list[Check]:
     hours = evidence.hours
     return [
         judge("price parts", ADDED, hours, [_parts(evidence)]),
+        *_kind(evidence),
         judge("energy price", ADDED, hours, _energy(evidence, network)),
         judge("congestion price", ADDED, hours, [_congestion(evidence, network)]),
         judge("shadow prices", POWER, hours, _shadow_prices(evidence)),
@@ -52,6 +54,15 @@ def _at_lines(evidence: Evidence, values: Floats, rule: str = "") -> Residual:
 def _parts(evidence: Evidence) -> Residual:
     parts = evidence["price_energy"] + evidence["price_congestion"] + evidence["price_loss"]
     return _at_buses(evidence, apart(evidence["price"], parts))
+
+
+def _kind(evidence: Evidence) -> list[Check]:
+    """In mode `optimal` the price is the kind of price that the run was asked for."""
+    if evidence.mode != "optimal":
+        return []
+    asked = evidence[f"price_{evidence.pricing}"]
+    off = _at_buses(evidence, apart(evidence["price"], asked))
+    return [judge("kind of price", COUNTED, evidence.hours, [off])]
 
 
 def _weights(evidence: Evidence, network: Network) -> Floats:
@@ -76,13 +87,14 @@ def _energy(evidence: Evidence, network: Network) -> list[Residual]:
 
 def _signed(evidence: Evidence) -> Floats:
     """Return the duals of line limits: negative where the flow is held down at +F."""
-    signed: Floats = -np.sign(evidence["line_flow"]) * evidence["line_shadow_price"]
+    signed: Floats = -evidence.limit_side * evidence["line_shadow_price"]
     return signed
 
 
 def _open(evidence: Evidence, network: Network) -> Booleans:
     """Tell at which buses the sign of some shadow price of the island is open, (period, bus)."""
-    unsigned = (evidence["line_shadow_price"] > PRICED) & (np.abs(evidence["line_flow"]) < POWER)
+    priced = evidence["line_shadow_price"] > PRICED
+    unsigned = priced & (np.abs(evidence["line_flow"]) < POWER) & (evidence.mode != "optimal")
     at_bus = summed(unsigned.astype(float), network.from_bus, network.buses)
     return network.island_sum(at_bus) > 0
 
@@ -100,17 +112,19 @@ def _shadow_prices(evidence: Evidence) -> list[Residual]:
     shadow = evidence["line_shadow_price"]
     if evidence.limits == "none":
         return [_at_lines(evidence, np.abs(shadow), "without limits")]
-    slack = np.abs(np.abs(evidence["line_flow"]) - evidence["line_rating"])
-    return [
-        _at_lines(evidence, -shadow, "sign"),
-        _at_lines(evidence, np.where(shadow > PRICED, slack, 0.0), "off its limit"),
-    ]
+    sign = _at_lines(evidence, -shadow, "sign")
+    side = np.abs(np.abs(evidence.limit_side) - 1.0)
+    named = _at_lines(evidence, np.where(shadow > PRICED, side, 0.0), "side")
+    if evidence.pricing == "relaxed":
+        return [sign, named]
+    slack = np.abs(evidence.limit_side * evidence["line_flow"] - evidence["line_rating"])
+    off = _at_lines(evidence, np.where(shadow > PRICED, slack, 0.0), "off its limit")
+    return [sign, off] if evidence.mode != "optimal" else [sign, named, off]
 
 
 def _rent(evidence: Evidence) -> Residual:
-    """5.2: shadow price × |flow| × Δ, as a share of it where it is large."""
-    flow, shadow = np.abs(evidence["line_flow"]), evidence["line_shadow_price"]
-    rent = shadow * flow * evidence.length
+    """5.2: shadow price × flow towards the limit × Δ, as a share of it where it is large."""
+    rent = -_signed(evidence) * evidence["line_flow"] * evidence.length
     off = apart(evidence["congestion_rent"], rent) / np.maximum(1.0, np.abs(rent))
     return _at_lines(evidence, off)
 

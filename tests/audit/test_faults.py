@@ -7,7 +7,7 @@ import pytest
 
 from simulator.audit import audit, audit_record
 from simulator.audit.evidence import DIMENSIONS
-from tests.audit.faults import FAULTS
+from tests.audit.faults import FAULTS, taken_as
 from tests.audit.plants import town_case
 
 
@@ -19,7 +19,7 @@ def failed(checks):
 def test_a_fault_is_found(name, town, dataset, tmp_path):
     fault = FAULTS[name]
     case = town_case(tmp_path / "case", fault.changes) if fault.changes else town
-    dataset.attrs["commitment"] = fault.mode
+    taken_as(dataset, fault.mode)
     fault.plant(dataset)
     found = failed(audit(case, dataset))
     assert set(found) == {fault.check} | fault.also
@@ -28,14 +28,14 @@ def test_a_fault_is_found(name, town, dataset, tmp_path):
 
 def test_the_run_is_good_before_a_fault_is_planted(town, dataset):
     for mode in ("given", "optimal", "relaxed"):
-        dataset.attrs["commitment"] = mode
+        taken_as(dataset, mode)
         assert not failed(audit(town, dataset))
 
 
 def test_no_check_is_without_a_fault(town, dataset):
     named = {fault.check for fault in FAULTS.values()} | {"numbers"}
     checks = audit(town, dataset)
-    dataset.attrs["commitment"] = "optimal"
+    taken_as(dataset, "optimal")
     assert {check.name for check in checks + audit(town, dataset)} == named
 
 
