@@ -142,6 +142,7 @@ def week(
         dataset, record, folder, force=force, page=lambda path: write_page(dataset, record, path)
     )
     _report(dataset, record, folder, as_json=as_json)
+    _say_gaps(record)
     _stop_unless_proved(record)
 
 
@@ -202,6 +203,20 @@ def compare(
         _print_json(comparison.comparison_record(found))
     else:
         comparison_page.print_comparison(found, Console())
+
+
+def _say_gaps(record: dict[str, Any]) -> None:
+    """Say which windows the time limit ended before their gap, and the gap they reached."""
+    seconds = record["settings"]["commitment"]["seconds"]
+    asked = record["settings"]["commitment"]["mip_gap"]
+    for window in record["windows"]:
+        if window["time_limit"]:
+            typer.echo(
+                f"warning: window {window['window']} from {window['from']} stopped after {seconds:g} s with "
+                f"its best plan, gap {window['gap']:.2%}, asked for {asked:.2%}; "
+                "raise commitment.seconds or commitment.mip_gap in case.toml",
+                err=True,
+            )
 
 
 def _stop_unless_proved(record: dict[str, Any]) -> None:

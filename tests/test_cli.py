@@ -1,5 +1,6 @@
 """The command line as a user meets it: exit codes, what goes to which stream, what is left behind."""
 
+import dataclasses
 import json
 import re
 import signal
@@ -15,6 +16,8 @@ from typer.testing import CliRunner, Result
 import simulator.audit
 import simulator.horizon
 from simulator.cli import app
+from simulator.dispatch import search
+from simulator.dispatch.solver import SolverError
 from simulator.errors import SolveError
 from tests.support import write_case
 
@@ -223,6 +226,38 @@ def test_geojson_of_a_case_without_positions_is_refused(tmp_path):
     said = refused("export", tmp_path / "run", tmp_path / "map", "--to", "geojson")
     assert 'found none for "Northfen", "Midfen", "Southfen", give them' in said
     assert not (tmp_path / "map").exists()
+
+
+def test_no_plan_in_time_ends_with_what_stopped_it_and_leaves_nothing(case, tmp_path, monkeypatch):
+    """HiGHS finds some plan of a small case in any time, so that its having none is played."""
+
+    def none_found(self, gap, start, seconds):
+        raise SolverError("time limit")
+
+    monkeypatch.setattr(search.Search, "_run", none_found)
+    result = call("week", case, "--hours", 24, "--commitment", "optimal", "--out", tmp_path / "out")
+    assert result.exit_code == 3
+    assert "window 0" in result.stderr
+    assert "time limit" in result.stderr
+    assert not (tmp_path / "out").exists()
+
+
+def test_a_window_that_ran_out_of_time_is_named_with_its_gap(case, tmp_path, monkeypatch):
+    """The clock of the search says the time is over as soon as it has a plan."""
+    searched, clock = search.Search._run, iter(range(0, 10**6, 1000))
+
+    def poor_bound(self, gap, start, seconds):
+        plan = searched(self, gap, start, seconds)
+        return dataclasses.replace(plan, bound=-1e12)
+
+    monkeypatch.setattr(search.Search, "_run", poor_bound)
+    monkeypatch.setattr(search.time, "perf_counter", lambda: float(next(clock)))
+    result = done("week", case, "--hours", 24, "--commitment", "optimal", "--out", tmp_path / "run")
+    assert "window 0 from 2027-01-11T00:00:00+00:00 stopped after 120 s" in result.stderr
+    assert "asked for 0.01%" in result.stderr
+    record = json.loads((tmp_path / "run" / "run.json").read_text())
+    assert record["windows"][0]["time_limit"] is True
+    assert 0 < record["windows"][0]["gap"] < 1
 
 
 def test_names_that_look_like_formulas_stay_text_from_case_to_export(case, tmp_path):
