@@ -54,6 +54,28 @@ losses = false
 carbon_price_per_t = 10.0
 """
 
+NETWORK_LIMITS = {
+    "network/corridors.csv": """\
+corridor,forward_mw,reverse_mw,limit_profile
+south,130,,warmth
+ring,,90,
+""",
+    "network/corridor_lines.csv": """\
+corridor,line,weight
+south,N-M,
+south,N-S,1
+ring,M-S,0.5
+ring,N-S,-0.5
+""",
+    "network/contingencies.csv": """\
+contingency,line
+gale,N-M
+gale,M-S
+N-S,N-S
+""",
+}
+"""Files of corridors and contingencies that can be added to the small case."""
+
 _TABLES = {
     "network/buses.csv": """\
 bus,zone,voltage_kv,latitude,longitude

@@ -24,6 +24,9 @@ def resolved(
     tables = {name: frames[name] for name in ("buses", "fuels", "renewables")}
     tables["lines"] = _lines(frames["lines"])
     tables["dc_ties"] = _filled(frames["dc_ties"], reverse_mw="forward_mw")
+    tables["corridors"] = _filled(frames["corridors"], forward_mw=np.inf, reverse_mw=np.inf)
+    for name in ("corridor_lines", "contingencies"):
+        tables[name] = sheets[name].frame.copy()
     tables["units"] = _units(frames["units"], time.period_hours)
     tables["storage"] = _storage(frames["storage"])
     tables["loads"] = _filled(frames["loads"], unserved_per_mwh=settings.penalties.unserved)

@@ -16,13 +16,10 @@ __all__ = ["FOLDERS", "SETTINGS", "Folder", "look_into", "rank", "read_bytes"]
 SETTINGS = "case.toml"
 FOLDERS = ("network", "fleet", "demand", "calendar", "hourly")
 UNREAD = {
-    "network/corridors.csv": "limits on sums of flows",
-    "network/corridor_lines.csv": "limits on sums of flows",
     "fleet/reserves.csv": "reserves",
 }
 """Files of the format that this version does not read, and what its results would lack."""
-UNUSED = "network/contingencies.csv"
-_PATHS = (SETTINGS, *(table.path for table in TABLES), *UNREAD, UNUSED)
+_PATHS = (SETTINGS, *(table.path for table in TABLES), *UNREAD)
 _PLAIN_SUFFIXES = {".md", ".txt", ".py"}
 _PLAIN_STEMS = {"license", "licence", "notice", "copying", "readme", "authors"}
 # A script in the folder leaves __pycache__, a run started in it leaves outputs.
@@ -36,7 +33,6 @@ class Folder:
     files: frozenset[str] = frozenset()
     hourly: tuple[str, ...] = ()
     problems: tuple[Problem, ...] = ()
-    warnings: tuple[Problem, ...] = ()
 
 
 def rank(problem: Problem) -> tuple[int, int, str, int]:
@@ -105,7 +101,6 @@ def _sorted_out(present: dict[str, Path]) -> Folder:
         files=files & known,
         hourly=tuple(path for path in hourly if path in files),
         problems=tuple(problems),
-        warnings=(_unused(),) if UNUSED in known else (),
     )
 
 
@@ -142,8 +137,3 @@ def _missing(known: set[str], hourly: tuple[str, ...]) -> Iterator[Problem]:
 def _unread(path: str) -> Problem:
     rule = f"must not be there: this version leaves out {UNREAD[path]}, its numbers would be wrong"
     return file_problem(path, rule, "the file", "remove it if results may do without")
-
-
-def _unused() -> Problem:
-    rule = "is not used by this version: lines are limited only as they are, with nothing lost"
-    return file_problem(UNUSED, rule, "the file", "nothing to do if that is enough")

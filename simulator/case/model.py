@@ -20,8 +20,8 @@ from simulator.errors import Problem
 __all__ = ["TABLES", "Case", "TimeAxis"]
 
 TABLES = (
-    "buses", "lines", "dc_ties", "units", "blocks", "fuels", "renewables", "storage", "loads",
-    "outages",
+    "buses", "lines", "dc_ties", "corridors", "corridor_lines", "contingencies", "units", "blocks",
+    "fuels", "renewables", "storage", "loads", "outages",
 )  # fmt: skip
 """The tables a `Case` holds, each under the attribute of that name."""
 
@@ -37,6 +37,9 @@ class Case:
     buses : index `bus`; columns zone, voltage_kv, latitude, longitude (NaN where blank)
     lines : index `line`; columns of lines.csv
     dc_ties : index `tie`; columns of dc_ties.csv
+    corridors : index `corridor`; columns forward_mw, reverse_mw, limit_profile
+    corridor_lines : columns corridor, line, weight
+    contingencies : columns contingency, line; empty where the case leaves them to the default
     units : index `unit`; columns of units.csv
     blocks : one row a cost block, units in table order, blocks rising; columns unit, from_mw,
         up_to_mw (MW), cost_per_mwh (all that does not follow a fuel price: the offer, or operation
@@ -78,6 +81,21 @@ class Case:
     def dc_ties(self) -> pd.DataFrame:
         """Controllable links, one a row."""
         return self._table("dc_ties")
+
+    @property
+    def corridors(self) -> pd.DataFrame:
+        """Limits on sums of flows, one a row."""
+        return self._table("corridors")
+
+    @property
+    def corridor_lines(self) -> pd.DataFrame:
+        """The lines of each corridor, with their weights."""
+        return self._table("corridor_lines")
+
+    @property
+    def contingencies(self) -> pd.DataFrame:
+        """Lines that may be lost, those of one name together."""
+        return self._table("contingencies")
 
     @property
     def units(self) -> pd.DataFrame:

@@ -45,6 +45,7 @@ def _negative(values: Floats) -> Booleans:
 
 ROLES = (
     Role("lines", "rating_profile", "must be at least 0", _negative),
+    Role("corridors", "limit_profile", "must be at least 0", _negative),
     Role("units", "on_profile", "must be 0 or 1", _between_two),
     Role("fuels", "price_profile", "must be at least 0", _negative),
     Role("renewables", "profile", "must be from 0 to 1", _outside_one),

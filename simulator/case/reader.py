@@ -39,18 +39,16 @@ def read_case(folder: Path | str) -> Case:
         # Both are there when nothing is wrong; that is asked again for the type checker.
         settings, time = declaration.settings, declaration.time
         if not problems and settings is not None and time is not None:
-            return _built(declaration, settings, time, listing.warnings)
+            return _built(declaration, settings, time)
     raise CaseError(sorted(problems, key=rank))
 
 
-def _built(
-    declaration: Declaration, settings: Settings, time: TimeAxis, warnings: Sequence[Problem]
-) -> Case:
+def _built(declaration: Declaration, settings: Settings, time: TimeAxis) -> Case:
     """Return the case of a faultless declaration."""
     whole = [file.values.set_axis(file.instants) for file in declaration.files]
     profiles = side_by_side([values.loc[time.periods] for values in whole])
     tables = resolved(settings, time, declaration.sheets)
-    found = (*warnings, *oddities(declaration))
+    found = tuple(oddities(declaration))
     return Case(settings, time, profiles, tables, dict(declaration.sheets), found)
 
 

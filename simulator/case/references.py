@@ -1,6 +1,6 @@
 """Names across tables: each one once, and each reference to a name that exists.
 
-Public names: `dangling`, `repeated`.
+Public names: `dangling`, `repeated`, `repeated_pairs`.
 """
 
 from collections.abc import Iterator
@@ -17,13 +17,16 @@ from simulator.case.sheet import Sheet
 from simulator.case.wording import did_you_mean, listed, quoted
 from simulator.errors import Problem
 
-__all__ = ["dangling", "repeated"]
+__all__ = ["dangling", "repeated", "repeated_pairs"]
 
 REFERENCES = (
     ("lines", "from_bus", "buses"),
     ("lines", "to_bus", "buses"),
     ("dc_ties", "from_bus", "buses"),
     ("dc_ties", "to_bus", "buses"),
+    ("corridor_lines", "corridor", "corridors"),
+    ("corridor_lines", "line", "lines"),
+    ("contingencies", "line", "lines"),
     ("units", "bus", "buses"),
     ("units", "fuel", "fuels"),
     ("offers", "unit", "units"),
@@ -35,6 +38,7 @@ REFERENCES = (
 """Table and column of each reference, and the table it points into."""
 PROFILED = (
     ("lines", "rating_profile"),
+    ("corridors", "limit_profile"),
     ("units", "on_profile"),
     ("fuels", "price_profile"),
     ("renewables", "profile"),
@@ -52,6 +56,16 @@ def repeated(declaration: Declaration) -> Iterator[Problem]:
     for table in TABLES:
         if table.unique:
             yield from _repeated(declaration.sheets[table.name])
+
+
+def repeated_pairs(declaration: Declaration) -> Iterator[Problem]:
+    """Yield a problem for each row that puts a line into a group once more."""
+    for name, noun in (("corridor_lines", "corridor"), ("contingencies", "contingency")):
+        sheet = declaration.sheets[name]
+        pairs = sheet.frame[[sheet.table.key, "line"]]
+        again = pairs.duplicated() & (pairs != "").all(axis=1)
+        words = f"must be in its {noun} once", "remove the row"
+        yield from sheet.problems(again, "line", words)
 
 
 def _repeated(sheet: Sheet) -> Iterator[Problem]:

@@ -14,7 +14,7 @@ from simulator.case.curves import curve_problems
 from simulator.case.declaration import Declaration
 from simulator.case.folder import SETTINGS
 from simulator.case.profiles import profile_problems
-from simulator.case.references import dangling, repeated
+from simulator.case.references import dangling, repeated, repeated_pairs
 from simulator.case.sheet import Sheet
 from simulator.case.wording import file_problem, number, quoted
 from simulator.errors import Problem
@@ -30,12 +30,15 @@ def broken_rules(declaration: Declaration) -> list[Problem]:
     return [
         *_no_bus(declaration),
         *repeated(declaration),
+        *repeated_pairs(declaration),
         *dangling(declaration),
         *curve_problems(declaration),
         *profile_problems(declaration),
         *_outage_times(declaration),
         *_horizon(declaration),
         *_initial_hours(declaration),
+        *_empty_corridors(declaration),
+        *_lossy_gains(declaration),
     ]
 
 
@@ -108,6 +111,22 @@ def _initial_hours(declaration: Declaration) -> Iterator[Problem]:
     periods = units["initial_hours"] / length
     words = f"must be a whole number of periods of {number(length)} h", "round it to periods"
     yield from units.problems((periods - periods.round()).abs() > WHOLE, "initial_hours", words)
+
+
+def _empty_corridors(declaration: Declaration) -> Iterator[Problem]:
+    corridors, members = (declaration.sheets[name] for name in ("corridors", "corridor_lines"))
+    if members.whole:
+        empty = ~corridors["corridor"].isin(members["corridor"]) & (corridors["corridor"] != "")
+        words = f"must have a line in {members.table.path}", "add its lines or remove it"
+        yield from corridors.problems(empty, "corridor", words, lambda _: "none")
+
+
+def _lossy_gains(declaration: Declaration) -> Iterator[Problem]:
+    """Yield lines that would give power where losses are modelled."""
+    if declaration.settings is not None and declaration.settings.network.losses:
+        lines = declaration.sheets["lines"]
+        words = "must be at least 0 where network.losses is true", "write 0, or do without losses"
+        yield from lines.problems(lines["resistance_pu"] < 0, "resistance_pu", words)
 
 
 def _negative_reactance(declaration: Declaration) -> Iterator[Problem]:

@@ -166,6 +166,9 @@ REACTANCE = Rule(
     "write the series reactance in per unit",
     lambda values: values != 0,
 )
+SOME = Rule(
+    "must not be 0", "leave the line out of the corridor instead", lambda values: values != 0
+)
 HOURS_IN_STATE = Rule(
     "must not be 0",
     "write hours on as a positive, hours off as a negative number, or leave it blank",
@@ -300,6 +303,23 @@ DC_TIES = Table(
     ),
     (APART,),
 )  # fmt: skip
+CORRIDORS = Table(
+    "corridors", "network/corridors.csv", "corridor", "corridor",
+    (
+        _name("corridor"), _number("forward_mw", NOT_NEGATIVE), _number("reverse_mw", NOT_NEGATIVE),
+        _optional_text("limit_profile"),
+    ),
+)  # fmt: skip
+CORRIDOR_LINES = Table(
+    "corridor_lines", "network/corridor_lines.csv", "corridor", "corridor",
+    (_text("corridor"), _text("line"), _number("weight", SOME, default=1.0)),
+    unique=False,
+)  # fmt: skip
+CONTINGENCIES = Table(
+    "contingencies", "network/contingencies.csv", "contingency", "contingency",
+    (_name("contingency"), _text("line")),
+    unique=False,
+)  # fmt: skip
 UNITS = Table(
     "units", "fleet/units.csv", "unit", "unit",
     (
@@ -382,6 +402,7 @@ OUTAGES = Table(
     unique=False,
 )  # fmt: skip
 TABLES = (
-    BUSES, LINES, DC_TIES, UNITS, OFFERS, HEAT_RATES, FUELS, RENEWABLES, STORAGE, LOADS, OUTAGES,
+    BUSES, LINES, DC_TIES, CORRIDORS, CORRIDOR_LINES, CONTINGENCIES,
+    UNITS, OFFERS, HEAT_RATES, FUELS, RENEWABLES, STORAGE, LOADS, OUTAGES,
 )  # fmt: skip
 """The tables that are read, in the order in which their problems are told."""

@@ -1,7 +1,7 @@
 """Hourly arrays of a case over a span of periods: what is demanded, available, in service, and at what cost.
 
-Public names: `available_share`, `block_cost`, `block_emissions`, `in_service`, `line_rating`, `load_demand`,
-`profile_values`, `renewable_available`, `sum_by`, `unit_schedule`.
+Public names: `available_share`, `block_cost`, `block_emissions`, `corridor_limit`, `in_service`,
+`line_rating`, `load_demand`, `profile_values`, `renewable_available`, `sum_by`, `unit_schedule`.
 
 Every function takes the case and a span (slice of positions on the case's time axis) and returns an
 array (period, element) with elements in table order.
@@ -18,6 +18,7 @@ __all__ = [
     "available_share",
     "block_cost",
     "block_emissions",
+    "corridor_limit",
     "in_service",
     "line_rating",
     "load_demand",
@@ -84,11 +85,20 @@ def in_service(case: Case, span: slice) -> Booleans:
 def line_rating(case: Case, span: slice, column: str = "rating_mw") -> Floats:
     """Return line ratings, MW, times their hourly multiplier; inf where unlimited."""
     lines = case.lines
-    rating = lines[column].to_numpy(float)
-    multiplier = profile_values(case, lines["rating_profile"], span)
-    return multiplier * np.where(np.isfinite(rating), rating, 0.0) + np.where(
-        np.isfinite(rating), 0.0, np.inf
-    )
+    return _multiplied(lines[column], profile_values(case, lines["rating_profile"], span))
+
+
+def corridor_limit(case: Case, span: slice, column: str) -> Floats:
+    """Return `forward_mw` or `reverse_mw` of corridors, MW, times its multiplier; inf where unlimited."""
+    corridors = case.corridors
+    return _multiplied(corridors[column], profile_values(case, corridors["limit_profile"], span))
+
+
+def _multiplied(limit: pd.Series, multiplier: Floats) -> Floats:
+    """Return limits times their hourly multipliers; what is unlimited stays so, even times 0."""
+    limits = limit.to_numpy(float)
+    limited = np.isfinite(limits)
+    return multiplier * np.where(limited, limits, 0.0) + np.where(limited, 0.0, np.inf)
 
 
 def block_cost(case: Case, span: slice) -> Floats:

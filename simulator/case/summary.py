@@ -44,7 +44,13 @@ def _moment(time: pd.Timestamp) -> str:
 
 
 def _network(case: "Case") -> str:
-    return f"{len(case.buses)} buses, {len(case.lines)} lines, {len(case.dc_ties)} DC ties"
+    counts = {
+        "buses": len(case.buses), "lines": len(case.lines), "DC ties": len(case.dc_ties),
+        "corridors": len(case.corridors),
+        "contingencies": case.contingencies["contingency"].nunique(),
+    }  # fmt: skip
+    always = ("buses", "lines", "DC ties")
+    return ", ".join(f"{size} {noun}" for noun, size in counts.items() if size or noun in always)
 
 
 def _fleet(table: pd.DataFrame, column: str) -> str:

@@ -5,7 +5,7 @@ import pandas as pd
 import pytest
 
 from simulator.case import model, read_case
-from tests.support import case_texts, small_case, write_case
+from tests.support import NETWORK_LIMITS, case_texts, small_case, write_case
 
 BARE = {
     "case.toml": 'format = 1\nname = "bare"\npenalties.unserved = 7000\nemissions.carbon_price_per_t = 20\n',
@@ -69,7 +69,8 @@ def test_tables_are_indexed_by_name(bare):
         name: frame.index.name for name, frame in ((n, getattr(bare, n)) for n in model.TABLES)
     }
     assert names == {
-        "buses": "bus", "lines": "line", "dc_ties": "tie", "units": "unit", "blocks": None, "fuels": "fuel",
+        "buses": "bus", "lines": "line", "dc_ties": "tie", "corridors": "corridor",
+        "corridor_lines": None, "contingencies": None, "units": "unit", "blocks": None, "fuels": "fuel",
         "renewables": "plant", "storage": "store", "loads": "load", "outages": None,
     }  # fmt: skip
 
@@ -131,7 +132,7 @@ def test_profiles_stand_on_the_time_axis(tmp_path):
 
 
 def test_changing_a_frame_never_changes_the_case(tmp_path):
-    case = small_case(tmp_path)
+    case = small_case(tmp_path, NETWORK_LIMITS)
     for name in model.TABLES:
         frame, before = getattr(case, name), getattr(case, name).copy(deep=True)
         frame.iloc[0, 0] = "changed" if isinstance(frame.iloc[0, 0], str) else 99

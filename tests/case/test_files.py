@@ -219,8 +219,6 @@ def test_plain_text_scripts_and_hidden_files_are_let_be(tmp_path):
 
 
 UNREAD = {
-    "network/corridors.csv": "limits on sums of flows",
-    "network/corridor_lines.csv": "limits on sums of flows",
     "fleet/reserves.csv": "reserves",
 }
 
@@ -230,12 +228,6 @@ def test_a_file_that_this_version_does_not_read_is_refused(tmp_path, path):
     (problem,) = problems_of(write_case(tmp_path, {path: "x\n"}))
     assert problem.path == path
     assert f"leaves out {UNREAD[path]}, its numbers would be wrong" in problem.rule
-
-
-def test_contingencies_are_only_warned_of(tmp_path):
-    case = read_case(write_case(tmp_path, {"network/contingencies.csv": "contingency,line\n"}))
-    assert [w.path for w in case.warnings] == ["network/contingencies.csv"]
-    assert "is not used by this version" in case.warnings[0].rule
 
 
 def test_a_file_that_cannot_be_read_is_told(tmp_path, monkeypatch):

@@ -3,11 +3,13 @@
 import pytest
 
 from simulator.case.schema import TABLES
-from tests.support import case_texts, problems_of, write_case
+from tests.support import NETWORK_LIMITS, case_texts, problems_of, write_case
 
 BUSES, LINES, TIES = "network/buses.csv", "network/lines.csv", "network/dc_ties.csv"
 UNITS, OFFERS, HEAT_RATES = "fleet/units.csv", "fleet/offers.csv", "fleet/heat_rates.csv"
 FUELS, PLANTS, STORES = "fleet/fuels.csv", "fleet/renewables.csv", "fleet/storage.csv"
+CORRIDORS, MEMBERS = "network/corridors.csv", "network/corridor_lines.csv"
+CONTINGENCIES = "network/contingencies.csv"
 LOADS, OUTAGES = "demand/loads.csv", "calendar/outages.csv"
 
 NUMBER = "must be a number"
@@ -44,6 +46,18 @@ VALUES = [
     (TIES, 2, "forward_mw", "-20", 'tie "cable"', SIGN),
     (TIES, 2, "reverse_mw", "-1", 'tie "cable"', SIGN),
     (TIES, 2, "loss_percent", "100", 'tie "cable"', "less than 100"),
+    (CORRIDORS, 2, "forward_mw", "-1", 'corridor "south"', SIGN),
+    (CORRIDORS, 3, "reverse_mw", "-1", 'corridor "ring"', SIGN),
+    (CORRIDORS, 2, "limit_profile", "warmht", 'corridor "south"', 'did you mean "warmth"?'),
+    (MEMBERS, 2, "corridor", "", "the corridor in this row", "must be filled in"),
+    (MEMBERS, 3, "line", "N-X", 'corridor "south"', 'did you mean'),
+    (MEMBERS, 3, "line", "N-M", 'corridor "south"', "must be in its corridor once"),
+    (MEMBERS, 5, "corridor", "rang", 'corridor "rang"', 'did you mean "ring"?'),
+    (MEMBERS, 2, "weight", "0", 'corridor "south"', "must not be 0"),
+    (CONTINGENCIES, 4, "contingency", " N-S", 'contingency " N-S"', "no blank at either end"),
+    (CONTINGENCIES, 4, "line", "", 'contingency "N-S"', "must be filled in"),
+    (CONTINGENCIES, 2, "line", "M-M", 'contingency "gale"', 'did you mean'),
+    (CONTINGENCIES, 3, "line", "N-M", 'contingency "gale"', "must be in its contingency once"),
     (UNITS, 2, "bus", "Norhtfen", 'unit "peat 1"', 'did you mean "Northfen"?'),
     (UNITS, 3, "fuel", "gass", 'unit "gas 1"', 'did you mean "gas"?'),
     (UNITS, 3, "technology", "ccgt ", 'unit "gas 1"', "no blank at either end"),
@@ -107,14 +121,15 @@ VALUES = [
 
 @pytest.mark.parametrize(("path", "row", "column", "value", "subject", "words"), VALUES)
 def test_one_broken_cell_is_one_problem(tmp_path, path, row, column, value, subject, words):
-    folder = write_case(tmp_path, cells={(path, row, column): value})
-    problems = problems_of(folder)
+    files = NETWORK_LIMITS if path in NETWORK_LIMITS else {}
+    problems = problems_of(write_case(tmp_path, files, {(path, row, column): value}))
     assert [(p.path, p.row, p.column) for p in problems] == [(path, row, column)]
     assert subject in problems[0].subject
     assert words in str(problems[0])
 
 
 KEYS = [
+    (CORRIDORS, "corridor"),
     (BUSES, "bus"), (LINES, "line"), (TIES, "tie"), (UNITS, "unit"), (FUELS, "fuel"),
     (PLANTS, "plant"), (STORES, "store"), (LOADS, "load"),
 ]  # fmt: skip
@@ -122,11 +137,12 @@ KEYS = [
 
 @pytest.mark.parametrize(("path", "column"), KEYS)
 def test_a_name_that_breaks_the_rules_of_names_is_told(tmp_path, path, column):
-    text = case_texts()[path]
+    files = case_texts() | NETWORK_LIMITS
+    text = files[path]
     rows = len(text.splitlines())
     last = text.splitlines()[-1].split(",")
     last[0] = f"{last[0]} "
-    problems = problems_of(write_case(tmp_path, {path: f"{text}{','.join(last)}\n"}))
+    problems = problems_of(write_case(tmp_path, files | {path: f"{text}{','.join(last)}\n"}))
     told = [p for p in problems if "no blank at either end" in p.rule]
     assert [(p.path, p.row, p.column) for p in told] == [(path, rows + 1, column)]
 
@@ -152,11 +168,14 @@ def test_what_the_format_allows_is_read(tmp_path, path, row, column, value):
     assert problems_of(write_case(tmp_path, cells={(path, row, column): value})) == ()
 
 
-@pytest.mark.parametrize("path", [BUSES, LINES, TIES, UNITS, FUELS, PLANTS, STORES, LOADS])
+@pytest.mark.parametrize(
+    "path", [BUSES, LINES, TIES, CORRIDORS, UNITS, FUELS, PLANTS, STORES, LOADS]
+)
 def test_a_repeated_name_names_both_rows(tmp_path, path):
-    text = case_texts()[path]
+    files = case_texts() | NETWORK_LIMITS
+    text = files[path]
     first, last = text.splitlines()[1], len(text.splitlines()) + 1
-    (problem,) = problems_of(write_case(tmp_path, {path: f"{text}{first}\n"}))
+    (problem,) = problems_of(write_case(tmp_path, files | {path: f"{text}{first}\n"}))
     assert (problem.path, problem.row) == (path, last)
     assert "must be the only" in problem.rule
     assert problem.found == f"row 2, row {last}"
