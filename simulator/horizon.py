@@ -15,6 +15,7 @@ from simulator.case import Case
 from simulator.dispatch import RunInputs, State, WindowInputs, WindowModel, WindowSolution
 from simulator.dispatch.counts import Counts
 from simulator.dispatch.inputs import run_inputs
+from simulator.dispatch.limit_rows import Pairs
 from simulator.dispatch.start import Start
 from simulator.dispatch.state import initial_state
 from simulator.dispatch.window import WindowError, shape_of
@@ -27,7 +28,7 @@ Models = dict[tuple[object, ...], WindowModel]
 Progress = Callable[[int, int], None]
 
 MODES = ("given", "relaxed", "optimal")
-LIMITS = ("none", "lines")
+LIMITS = ("none", "lines", "secure")
 PRICING = ("fixed", "relaxed")
 _ROUNDING = 1e-9
 WEEK = 168.0
@@ -221,7 +222,7 @@ def run(
         same window left there. What comes out depends on that run, not on what its model did since.
     Raises `SolveError` with the window, the solver's status and the elements that contradict.
     """
-    inputs = run_inputs(case, plan.span, plan.periods, plan.mode, limited=plan.limits != "none")
+    inputs = run_inputs(case, plan.span, plan.periods, plan.mode, plan.limits)
     if like is None:
         return _rolled(case, plan, inputs, {}, (), progress)
     return _rolled(case, plan, inputs, dict(like.models), like.starts, progress)
@@ -232,7 +233,7 @@ def without_limits(limited: Run, progress: Progress | None = None) -> Run:
     plan = replace(limited.plan, limits="none")
     whole = replace(limited.inputs.whole, limited=False)
     inputs = replace(limited.inputs, whole=whole)
-    starts = tuple(start.without_lines() for start in limited.starts)
+    starts = tuple(start.without_limits() for start in limited.starts)
     return _rolled(limited.case, plan, inputs, dict(limited.models), starts, progress)
 
 
@@ -300,7 +301,6 @@ _ELEMENT = {
     "store": ("store_balance", "energy_floor", "charge", "discharge", "stored"),
     "tie": ("tie_forward", "tie_reverse"),
     "load": ("unserved",),
-    "line": ("line",),
 }  # fmt: skip
 
 
@@ -309,7 +309,10 @@ def _described(case: Case, first: int, family: str, period: int, element: int) -
     hour = case.time.local[first + period].isoformat(timespec="minutes")
     rule = family.replace("_", " ")
     tables = {"unit": case.units, "plant": case.renewables, "store": case.storage,
-              "tie": case.dc_ties, "load": case.loads, "line": case.lines}  # fmt: skip
+              "tie": case.dc_ties, "load": case.loads}  # fmt: skip
+    if family == "limit":
+        lines, names = len(case.lines), [*case.lines.index, *case.corridors.index]
+        return f'{"line" if element < lines else "corridor"} "{names[element]}" (limit) at {hour}'
     for kind, families in _ELEMENT.items():
         if family in families:
             return f'{kind} "{tables[kind].index[element]}" ({rule}) at {hour}'
@@ -323,10 +326,21 @@ def _joined(solved: list[tuple[int, WindowSolution]]) -> WindowSolution:
             [getattr(solution, item.name)[:kept] for kept, solution in solved]
         )
         for item in fields(WindowSolution)
-        if item.name not in ("objective", "left")
+        if item.name not in ("objective", "left", *_PAIRS)
     }
+    for name in _PAIRS:
+        values[name] = _joined_pairs([(kept, getattr(solution, name)) for kept, solution in solved])
     objective = sum(solution.objective for _, solution in solved)
     return WindowSolution(**values, objective=objective, left=solved[-1][1].left)
+
+
+_PAIRS = ("pairs", "relaxed_pairs")
+
+
+def _joined_pairs(solved: list[tuple[int, Pairs]]) -> Pairs:
+    begins = np.cumsum([0, *(kept for kept, _ in solved)])
+    parts = zip(begins[:-1].tolist(), solved, strict=True)
+    return Pairs.joined([pairs.between(0, kept, first) for first, (kept, pairs) in parts])
 
 
 def _window_numbers(solved: list[tuple[int, WindowSolution]]) -> Integers:

@@ -175,7 +175,7 @@ def _powers(run: Run) -> dict[str, Floats]:
         "surplus": kept.surplus,
         "tie_flow": kept.tie_forward - kept.tie_reverse,
         "line_flow": kept.flow,
-        "line_rating": inputs.rating,
+        "line_rating": inputs.limits.rating,
     }
 
 
@@ -253,7 +253,7 @@ def _along_curve(run: Run) -> Floats:
 def _summaries(run: Run) -> dict[str, Any]:
     kept, inputs = run.kept, run.kept_inputs
     length = inputs.period_hours
-    at_limit = np.abs(kept.flow) >= inputs.rating - AT_LIMIT
+    at_limit = np.abs(kept.flow) >= inputs.limits.rating - AT_LIMIT
     return {
         "congestion_hours": (np.abs(_priced(run)[1]) > PRICED).sum(axis=0) * length,
         "hours_at_limit": at_limit.sum(axis=0) * length,
@@ -292,7 +292,7 @@ def run_record(
         "totals": _totals(dataset) | _congestion_cost(dataset, unlimited),
         "counts": {
             "windows": int(run.window[-1]) + 1, "lp_solves": counts.lp_solves,
-            "mip_solves": counts.mip_solves, "line_rows": counts.line_rows,
+            "mip_solves": counts.mip_solves, "line_rows": counts.limit_rows,
             "rebuilds": max(counts.builds - 1, 0), "simplex_iterations": counts.iterations,
         },
         "windows": [_window_record(run, record) for record in counts.windows],

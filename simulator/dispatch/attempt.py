@@ -10,7 +10,6 @@ from numpy.typing import NDArray
 
 from simulator.dispatch.fleet import FleetData
 from simulator.dispatch.inputs import WindowInputs
-from simulator.dispatch.limits import FLOW_TOLERANCE
 from simulator.dispatch.ties import TieDirections
 
 __all__ = ["Attempt"]
@@ -36,8 +35,3 @@ class Attempt:
         self.data = data
         self.ties = TieDirections(inputs, columns)
         self.fixed = inputs.topology.flows(-inputs.demand_at_bus)
-
-    def beyond(self, inputs: WindowInputs) -> NDArray[np.bool_]:
-        """Tell where a flow is beyond its rating, array (period, line)."""
-        over: NDArray[np.bool_] = np.abs(self.flow) > inputs.rating + FLOW_TOLERANCE
-        return over

@@ -23,11 +23,11 @@ class WindowRecord:
 
 @dataclass
 class Counts:
-    """Solves, line rows added, models built, seconds by stage, and a record a window."""
+    """Solves, rows of limits added, models built, seconds by stage, and a record a window."""
 
     lp_solves: int = 0
     mip_solves: int = 0
-    line_rows: int = 0
+    limit_rows: int = 0
     builds: int = 0
     iterations: int = 0
     windows: list[WindowRecord] = field(default_factory=list)

@@ -11,10 +11,12 @@ from typing import Any
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
+from scipy import sparse
 
 from simulator.case import Case, series
+from simulator.dispatch.limits import NetworkLimits
 from simulator.dispatch.reach import reachable_ceiling, reachable_floor, reachable_minimum
-from simulator.grid import Cells, Network, TopologySchedule, common_cells
+from simulator.grid import Cells, Contingencies, Network, TopologySchedule, common_cells
 
 __all__ = ["RunInputs", "StoreData", "UnitData", "WindowInputs", "run_inputs"]
 
@@ -91,7 +93,7 @@ class WindowInputs:
 
     number : the window's place in the run, from 0; first : its first period, counted from the run's
     gap, seconds : when the search for on/off decisions may stop (mode `optimal`)
-    mode : commitment mode; limited : whether line limits hold
+    mode : commitment mode; limited : whether network limits hold
     unit_min, unit_available : arrays (period, unit), MW; minimum output is never above what is available
     unit_out : fully out; unit_falling : available output falls from the period before
     unit_out_before : array (lag, unit), the same before the window, most recent first
@@ -110,7 +112,8 @@ class WindowInputs:
     tie_lossy : positions of the ties that lose something; tie_widest : array (direction, tie), MW, the
         most either way with nothing out
     demand (period, load); unserved_cost (load,); surplus_cost, short_cost : currency/MWh
-    rating (period, line), MW; topology : which topology holds when; joined (period, pair)
+    limits : what lines and corridors may carry; topology : which topology holds when
+    joined (period, pair)
     """
 
     number: int
@@ -156,7 +159,7 @@ class WindowInputs:
     demand: Floats
     surplus_cost: float
     short_cost: float
-    rating: Floats
+    limits: NetworkLimits
     topology: TopologySchedule
     cells: Cells
     joined: Booleans
@@ -177,7 +180,7 @@ _BY_PERIOD = (
     "unit_min", "unit_available", "unit_out", "unit_falling", "unit_given", "unit_ceiling",
     "minimum_cost", "minimum_emissions", "block_width", "block_cost",
     "block_not_at_start", "block_not_at_stop", "renewable_available",
-    "store_share", "store_floor", "tie_forward", "tie_reverse", "demand", "rating", "topology", "joined",
+    "store_share", "store_floor", "tie_forward", "tie_reverse", "demand", "limits", "topology", "joined",
 )  # fmt: skip
 
 
@@ -206,21 +209,39 @@ class RunInputs:
         )
 
 
-def run_inputs(case: Case, span: slice, run_periods: int, mode: str, *, limited: bool) -> RunInputs:
-    """Make the arrays of a run over `span`, of which the first `run_periods` are kept."""
+def run_inputs(case: Case, span: slice, run_periods: int, mode: str, limits: str) -> RunInputs:
+    """Make the arrays of a run over `span`, of which the first `run_periods` are kept.
+
+    limits : none, lines or secure
+    """
     network = Network.of(case)
     topology = network.schedule(series.in_service(case, span))
     cells = common_cells(topology.topologies)
     whole = WindowInputs(
         number=0, first=0, mode=mode, gap=case.settings.commitment.mip_gap,
-        seconds=case.settings.commitment.seconds, limited=limited, period_hours=case.time.period_hours,
+        seconds=case.settings.commitment.seconds, limited=limits != "none", period_hours=case.time.period_hours,
         surplus_cost=case.settings.penalties.surplus, short_cost=_short_cost(case),
-        rating=series.line_rating(case, span), topology=topology, cells=cells,
+        limits=_limits(case, span, network, secure=limits == "secure"), topology=topology, cells=cells,
         joined=cells.joined[topology.index], buses=len(case.buses), ends_run=True,
         **_unit_inputs(case, span), **_renewable_inputs(case, span),
         **_store_inputs(case, span, run_periods), **_tie_inputs(case, span), **_load_inputs(case, span),
     )  # fmt: skip
     return RunInputs(whole, run_periods)
+
+
+def _limits(case: Case, span: slice, network: Network, *, secure: bool) -> NetworkLimits:
+    members, names = case.corridor_lines, case.corridors.index
+    corridor = names.get_indexer(pd.Index(members["corridor"]))
+    line = case.lines.index.get_indexer(pd.Index(members["line"]))
+    shape = (len(names), len(case.lines))
+    return NetworkLimits(
+        rating=series.line_rating(case, span),
+        emergency=series.line_rating(case, span, "emergency_rating_mw"),
+        weight=sparse.csr_array((members["weight"].to_numpy(float), (corridor, line)), shape=shape),
+        forward=series.corridor_limit(case, span, "forward_mw"),
+        reverse=series.corridor_limit(case, span, "reverse_mw"),
+        contingencies=Contingencies.of(case, network) if secure else Contingencies.none(),
+    )
 
 
 _UNIT_NUMBERS = (

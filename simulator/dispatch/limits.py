@@ -1,218 +1,185 @@
-"""Line limits on demand (formulation.md 2.6 and 3): the rows, when they are added, and when they go.
+"""What the network may carry, and what a flow breaks of it (formulation.md 2.6 and 3).
 
-Public names: `InjectionMap`, `LineRows`.
+Public names: `FLOW_TOLERANCE`, `NONE`, `NetworkLimits`, `Places`.
 
-A row (line, period) reads  −F − fixed ≤ Σ_columns PTDF·factor·x ≤ F − fixed,  where `fixed` is the flow
-that demand and phase shifters cause on their own.
+Three kinds of limit, all on sums of line flows: a line within its rating, a corridor within its limits,
+and a line within its emergency rating after a contingency. `line_rows.py` makes rows of them.
 """
+
+from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy import sparse
 
-from simulator.dispatch.compiled import CompiledFleet
-from simulator.dispatch.inputs import WindowInputs
-from simulator.dispatch.solver import BASIC, LinearSolver
-from simulator.dispatch.start import Start
+from simulator.grid import Contingencies, Topology, TopologySchedule
 
-__all__ = ["FLOW_TOLERANCE", "InjectionMap", "LineRows"]
+__all__ = ["FLOW_TOLERANCE", "NONE", "NetworkLimits", "Places"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
 Booleans = NDArray[np.bool_]
-Statuses = NDArray[np.int8]
 
 FLOW_TOLERANCE = 1e-6
-"""A flow further than this beyond its rating, MW, asks for a row."""
+"""A flow further than this beyond its limit, MW, asks for a row."""
+NONE = -1
+"""The contingency in which nothing is lost."""
+_ONE_KEY = 1 << 21  # elements, contingencies and periods each stay far below
 
-_IDLE_WINDOWS = 3
-_SMALLEST_FACTOR = 1e-9  # HiGHS drops smaller coefficients by itself
 
+@dataclass(frozen=True, eq=False)
+class Places:
+    """What rows hold: a line or a corridor, in a period, as things are or after a contingency.
 
-class InjectionMap:
-    """Which columns inject where.
-
-    columns : array (period, injection), positions in the matrix
-    at_bus : sparse array (bus, injection), factor with which a column's value enters its bus; a tie
-        has two
+    contingency : array (row,), NONE where nothing is lost
+    element : array (row,), a line, or the number of lines + a corridor
+    period : array (row,)
     """
 
-    def __init__(self, inputs: WindowInputs, columns: dict[str, Integers]) -> None:
-        arrives = inputs.tie_delivered
-        sent = np.full(len(arrives), -1.0)
-        parts: list[tuple[str, list[tuple[Integers, Floats]]]] = [
-            ("output", [_plus(inputs.unit.bus)]),
-            ("renewable", [_plus(inputs.renewable_bus)]),
-            ("discharge", [_plus(inputs.store.bus)]),
-            ("charge", [_minus(inputs.store.bus)]),
-            ("tie_forward", [(inputs.tie_from, sent), (inputs.tie_to, arrives)]),
-            ("tie_reverse", [(inputs.tie_to, sent), (inputs.tie_from, arrives)]),
-            ("unserved", [_plus(inputs.load_bus)]),
-            ("surplus", [_minus(np.arange(inputs.buses))]),
-        ]
-        self.columns = np.concatenate([columns[family] for family, _ in parts], axis=1)
-        blocks = [_placed(ends, inputs.buses) for _, ends in parts]
-        self.at_bus = sparse.csr_array(sparse.hstack(blocks))
+    contingency: Integers
+    element: Integers
+    period: Integers
 
-    def injections(self, solution: Floats, inputs: WindowInputs) -> Floats:
-        """Return net injections, array (period, bus), MW, of a solution."""
-        return (self.at_bus @ solution[self.columns].T).T - inputs.demand_at_bus
-
-
-def _plus(bus: Integers) -> tuple[Integers, Floats]:
-    return bus, np.ones(len(bus))
-
-
-def _minus(bus: Integers) -> tuple[Integers, Floats]:
-    return bus, np.full(len(bus), -1.0)
-
-
-def _placed(ends: list[tuple[Integers, Floats]], buses: int) -> sparse.coo_array:
-    count = len(ends[0][0])
-    bus = np.concatenate([bus for bus, _ in ends])
-    factor = np.concatenate([factor for _, factor in ends])
-    element = np.tile(np.arange(count), len(ends))
-    return sparse.coo_array((factor, (bus, element)), shape=(buses, count))
-
-
-class LineRows:
-    """The line rows that stand in a solver's model, in the order in which they stand there.
-
-    line, period, topology : arrays (row,); idle : windows in which a row has not been at its limit
-    carried : how many rows the window began with for limits met in hours seen before
-    """
-
-    carried = 0
-
-    def __init__(self, inputs: WindowInputs, fleet: CompiledFleet) -> None:
-        self.injection = InjectionMap(inputs, dict(fleet.columns))
-        self._first_row = fleet.matrix.shape[0]
-        self._columns = fleet.matrix.shape[1]
-        self._known: dict[tuple[int, int], int] = {}
-        self._factors = sparse.csr_array((0, self.injection.at_bus.shape[1]))
-        self._clear()
-
-    def _clear(self) -> None:
-        empty = np.zeros(0, dtype=np.int64)
-        self.line, self.period, self.topology, self.idle = (empty.copy() for _ in range(4))
+    @classmethod
+    def none(cls) -> "Places":
+        """Return no place."""
+        return cls(*(np.zeros(0, dtype=np.int64) for _ in range(3)))
 
     def __len__(self) -> int:
-        return len(self.line)
+        return len(self.element)
 
-    def begin_window(
-        self, solver: LinearSolver, inputs: WindowInputs, fixed: Floats, start: Start | None
-    ) -> Statuses:
-        """Add the rows a window starts with to a model that has none; return their statuses.
+    def __getitem__(self, which: Any) -> "Places":
+        return Places(self.contingency[which], self.element[which], self.period[which])
 
-        They are the rows that stood, with new bounds, less those that no longer serve: idle for several
-        windows, or of a period that now has another topology; and rows for what was at its limit in
-        hours seen before.
-        """
-        self._clear()
-        self.carried = 0
-        if start is None or not inputs.limited:
-            return np.zeros(0, dtype=np.int8)
-        shift = start.moved_to(inputs.first, inputs.periods)
-        serve = (start.idle < _IDLE_WINDOWS) & (
-            start.topology == inputs.topology.index[start.period]
+    def __add__(self, more: "Places") -> "Places":
+        return Places(
+            np.concatenate([self.contingency, more.contingency]),
+            np.concatenate([self.element, more.element]),
+            np.concatenate([self.period, more.period]),
         )
-        carried = _carried(start, shift, inputs.rating.shape)
-        carried[start.period[serve], start.line[serve]] = False
-        period, line = np.nonzero(carried)
-        self.carried = len(line)
-        self._add(
-            solver, inputs, fixed, np.concatenate([start.line[serve], line]),
-            np.concatenate([start.period[serve], period]),
-            np.concatenate([start.idle[serve], np.zeros(len(line), dtype=np.int64)]),
+
+    def later(self, periods: int) -> "Places":
+        """Return the same places some periods later."""
+        return Places(self.contingency, self.element, self.period + periods)
+
+    @property
+    def keys(self) -> Integers:
+        """One number a place, array (row,)."""
+        return ((self.contingency + 1) * _ONE_KEY + self.element) * _ONE_KEY + self.period
+
+    def found_in(self, others: "Places") -> Integers:
+        """Return where among others each place is, array (row,); −1 where it is not."""
+        if not len(others):
+            return np.full(len(self), -1)
+        keys, wanted = others.keys, self.keys
+        order = np.argsort(keys, kind="stable")
+        at = order[np.minimum(np.searchsorted(keys, wanted, sorter=order), len(keys) - 1)]
+        return np.where(keys[at] == wanted, at, -1)
+
+
+@dataclass(frozen=True, eq=False)
+class NetworkLimits:
+    """What lines and corridors may carry over some periods.
+
+    rating, emergency : arrays (period, line), MW, as things are and after a contingency
+    weight : sparse array (corridor, line), what each line's flow counts in a corridor
+    forward, reverse : arrays (period, corridor), MW
+    contingencies : those after which emergency ratings hold, none unless the run is to be secure
+    """
+
+    rating: Floats
+    emergency: Floats
+    weight: sparse.csr_array
+    forward: Floats
+    reverse: Floats
+    contingencies: Contingencies
+
+    def __getitem__(self, periods: slice) -> "NetworkLimits":
+        return NetworkLimits(
+            self.rating[periods], self.emergency[periods], self.weight,
+            self.forward[periods], self.reverse[periods], self.contingencies,
         )  # fmt: skip
-        moved = _moved_statuses(start, shift, inputs.rating.shape)[serve]
-        return np.concatenate([moved, np.full(len(line), BASIC, dtype=np.int8)])
 
-    def _bounds(
-        self, inputs: WindowInputs, fixed: Floats, line: Integers, period: Integers
-    ) -> tuple[Floats, Floats]:
-        rating, base = inputs.rating[period, line], fixed[period, line]
-        return -rating - base, rating - base
+    @property
+    def lines(self) -> int:
+        """Number of lines."""
+        return self.rating.shape[1]
 
-    def active(self, inputs: WindowInputs) -> Booleans:
-        """Tell which (period, line) have a row."""
-        found = np.zeros(inputs.rating.shape, dtype=bool)
-        found[self.period, self.line] = True
+    def corridor_flow(self, flow: Floats) -> Floats:
+        """Return flows of corridors, array (period, corridor), MW, from those of lines."""
+        return np.asarray((self.weight @ flow.T).T)
+
+    def bounds(self, places: Places) -> tuple[Floats, Floats]:
+        """Return the least and the most that places may carry, arrays (row,), MW."""
+        upper = np.concatenate([self.rating, self.forward], axis=1)[places.period, places.element]
+        lower = np.concatenate([self.rating, self.reverse], axis=1)[places.period, places.element]
+        lost = places.contingency != NONE
+        after = self.emergency[places.period[lost], places.element[lost]]
+        upper[lost] = lower[lost] = after
+        return -lower, upper
+
+    def weights(self, topology: Topology, places: Places) -> sparse.csr_array:
+        """Return rows, sparse array (row, line), whose products with flows are what places carry."""
+        lost = np.flatnonzero(places.contingency != NONE)
+        kept = np.flatnonzero(places.contingency == NONE)
+        every = sparse.vstack([sparse.eye_array(self.lines), self.weight], format="csr")
+        rows = [every[places.element[kept]]]
+        if len(lost):
+            after = self.contingencies.after(topology)
+            rows.append(after.weights(places.contingency[lost], places.element[lost]))
+        order = np.argsort(np.concatenate([kept, lost]), kind="stable")
+        return sparse.csr_array(sparse.vstack(rows, format="csr")[order])
+
+    def broken(self, flow: Floats, schedule: TopologySchedule, standing: Places) -> Places:
+        """Return the places beyond their limits that do not stand yet; flow : (period, line), MW.
+
+        Of the contingencies that break a line's limit in a period only the worst: rows for the others
+        are seldom needed once it holds.
+        """
+        as_is = self._broken_as_is(flow)
+        after = [
+            self._worst(self._broken_after(topology, flow, periods), standing)
+            for topology, periods in _by_topology(schedule)
+        ]
+        found = sum((places for places in after), as_is[as_is.found_in(standing) < 0])
         return found
 
-    def add(
-        self, solver: LinearSolver, inputs: WindowInputs, fixed: Floats, missing: Booleans
-    ) -> None:
-        """Add rows for `missing`, array (period, line)."""
-        period, line = np.nonzero(missing)
-        self._add(solver, inputs, fixed, line, period, np.zeros(len(line), dtype=np.int64))
+    def _broken_as_is(self, flow: Floats) -> Places:
+        carried = np.concatenate([flow, self.corridor_flow(flow)], axis=1)
+        upper = np.concatenate([self.rating, self.forward], axis=1) + FLOW_TOLERANCE
+        lower = np.concatenate([self.rating, self.reverse], axis=1) + FLOW_TOLERANCE
+        period, element = np.nonzero((carried > upper) | (carried < -lower))
+        return Places(np.full(len(period), NONE), element, period)
 
-    def _add(
-        self, solver: LinearSolver, inputs: WindowInputs, fixed: Floats,
-        line: Integers, period: Integers, idle: Integers,
-    ) -> None:  # fmt: skip
-        if not len(line):
-            return
-        topology = inputs.topology.index[period]
-        lower, upper = self._bounds(inputs, fixed, line, period)
-        solver.add_rows(self._matrix(inputs, line, period, topology), lower, upper)
-        self.line = np.concatenate([self.line, line])
-        self.period = np.concatenate([self.period, period])
-        self.topology = np.concatenate([self.topology, topology])
-        self.idle = np.concatenate([self.idle, idle])
+    def _broken_after(
+        self, topology: Topology, flow: Floats, periods: Integers
+    ) -> tuple[Places, Floats]:
+        """Return what is beyond emergency ratings after any contingency, and by how much, MW."""
+        limited = np.flatnonzero(np.isfinite(self.emergency).any(axis=0))
+        limit = self.emergency[np.ix_(periods, limited)] + FLOW_TOLERANCE
+        found, over = [Places.none()], [np.zeros(0)]
+        for some, flows in self.contingencies.after(topology).blocks(flow[periods], limited):
+            excess = np.abs(flows) - limit
+            contingency, period, line = np.nonzero(excess > 0)
+            found.append(Places(some[contingency], limited[line], periods[period]))
+            over.append(excess[contingency, period, line])
+        return sum(found[1:], found[0]), np.concatenate(over)
 
-    def _matrix(
-        self, inputs: WindowInputs, line: Integers, period: Integers, topology: Integers
-    ) -> sparse.csr_array:
-        """Coefficients of new rows, sparse array (row, column): PTDF of each line over injections."""
-        self._learn(inputs, line, topology)
-        keys = zip(topology.tolist(), line.tolist(), strict=True)
-        rows = self._factors[[self._known[key] for key in keys]]
-        owner = np.repeat(period, np.diff(rows.indptr))
-        columns = self.injection.columns[owner, rows.indices]
-        shape = (len(line), self._columns)
-        return sparse.csr_array((rows.data, columns, rows.indptr), shape=shape)
-
-    def _learn(self, inputs: WindowInputs, line: Integers, topology: Integers) -> None:
-        """Work out the factors of lines that never had a row under their topology."""
-        for number in np.unique(topology).tolist():
-            lines = np.unique(line[topology == number])
-            fresh = np.array(
-                [one for one in lines.tolist() if (number, one) not in self._known], int
-            )
-            if not len(fresh):
-                continue
-            ptdf = inputs.topology.topologies[number].ptdf_rows(fresh)
-            factors = (self.injection.at_bus.T @ ptdf.T).T
-            factors[np.abs(factors) <= _SMALLEST_FACTOR] = 0.0
-            known = len(self._known)
-            self._known |= {(number, one): known + at for at, one in enumerate(fresh.tolist())}
-            self._factors = sparse.vstack([self._factors, sparse.csr_array(factors)], format="csr")
-
-    def duals(self, row_dual: Floats, inputs: WindowInputs) -> Floats:
-        """Return signed duals of line limits, array (period, line)."""
-        found = np.zeros(inputs.rating.shape)
-        np.add.at(found, (self.period, self.line), row_dual[self._first_row :])
-        return found
-
-    def idle_after(self, row_dual: Floats) -> Integers:
-        """Return in how many windows each row has not been at its limit, this one included."""
-        at_limit = np.abs(row_dual[self._first_row :]) > 0
-        return np.where(at_limit, 0, self.idle + 1)
+    def _worst(self, broken: tuple[Places, Floats], standing: Places) -> Places:
+        """Return, for each line and period, the place furthest beyond its limit."""
+        places, over = broken
+        fresh = places.found_in(standing) < 0
+        places, over = places[fresh], over[fresh]
+        order = np.lexsort([-over, places.element, places.period])
+        places = places[order]
+        same = (np.diff(places.element) == 0) & (np.diff(places.period) == 0)
+        return places[np.concatenate([[True], ~same])[: len(places)]]
 
 
-def _moved_statuses(start: Start, shift: int, shape: tuple[int, ...]) -> Statuses:
-    """Return statuses of the rows that stood, moved along with the hours; basic where none is known."""
-    periods, lines = shape
-    by_place = np.full((periods + shift, lines), BASIC, dtype=np.int8)
-    by_place[start.period, start.line] = start.line_rows
-    moved = by_place[start.period + shift, start.line]
-    return np.where(start.period < periods - shift, moved, start.line_rows)
-
-
-def _carried(start: Start, shift: int, shape: tuple[int, ...]) -> Booleans:
-    """Tell which (period, line) were at their limit in the last window."""
-    wanted = np.zeros(shape, dtype=bool)
-    bound = (start.idle == 0) & (start.period >= shift)
-    wanted[start.period[bound] - shift, start.line[bound]] = True
-    return wanted
+def _by_topology(schedule: TopologySchedule) -> "list[tuple[Topology, Integers]]":
+    """Pair each topology of a schedule with its periods."""
+    return [
+        (schedule.topologies[number], np.flatnonzero(schedule.index == number))
+        for number in np.unique(schedule.index).tolist()
+    ]

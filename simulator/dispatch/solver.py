@@ -144,7 +144,7 @@ class LinearSolver:
         code = self._highs.addRows(
             len(lower), lower, upper, matrix.nnz, starts, indices, matrix.data
         )
-        self._check(code, "line rows")
+        self._check(code, "rows of limits")
 
     def basis(self) -> tuple[Statuses, Statuses]:
         """Return the status of every column and row as numbers; `BASIC` marks the basic ones."""

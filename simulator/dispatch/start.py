@@ -12,6 +12,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from simulator.dispatch.limits import Places
+
 __all__ = ["Start"]
 
 Integers = NDArray[np.int64]
@@ -20,13 +22,13 @@ Statuses = NDArray[np.int8]
 
 @dataclass(frozen=True, eq=False)
 class Start:
-    """A basis, the line rows that stood, and the decisions of a window solved before.
+    """A basis, the rows of limits that stood, and the decisions of a window solved before.
 
     shape : the shape of that window; another shape starts from nothing
     first : its first period, counted from the run's
-    columns, rows, line_rows : arrays (column,), (fleet row,), (line row,), solver statuses
-    line, period, topology, idle : arrays (line row,), in the order in which the rows stood; idle counts
-        the windows in which a row has not been at its limit
+    columns, rows, limit_rows : arrays (column,), (fleet row,), (limit row,), solver statuses
+    places, topology, idle : what the limit rows held, in the order in which they stood, the topology of
+        their period, and in how many windows each has not been at its limit
     on : array (period, unit), 0 or 1, decided; None where nothing is decided
     """
 
@@ -34,9 +36,8 @@ class Start:
     first: int
     columns: Statuses
     rows: Statuses
-    line_rows: Statuses
-    line: Integers
-    period: Integers
+    limit_rows: Statuses
+    places: Places
     topology: Integers
     idle: Integers
     on: Statuses | None
@@ -46,11 +47,11 @@ class Start:
         shift = first - self.first
         return shift if 0 < shift < periods else 0
 
-    def without_lines(self) -> "Start":
-        """Return the same start with no line rows, for a run without line limits."""
+    def without_limits(self) -> "Start":
+        """Return the same start with no rows of limits, for a run without them."""
         none = np.zeros(0, dtype=np.int64)
         return replace(
-            self, line_rows=np.zeros(0, dtype=np.int8), line=none, period=none, topology=none, idle=none
+            self, limit_rows=np.zeros(0, dtype=np.int8), places=Places.none(), topology=none, idle=none
         )  # fmt: skip
 
 

@@ -1,10 +1,11 @@
-"""One window solved: fleet half, line rows as needed, prices back out.
+"""One window solved: fleet half, rows of limits as needed, prices back out.
 
 Public names: `WindowError`, `WindowModel`, `WindowSolution`, `shape_of`.
 """
 
 import time
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,7 +15,7 @@ from simulator.dispatch.compiled import CompiledFleet, compile_fleet
 from simulator.dispatch.counts import Counts, WindowRecord
 from simulator.dispatch.fleet import fleet_data, given_commitment
 from simulator.dispatch.inputs import WindowInputs
-from simulator.dispatch.limits import LineRows
+from simulator.dispatch.limit_rows import Duals, LimitRows, Pairs
 from simulator.dispatch.search import Decided, Search
 from simulator.dispatch.solver import LinearSolver, SolverError
 from simulator.dispatch.start import Start, shifted
@@ -47,9 +48,10 @@ class WindowSolution:
     output (unit), block (block), renewable (plant), charge, discharge (store), tie_forward, tie_reverse
     (tie), unserved (load), surplus (bus), flow (line) : MW; stored (store) : MWh at the end of a period
     price : (period, bus), currency/MWh (5.1)
-    line_dual : (period, line), signed, currency/MWh; negative where the flow is held down at +F
-    relaxed_price, relaxed_line_dual : the same from the relaxation, in which any decision may be partly
-        taken; they differ in mode `optimal` only
+    line_dual (period, line), corridor_dual (period, corridor) : signed, currency/MWh; negative where a
+        flow is held down at its upper limit; pairs : the same of lines after contingencies
+    relaxed_… : the same from the relaxation, in which any decision may be partly taken; they differ in
+        mode `optimal` only
     objective : currency; left : what the next window may start from
     """
 
@@ -70,8 +72,12 @@ class WindowSolution:
     flow: Floats
     price: Floats
     line_dual: Floats
+    corridor_dual: Floats
+    pairs: Pairs
     relaxed_price: Floats
     relaxed_line_dual: Floats
+    relaxed_corridor_dual: Floats
+    relaxed_pairs: Pairs
     objective: float
     left: Start
 
@@ -120,12 +126,12 @@ class WindowModel:
         with self.counts.timed("build"):
             self.fleet: CompiledFleet = compile_fleet(inputs, fleet_data(inputs, state))
             self.shape = shape_of(inputs)
-            self.lines = LineRows(inputs, self.fleet)
+            self.limits = LimitRows(inputs, self.fleet)
             self._solver = LinearSolver()
 
     def __repr__(self) -> str:
         rows, columns = self.fleet.matrix.shape
-        return f"WindowModel({rows} rows, {columns} columns, {len(self.lines)} line rows)"
+        return f"WindowModel({rows} rows, {columns} columns, {len(self.limits)} rows of limits)"
 
     def fits(self, inputs: WindowInputs) -> bool:
         """Tell whether a window has this model's shape."""
@@ -152,9 +158,14 @@ class WindowModel:
         except SolverError as failure:
             raise WindowError(failure.status, self._contradictions(failure)) from failure
         self._record(inputs, time.perf_counter() - began, decided)
-        prices = self._prices(inputs, attempt) if decided else relaxed
+        price, duals = self._prices(inputs, attempt) if decided else relaxed
+        priced = {
+            "price": price, "line_dual": duals.line, "corridor_dual": duals.corridor,
+            "pairs": duals.pairs, "relaxed_price": relaxed[0], "relaxed_line_dual": relaxed[1].line,
+            "relaxed_corridor_dual": relaxed[1].corridor, "relaxed_pairs": relaxed[1].pairs,
+        }  # fmt: skip
         left = self._left(inputs, attempt, decided)
-        return self._solution(inputs, state, attempt, (*prices, *relaxed), left)
+        return self._solution(inputs, state, attempt, priced, left)
 
     def _record(self, inputs: WindowInputs, seconds: float, decided: Decided | None) -> None:
         record = WindowRecord(inputs.number, seconds)
@@ -168,35 +179,35 @@ class WindowModel:
         fleet_rows = self.fleet.matrix.shape[0]
         return Start(
             self.shape, inputs.first, columns, rows[:fleet_rows], rows[fleet_rows:],
-            self.lines.line, self.lines.period, self.lines.topology,
-            self.lines.idle_after(attempt.row_dual), decided.on if decided else None,
+            self.limits.places, self.limits.topology,
+            self.limits.idle_after(attempt.row_dual), decided.on if decided else None,
         )  # fmt: skip
 
     def _begin(self, inputs: WindowInputs, state: State, start: Start | None) -> Attempt:
-        """Load a window's numbers, the line rows it starts with, and the basis it starts from."""
+        """Load a window's numbers, the rows of limits it starts with, and the basis it starts from."""
         data = fleet_data(inputs, state)
         with self.counts.timed("solve"):
             self._solver.load(self.fleet.filled(inputs, data), self.fleet.vectors(data))
         with self.counts.timed("network"):
             attempt = Attempt(inputs, data, self.fleet.columns)
-            line_rows = self.lines.begin_window(self._solver, inputs, attempt.fixed, start)
-            self.counts.line_rows += self.lines.carried
+            limit_rows = self.limits.begin_window(self._solver, inputs, attempt.fixed, start)
+            self.counts.limit_rows += self.limits.carried
         if start is not None:
             with self.counts.timed("solve"):
-                self._start_from(inputs, start, line_rows)
+                self._start_from(inputs, start, limit_rows)
         return attempt
 
-    def _start_from(self, inputs: WindowInputs, start: Start, line_rows: Statuses) -> None:
+    def _start_from(self, inputs: WindowInputs, start: Start, limit_rows: Statuses) -> None:
         """Set the basis that was left, moved along with the window."""
         shift, periods = start.moved_to(inputs.first, inputs.periods), inputs.periods
         columns = shifted(start.columns, self.fleet.columns, shift, periods)
         rows = shifted(start.rows, self.fleet.rows, shift, periods)
-        self._solver.set_basis(columns, np.concatenate([rows, line_rows]))
+        self._solver.set_basis(columns, np.concatenate([rows, limit_rows]))
 
     def _solve_with_lines(
         self, inputs: WindowInputs, attempt: Attempt, *, turning: bool = True
     ) -> None:
-        """Solve, look for lines beyond their rating, add their rows, until there is none (3).
+        """Solve, look for limits that flows break, add their rows, until there is none (3).
 
         turning : close a direction of ties that run both ways; in mode `optimal` the relaxation may
             not, since which way a tie runs is a decision there
@@ -207,34 +218,35 @@ class WindowModel:
             self.counts.lp_solves += 1
             self.counts.iterations += self._solver.iterations
             attempt.solution, attempt.row_dual = self._solver.solution()
-            added = self._lines_added(inputs, attempt)
+            added = self._limits_added(inputs, attempt)
             if not (added or (turning and attempt.ties.close(self._solver, attempt.solution))):
                 return
 
-    def _lines_added(self, inputs: WindowInputs, attempt: Attempt) -> bool:
-        """Look at the flows of a solution; add rows for lines beyond their rating, if any."""
+    def _limits_added(self, inputs: WindowInputs, attempt: Attempt) -> bool:
+        """Look at the flows of a solution; add rows for limits they break, if any."""
         with self.counts.timed("network"):
-            injection = self.lines.injection.injections(attempt.solution, inputs)
+            injection = self.limits.injection.injections(attempt.solution, inputs)
             attempt.flow = inputs.topology.flows(injection)
             if not inputs.limited:
                 return False
-            missing = attempt.beyond(inputs) & ~self.lines.active(inputs)
-            self.lines.add(self._solver, inputs, attempt.fixed, missing)
-            self.counts.line_rows += int(missing.sum())
-            return bool(missing.any())
+            broken = inputs.limits.broken(attempt.flow, inputs.topology, self.limits.places)
+            self.limits.add(self._solver, inputs, attempt.fixed, broken)
+            self.counts.limit_rows += len(broken)
+            return len(broken) > 0
 
     def _contradictions(self, failure: SolverError) -> list[tuple[str, int, int]]:
         if "infeasible" not in failure.status:
             return []
         rows, columns = self._solver.contradictions()
-        fleet_rows = rows[rows < self.fleet.matrix.shape[0]]
-        line_rows = rows[rows >= self.fleet.matrix.shape[0]] - self.fleet.matrix.shape[0]
+        len_fleet = self.fleet.matrix.shape[0]
+        fleet_rows = rows[rows < len_fleet]
+        held = self.limits.places[rows[rows >= len_fleet] - len_fleet]
         return (
             [self.fleet.row_name(row) for row in fleet_rows.tolist()]
             + [self.fleet.column_name(column) for column in columns.tolist()]
             + [
-                ("line", int(self.lines.period[row]), int(self.lines.line[row]))
-                for row in line_rows
+                ("limit", period, element)
+                for period, element in zip(held.period.tolist(), held.element.tolist(), strict=True)
             ]
         )
 
@@ -243,7 +255,7 @@ class WindowModel:
         inputs: WindowInputs,
         state: State,
         attempt: Attempt,
-        prices: tuple[Floats, ...],
+        priced: dict[str, Any],
         left: Start,
     ) -> WindowSolution:
         values = self.fleet.named(attempt.solution)
@@ -257,24 +269,21 @@ class WindowModel:
             decided = {name: values.pop(name) for name in ("on", "start", "stop")}
             cold = np.zeros_like(decided["start"])
             cold[:, inputs.unit.cold_rows] = values.pop("cold_start")
-        priced = dict(zip(_PRICED, prices, strict=True))
         return WindowSolution(
             **decided, **values, **priced, cold_start=cold, flow=attempt.flow,
             objective=self._solver.objective, left=left,
         )  # fmt: skip
 
-    def _prices(self, inputs: WindowInputs, attempt: Attempt) -> tuple[Floats, Floats]:
-        """Return prices (period, bus) and line duals (period, line) of the last solve (5.1).
+    def _prices(self, inputs: WindowInputs, attempt: Attempt) -> tuple[Floats, Duals]:
+        """Return prices (period, bus) of the last solve, and what limits cost in it (5.1).
 
         price_n = (dual of n's balance row)/Δ + Σ_l PTDF_ln·μ_l
         """
         energy = attempt.row_dual[self.fleet.rows["balance"]][:, inputs.cells.cell]
-        line_dual = self.lines.duals(attempt.row_dual, inputs) / inputs.period_hours
-        bus = energy / inputs.period_hours + inputs.topology.collected(line_dual)
-        return bus, line_dual
+        duals = self.limits.duals(attempt.row_dual, inputs)
+        return energy / inputs.period_hours + inputs.topology.collected(duals.flow), duals
 
 
-_PRICED = ("price", "line_dual", "relaxed_price", "relaxed_line_dual")
 _WITHIN = ("exchange", "energy_short", "stopped", "matched", "tie_way")
 """Column families that no result shows."""
 
@@ -287,4 +296,7 @@ def shape_of(inputs: WindowInputs) -> tuple[object, ...]:
         len(inputs.unit.bus),
         len(inputs.unit.block_unit),
         inputs.buses,
+        inputs.cells.cell.tobytes(),
+        inputs.cells.pair_from.tobytes(),
+        inputs.cells.pair_to.tobytes(),
     )

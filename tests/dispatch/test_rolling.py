@@ -98,7 +98,7 @@ def test_a_model_updated_in_place_is_the_model_built_afresh(convex_case, seed, m
     case = convex_case(seed)
     periods = len(case.time)
     length, keep = periods // 2, max(periods // 4, 1)
-    inputs = run_inputs(case, slice(0, periods), periods, mode, limited=True)
+    inputs = run_inputs(case, slice(0, periods), periods, mode, "lines")
     state = initial_state(case, inputs.whole.unit)
     model = None
     for number, first in enumerate(range(0, periods - length + 1, keep)):
