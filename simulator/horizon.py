@@ -6,6 +6,7 @@ Public names: `Plan`, `Run`, `plan_run`, `run`, `without_limits`.
 from collections.abc import Callable
 from dataclasses import dataclass, field, fields, replace
 from datetime import date, datetime
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -15,7 +16,7 @@ from simulator.case import Case
 from simulator.dispatch import RunInputs, State, WindowInputs, WindowModel, WindowSolution
 from simulator.dispatch.counts import Counts
 from simulator.dispatch.inputs import run_inputs
-from simulator.dispatch.limit_rows import Pairs
+from simulator.dispatch.priced import Priced
 from simulator.dispatch.start import Start
 from simulator.dispatch.state import initial_state
 from simulator.dispatch.window import WindowError, shape_of
@@ -321,26 +322,17 @@ def _described(case: Case, first: int, family: str, period: int, element: int) -
 
 def _joined(solved: list[tuple[int, WindowSolution]]) -> WindowSolution:
     """Put the kept periods of all windows end to end."""
-    values = {
+    values: dict[str, Any] = {
         item.name: np.concatenate(
             [getattr(solution, item.name)[:kept] for kept, solution in solved]
         )
         for item in fields(WindowSolution)
-        if item.name not in ("objective", "left", *_PAIRS)
+        if item.name not in ("priced", "relaxed", "objective", "left")
     }
-    for name in _PAIRS:
-        values[name] = _joined_pairs([(kept, getattr(solution, name)) for kept, solution in solved])
+    for name in ("priced", "relaxed"):
+        values[name] = Priced.end_to_end([(kept, getattr(each, name)) for kept, each in solved])
     objective = sum(solution.objective for _, solution in solved)
     return WindowSolution(**values, objective=objective, left=solved[-1][1].left)
-
-
-_PAIRS = ("pairs", "relaxed_pairs")
-
-
-def _joined_pairs(solved: list[tuple[int, Pairs]]) -> Pairs:
-    begins = np.cumsum([0, *(kept for kept, _ in solved)])
-    parts = zip(begins[:-1].tolist(), solved, strict=True)
-    return Pairs.joined([pairs.between(0, kept, first) for first, (kept, pairs) in parts])
 
 
 def _window_numbers(solved: list[tuple[int, WindowSolution]]) -> Integers:

@@ -1,6 +1,7 @@
 """Prices taken apart and congestion accounted for (formulation.md 5): pure functions.
 
-Public names: `congestion_rent`, `energy_and_congestion`, `price_cause`, `reference_weights`.
+Public names: `congestion_rent`, `energy_and_congestion`, `pair_name`, `price_cause`,
+`reference_weights`.
 
 Arrays have periods first; prices are currency/MWh, powers MW, Δ is the length of a period in h.
 """
@@ -14,7 +15,13 @@ from simulator.case import Case, series
 from simulator.errors import OptionError
 from simulator.grid import Network, Topology
 
-__all__ = ["congestion_rent", "energy_and_congestion", "price_cause", "reference_weights"]
+__all__ = [
+    "congestion_rent",
+    "energy_and_congestion",
+    "pair_name",
+    "price_cause",
+    "reference_weights",
+]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -64,6 +71,15 @@ def congestion_rent(line_dual: Floats, flow: Floats, period_hours: float) -> Flo
     Shadow price × flow × Δ, the flow counted in the direction of the limit: |flow| where it is met.
     """
     return np.where(flow == 0, 0.0, -line_dual * flow) * period_hours
+
+
+def pair_name(line: str, contingency: str) -> str:
+    """Name a limit that holds after a contingency.
+
+    >>> pair_name("Ostrel-Vane", "Ostrel-Quill")
+    'Ostrel-Vane after loss of Ostrel-Quill'
+    """
+    return f"{line} after loss of {contingency}"
 
 
 PRICED = 1e-6

@@ -23,6 +23,7 @@ from numpy.typing import NDArray
 
 from simulator import prices
 from simulator.case import series
+from simulator.dispatch import Priced
 from simulator.dispatch.counts import WindowRecord
 from simulator.errors import OptionError
 from simulator.horizon import Run
@@ -77,6 +78,28 @@ VARIABLES: Mapping[str, Entry] = {
     "line_rating": (("time", "line"), "MW", "rating in the period"),
     "line_shadow_price": (("time", "line"), PRICE, "saving from one more MW of rating"),
     "congestion_rent": (("time", "line"), MONEY, "shadow price times flow"),
+    "security_hours": (("line",), "h", "hours with a shadow price after a contingency"),
+    "corridor_flow": (("time", "corridor"), "MW", "sum of the flows of its lines, weighted"),
+    "corridor_forward_limit": (("time", "corridor"), "MW", "limit of the flow"),
+    "corridor_reverse_limit": (("time", "corridor"), "MW", "limit of the flow the other way"),
+    "corridor_shadow_price": (("time", "corridor"), PRICE, "saving from one more MW of the limit"),
+    "corridor_limit_side": (
+        ("time", "corridor"),
+        "1",
+        "limit that is priced: 1 forward, -1 reverse, 0 none",
+    ),
+    "corridor_rent": (("time", "corridor"), MONEY, "shadow price times flow"),
+    "corridor_congestion_hours": (("corridor",), "h", "hours with a shadow price"),
+    "corridor_hours_at_limit": (("corridor",), "h", "hours with the flow at a limit"),
+    "pair_flow": (("pair",), "MW", "flow of the line after the contingency"),
+    "pair_rating": (("pair",), "MW", "emergency rating of the line in the period"),
+    "pair_shadow_price": (("pair",), PRICE, "saving from one more MW of emergency rating"),
+    "pair_limit_side": (
+        ("pair",),
+        "1",
+        "limit that is priced: 1 from from_bus to to_bus, -1 the other way",
+    ),
+    "pair_rent": (("pair",), MONEY, "shadow price times flow after the contingency"),
     "price": (("time", "bus"), PRICE, "locational price"),
     "price_energy": (("time", "bus"), PRICE, "price at the island's load-weighted reference"),
     "price_congestion": (("time", "bus"), PRICE, "price part caused by lines at their limit"),
@@ -110,6 +133,7 @@ def to_dataset(run: Run) -> xr.Dataset:
     """Return the results of a run as one labelled dataset (results-format.md)."""
     coordinates = _coordinates(run)
     values = _powers(run) | _lines_and_prices(run) | _costs(run) | _summaries(run)
+    values |= _corridors(run) | _pairs(run)
     written = {**VARIABLES, **(OF_DECISIONS if run.plan.mode == "optimal" else {})}
     variables = {
         name: (dims, values[name], {"units": unit, "long_name": label})
@@ -135,6 +159,7 @@ def _coordinates(run: Run) -> dict[str, Any]:
         "plant": (case.renewables, {"bus": "", "technology": "", "capacity_mw": "MW"}),
         "store": (case.storage, {"bus": "", "energy_mwh": "MWh"}),
         "tie": (case.dc_ties, {"from_bus": "", "to_bus": ""}),
+        "corridor": (case.corridors, {}),
         "load": (case.loads, {"bus": ""}),
     }  # fmt: skip
     found: dict[str, Any] = {
@@ -144,11 +169,26 @@ def _coordinates(run: Run) -> dict[str, Any]:
         "product": ("product", names),
         "component": ("component", np.array(COMPONENTS)),
     }  # fmt: skip
+    found |= _pair_names(run)
     for dimension, (table, columns) in tables.items():
         found[dimension] = (dimension, table.index.to_numpy(dtype=str))
         for column, unit in columns.items():
             found[f"{dimension}_{column}"] = _coordinate(dimension, table[column], unit)
     return found
+
+
+def _pair_names(run: Run) -> dict[str, Any]:
+    """Name the priced pairs: what is lost, the line that would be overloaded, and when."""
+    pairs = _priced(run).pairs
+    lost = np.asarray(run.inputs.whole.limits.contingencies.names, dtype=str)[pairs.contingency]
+    line = run.case.lines.index.to_numpy(dtype=str)[pairs.line]
+    names = [prices.pair_name(*pair) for pair in zip(line, lost, strict=True)]
+    return {
+        "pair": ("pair", np.array(names, dtype=str)),
+        "pair_contingency": ("pair", lost),
+        "pair_line": ("pair", line),
+        "pair_time": ("pair", run.times.tz_localize(None)[pairs.period], {"long_name": "period, UTC"}),
+    }  # fmt: skip
 
 
 def _coordinate(dimension: str, values: pd.Series, unit: str) -> tuple[str, Any, dict[str, str]]:
@@ -181,7 +221,8 @@ def _powers(run: Run) -> dict[str, Floats]:
 
 def _lines_and_prices(run: Run) -> dict[str, Floats]:
     kept, inputs = run.kept, run.kept_inputs
-    price, line_dual = _priced(run)
+    priced = _priced(run)
+    price, line_dual = priced.price, priced.line
     island = np.stack([topology.island for topology in inputs.topology.topologies])
     island = island[inputs.topology.index]
     weights = prices.reference_weights(inputs.demand_at_bus, island)
@@ -192,8 +233,8 @@ def _lines_and_prices(run: Run) -> dict[str, Floats]:
         "line_limit_side": -np.sign(line_dual).astype(np.int8),
         "congestion_rent": prices.congestion_rent(line_dual, kept.flow, inputs.period_hours),
         "price": price,
-        "price_fixed": kept.price,
-        "price_relaxed": kept.relaxed_price,
+        "price_fixed": kept.priced.price,
+        "price_relaxed": kept.relaxed.price,
         "price_energy": energy,
         "price_congestion": congestion,
         "price_loss": np.zeros_like(price),
@@ -202,11 +243,46 @@ def _lines_and_prices(run: Run) -> dict[str, Floats]:
     }
 
 
-def _priced(run: Run) -> tuple[Floats, Floats]:
-    """Return prices (period, bus) and line duals (period, line) as the plan asks for them."""
-    if run.plan.pricing == "relaxed":
-        return run.kept.relaxed_price, run.kept.relaxed_line_dual
-    return run.kept.price, run.kept.line_dual
+def _priced(run: Run) -> Priced:
+    """Return prices, and what limits cost, as the plan asks for them."""
+    return run.kept.relaxed if run.plan.pricing == "relaxed" else run.kept.priced
+
+
+def _corridors(run: Run) -> dict[str, Any]:
+    limits, dual, length = run.kept_inputs.limits, _priced(run).corridor, run.case.time.period_hours
+    flow = limits.corridor_flow(run.kept.flow)
+    at_limit = (flow >= limits.forward - AT_LIMIT) | (flow <= AT_LIMIT - limits.reverse)
+    return {
+        "corridor_flow": flow,
+        "corridor_forward_limit": limits.forward,
+        "corridor_reverse_limit": limits.reverse,
+        "corridor_shadow_price": np.abs(dual),
+        "corridor_limit_side": -np.sign(dual).astype(np.int8),
+        "corridor_rent": prices.congestion_rent(dual, flow, length),
+        "corridor_congestion_hours": (np.abs(dual) > PRICED).sum(axis=0) * length,
+        "corridor_hours_at_limit": at_limit.sum(axis=0) * length,
+    }
+
+
+def _pairs(run: Run) -> dict[str, Any]:
+    """Account for the limits that are priced after a contingency, a row a contingency, line and period."""
+    pairs, inputs, length = _priced(run).pairs, run.kept_inputs, run.case.time.period_hours
+    after = np.zeros(len(pairs.dual))
+    for number in np.unique(inputs.topology.index[pairs.period]):
+        here = np.flatnonzero(inputs.topology.index[pairs.period] == number)
+        loss = inputs.limits.contingencies.after(inputs.topology.topologies[number])
+        weights = loss.weights(pairs.contingency[here], pairs.line[here])
+        after[here] = weights.multiply(run.kept.flow[pairs.period[here]]).sum(axis=1)
+    hit = np.zeros(run.kept.flow.shape, dtype=bool)
+    hit[pairs.period, pairs.line] = np.abs(pairs.dual) > PRICED
+    return {
+        "pair_flow": after,
+        "pair_rating": inputs.limits.emergency[pairs.period, pairs.line],
+        "pair_shadow_price": np.abs(pairs.dual),
+        "pair_limit_side": -np.sign(pairs.dual).astype(np.int8),
+        "pair_rent": prices.congestion_rent(pairs.dual, after, length),
+        "security_hours": hit.sum(axis=0) * length,
+    }
 
 
 def _costs(run: Run) -> dict[str, Floats]:
@@ -255,7 +331,7 @@ def _summaries(run: Run) -> dict[str, Any]:
     length = inputs.period_hours
     at_limit = np.abs(kept.flow) >= inputs.limits.rating - AT_LIMIT
     return {
-        "congestion_hours": (np.abs(_priced(run)[1]) > PRICED).sum(axis=0) * length,
+        "congestion_hours": (np.abs(_priced(run).line) > PRICED).sum(axis=0) * length,
         "hours_at_limit": at_limit.sum(axis=0) * length,
         "ramp_limited_hours": _ramp_limited(run).sum(axis=0) * length,
         "window": run.window,
@@ -347,7 +423,9 @@ def _totals(dataset: xr.Dataset) -> dict[str, float]:
         "curtailed_mwh": energy("curtailment"),
         "surplus_mwh": energy("surplus"),
         "emissions_t": float(dataset["emissions"].sum()),
-        "congestion_rent": float(dataset["congestion_rent"].sum()),
+        "congestion_rent": sum(
+            float(dataset[name].sum()) for name in ("congestion_rent", "corridor_rent", "pair_rent")
+        ),
         "congestion_hours": float(dataset["congestion_hours"].sum()),
     }
 
@@ -427,7 +505,8 @@ def write_dataset(dataset: xr.Dataset, path: Path) -> None:
         name: {"_FillValue": None, **(compressed if variable.size else {})}
         for name, variable in dataset.data_vars.items()
     }
-    encoding["time"] = {"units": "minutes since 1970-01-01 00:00:00", "dtype": "int64"}
+    for name in ("time", "pair_time"):
+        encoding[name] = {"units": "minutes since 1970-01-01 00:00:00", "dtype": "int64"}
     dataset.to_netcdf(path, engine="netcdf4", encoding=encoding)
 
 

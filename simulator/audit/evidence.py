@@ -1,6 +1,6 @@
 """What the audit looks at: the dataset and the case as arrays on the same periods and elements.
 
-Public names: `DIMENSIONS`, `Evidence`, `gather`, `summed`.
+Public names: `DIMENSIONS`, `Evidence`, `Pairs`, `gather`, `summed`.
 """
 
 from collections.abc import Mapping
@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from simulator.case import Case, series
 from simulator.errors import AuditError
 
-__all__ = ["DIMENSIONS", "Evidence", "gather", "summed"]
+__all__ = ["DIMENSIONS", "Evidence", "Pairs", "gather", "summed"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -33,7 +33,13 @@ DIMENSIONS: Mapping[str, tuple[str, ...]] = {
     "tie_flow": ("time", "tie"),
     **dict.fromkeys(
         ("line_flow", "line_rating", "line_shadow_price", "congestion_rent"), ("time", "line")),
-    **dict.fromkeys(("congestion_hours", "hours_at_limit"), ("line",)),
+    **dict.fromkeys(("congestion_hours", "hours_at_limit", "security_hours"), ("line",)),
+    **dict.fromkeys(
+        ("corridor_flow", "corridor_forward_limit", "corridor_reverse_limit", "corridor_shadow_price",
+         "corridor_limit_side", "corridor_rent"), ("time", "corridor")),
+    **dict.fromkeys(("corridor_congestion_hours", "corridor_hours_at_limit"), ("corridor",)),
+    **dict.fromkeys(
+        ("pair_flow", "pair_rating", "pair_shadow_price", "pair_limit_side", "pair_rent"), ("pair",)),
     "cost": ("time", "component"),
     "window": ("time",),
 }  # fmt: skip
@@ -49,8 +55,22 @@ COMPONENTS = (
     "unit_running", "unit_start", "renewable", "storage", "unserved", "surplus", "reserve_shortage",
 )  # fmt: skip
 MODES = ("given", "relaxed", "optimal")
-LIMITS = ("none", "lines")
+LIMITS = ("none", "lines", "secure")
+ENDLESS = {"line_rating", "corridor_forward_limit", "corridor_reverse_limit"}
+"""Variables in which infinity means that there is no limit."""
 PRICING = ("fixed", "relaxed")
+
+
+@dataclass(frozen=True, eq=False)
+class Pairs:
+    """Lines priced after a contingency, arrays (pair,).
+
+    lost : name of the contingency; line, period : positions
+    """
+
+    lost: NDArray[np.str_]
+    line: Integers
+    period: Integers
 
 
 @dataclass(frozen=True, eq=False)
@@ -60,8 +80,8 @@ class Evidence:
     names : dimension → labels in the order of the case's table
     span : the run's periods on the case's time axis; hours : their local starts
     length : Δ, h; mode, limits, pricing : what the run was asked for
-    values : variable → array with the dimensions of `DIMENSIONS`; NaN for what is endless and is not
-        the rating of a line
+    values : variable → array with the dimensions of `DIMENSIONS`; NaN for what is endless and no limit
+    pairs : what is priced after a contingency
     """
 
     case: Case
@@ -72,6 +92,7 @@ class Evidence:
     limits: str
     pricing: str
     values: Mapping[str, Floats] = field(repr=False)
+    pairs: "Pairs" = field(repr=False)
 
     def __getitem__(self, variable: str) -> Floats:
         return self.values[variable]
@@ -176,7 +197,7 @@ def gather(case: Case, dataset: xr.Dataset) -> Evidence:
     names = {
         "bus": case.buses.index, "line": case.lines.index, "unit": case.units.index,
         "plant": case.renewables.index, "store": case.storage.index, "tie": case.dc_ties.index,
-        "load": case.loads.index, "component": pd.Index(COMPONENTS),
+        "load": case.loads.index, "component": pd.Index(COMPONENTS), "corridor": case.corridors.index,
     }  # fmt: skip
     for dimension, expected in names.items():
         _same_elements(dataset, dimension, expected)
@@ -185,8 +206,11 @@ def gather(case: Case, dataset: xr.Dataset) -> Evidence:
         raise _unfit("the case", "must be without network losses", "losses", "audit it without")
     mode = _choice(dataset, "commitment", MODES)
     wanted = {**DIMENSIONS, **(OF_DECISIONS if mode == "optimal" else {})}
+    span = _span(case, dataset)
+    pairs = _pairs(case, dataset, span)
+    names["pair"] = pd.Index([str(name) for name in dataset["pair"].to_numpy()])
     return Evidence(
-        case=case, names=names, span=_span(case, dataset), length=_length(case, dataset), mode=mode,
+        case=case, names=names, span=span, pairs=pairs, length=_length(case, dataset), mode=mode,
         limits=_choice(dataset, "limits", LIMITS), pricing=_choice(dataset, "pricing", PRICING),
         values={name: _values(dataset, name, dims) for name, dims in wanted.items()},
     )  # fmt: skip
@@ -245,6 +269,21 @@ def _span(case: Case, dataset: xr.Dataset) -> slice:
     return slice(first, first + len(places))
 
 
+def _pairs(case: Case, dataset: xr.Dataset, span: slice) -> Pairs:
+    """Find the lines and periods of what is priced after a contingency."""
+    subject = "dimension pair of the dataset"
+    for name in ("pair", "pair_contingency", "pair_line", "pair_time"):
+        if name not in dataset.coords:
+            raise _unfit(subject, f"must have the coordinate {name}", "none", _RERUN)
+    times = pd.DatetimeIndex(dataset["pair_time"].to_numpy()).tz_localize("UTC")
+    period = case.time.periods[span].get_indexer(times)
+    line = case.lines.index.get_indexer(pd.Index(dataset["pair_line"].to_numpy()))
+    if (period < 0).any() or (line < 0).any():
+        found = [str(name) for name in dataset["pair"].to_numpy()[(period < 0) | (line < 0)][:5]]
+        raise _unfit(subject, "must be of lines and periods of the run", found, _RERUN)
+    return Pairs(dataset["pair_contingency"].to_numpy().astype(str), line, period)
+
+
 def _values(dataset: xr.Dataset, name: str, dimensions: tuple[str, ...]) -> Floats:
     subject, rule = f"variable {name} of the dataset", f"must be there over {', '.join(dimensions)}"
     if name not in dataset:
@@ -253,5 +292,5 @@ def _values(dataset: xr.Dataset, name: str, dimensions: tuple[str, ...]) -> Floa
     if set(variable.dims) != set(dimensions):
         raise _unfit(subject, rule, f"it over {', '.join(map(str, variable.dims))}", _RERUN)
     values = variable.transpose(*dimensions).to_numpy().astype(float)
-    endless = np.isinf(values) & ((name != "line_rating") | (values < 0))
+    endless = np.isinf(values) & ((values < 0) | (name not in ENDLESS))
     return np.where(endless, np.nan, values)

@@ -1,6 +1,6 @@
 """Islands and power flow, from the lines of the case and nothing else.
 
-Public names: `Network`.
+Public names: `Network`, `PowerFlow`.
 
 With A the incidence (line, bus), b = base_mva/(reactance·tap) in MW/rad, φ the phase shift in rad
 (formulation.md 2.6):  flow = b·(A·θ − φ)  and  Aᵀ·flow = injection,  so  AᵀbA·θ = injection + Aᵀb·φ.
@@ -20,7 +20,7 @@ from simulator.audit.evidence import Evidence
 from simulator.case import series
 from simulator.errors import AuditError
 
-__all__ = ["Network"]
+__all__ = ["Network", "PowerFlow"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -46,21 +46,31 @@ class Network:
         self.in_service = series.in_service(evidence.case, evidence.span)
         self._flows = self._one_for_each_state()
 
-    def _one_for_each_state(self) -> "list[tuple[Integers, _Flow]]":
+    @cached_property
+    def states(self) -> "list[tuple[Integers, Booleans]]":
+        """Pair the periods of each distinct set of lines in service with that set, array (line,)."""
+        return [(periods, self.in_service[periods[0]]) for periods, _ in self._flows]
+
+    def islands(self, used: Booleans) -> int:
+        """Return the number of islands that some lines leave; used : array (line,)."""
+        return int(_islands(self.from_bus, self.to_bus, used, self.buses).max(initial=-1)) + 1
+
+    def _one_for_each_state(self) -> "list[tuple[Integers, PowerFlow]]":
         """Pair each distinct set of lines in service with the periods that have it."""
         periods_of: dict[bytes, list[int]] = {}
         for period, state in enumerate(self.in_service):
             periods_of.setdefault(state.tobytes(), []).append(period)
         return [
-            (np.array(periods), self._flow(self.in_service[periods[0]]))
+            (np.array(periods), self.power_flow(self.in_service[periods[0]]))
             for periods in periods_of.values()
         ]
 
-    def _flow(self, used: Booleans) -> "_Flow":
+    def power_flow(self, used: Booleans) -> "PowerFlow":
+        """Return the power flow with these lines in service, array (line,)."""
         susceptance = np.where(used, self._susceptance, 0.0)
-        return _Flow(self.from_bus, self.to_bus, used, susceptance, self._shift, self.buses)
+        return PowerFlow(self.from_bus, self.to_bus, used, susceptance, self._shift, self.buses)
 
-    def _by_state(self, width: int, part: "Callable[[_Flow, Integers], Floats]") -> Floats:
+    def _by_state(self, width: int, part: "Callable[[PowerFlow, Integers], Floats]") -> Floats:
         found = np.zeros((self.periods, width))
         for periods, flow in self._flows:
             found[periods] = part(flow, periods)
@@ -94,7 +104,14 @@ class Network:
         )
 
 
-class _Flow:
+def _islands(from_bus: Integers, to_bus: Integers, used: Booleans, buses: int) -> Integers:
+    """Return the number of the island each bus is in, array (bus,)."""
+    links = sparse.coo_array((used[used], (from_bus[used], to_bus[used])), shape=(buses, buses))
+    island: Integers = csgraph.connected_components(links, directed=False)[1]
+    return island
+
+
+class PowerFlow:
     """The power flow of one set of lines in service."""
 
     def __init__(
@@ -106,8 +123,7 @@ class _Flow:
         shift: Floats,
         buses: int,
     ) -> None:
-        links = sparse.coo_array((used[used], (from_bus[used], to_bus[used])), shape=(buses, buses))
-        self.island: Integers = csgraph.connected_components(links, directed=False)[1]
+        self.island = _islands(from_bus, to_bus, used, buses)
         line = np.arange(len(from_bus))
         ends = np.concatenate([line, line]), np.concatenate([from_bus, to_bus])
         signs = np.repeat([1.0, -1.0], len(line))
@@ -143,13 +159,16 @@ class _Flow:
         return angle
 
     def flows(self, injection: Floats) -> Floats:
+        """Return line flows (period, line), MW, from injections (period, bus), MW."""
         angle = self._angles(injection.T + self._into_bus[:, None])
         return (self._weighted @ angle).T - self._pushed
 
     def collected(self, weight: Floats) -> Floats:
+        """Return Σ_l PTDF_ln·weight_l, array (row, bus), for weights (row, line)."""
         return self._angles(self._weighted.T @ weight.T).T
 
     def over_island(self, values: Floats, ufunc: np.ufunc) -> Floats:
+        """Give every bus what a ufunc makes of values (period, bus) over its island."""
         found = np.zeros((len(values), int(self.island.max(initial=-1)) + 1))
         ufunc.at(found.T, self.island, values.T)
         return found[:, self.island]

@@ -44,7 +44,7 @@ def _missing(evidence: Evidence) -> list[Residual]:
         values = evidence[variable]
         there = ~np.isnan(values)
         kind, names = "variable", pd.Index([variable])
-        if len(dimensions) > 1 or dimensions == ("line",):
+        if dimensions != ("time",):
             kind, names = dimensions[-1], evidence.names[dimensions[-1]]
         else:
             there = there[:, None]

@@ -2,8 +2,7 @@
 
 Public names: `price_checks`.
 
-Datasets hold shadow prices without sign; the sign of a line's dual is against its flow, or, in mode
-`optimal`, against the side the dataset names. Where a line with a shadow price carries nothing (its
+Where a line with a shadow price carries nothing (its
 rating is zero) and no side is named the sign is open, and what needs it is left out for that island and
 period. Prices of a relaxation come with its shadow prices, whose limits the plan need not be at.
 """
@@ -12,8 +11,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from simulator.audit.check import ADDED, COUNTED, POWER, Check, Residual, apart, judge
-from simulator.audit.evidence import Evidence, summed
+from simulator.audit.evidence import DIMENSIONS, Evidence, summed
+from simulator.audit.limits import Security
 from simulator.audit.network import Network
+from simulator.audit.shadows import Shadows, collected, gather_shadows, rent_at_bus
 
 __all__ = ["price_checks"]
 
@@ -28,27 +29,23 @@ NO_LOAD = 1e-9
 """MW; an island with less has a reference in which all its buses weigh the same."""
 
 
-def price_checks(evidence: Evidence, network: Network) -> list[Check]:
+def price_checks(evidence: Evidence, network: Network, security: Security) -> list[Check]:
     """Check the parts of prices (5.1), the rent identity (5.2) and congestion hours (5.3)."""
     hours = evidence.hours
     return [
         judge("price parts", ADDED, hours, [_parts(evidence)]),
         *_kind(evidence),
         judge("energy price", ADDED, hours, _energy(evidence, network)),
-        judge("congestion price", ADDED, hours, [_congestion(evidence, network)]),
+        judge("congestion price", ADDED, hours, [_congestion(evidence, network, security)]),
         judge("shadow prices", POWER, hours, _shadow_prices(evidence)),
-        judge("congestion rent", ADDED, hours, [_rent(evidence)]),
-        judge("rent identity", POWER, hours, [_identity(evidence, network)]),
+        judge("congestion rent", ADDED, hours, _rent(evidence)),
+        judge("rent identity", POWER, hours, [_identity(evidence, network, security)]),
         judge("congestion hours", COUNTED, hours, _hours(evidence)),
     ]
 
 
 def _at_buses(evidence: Evidence, values: Floats, rule: str = "") -> Residual:
     return Residual("bus", evidence.names["bus"], rule, values)
-
-
-def _at_lines(evidence: Evidence, values: Floats, rule: str = "") -> Residual:
-    return Residual("line", evidence.names["line"], rule, values)
 
 
 def _parts(evidence: Evidence) -> Residual:
@@ -85,12 +82,6 @@ def _energy(evidence: Evidence, network: Network) -> list[Residual]:
     ]
 
 
-def _signed(evidence: Evidence) -> Floats:
-    """Return the duals of line limits: negative where the flow is held down at +F."""
-    signed: Floats = -evidence.limit_side * evidence["line_shadow_price"]
-    return signed
-
-
 def _open(evidence: Evidence, network: Network) -> Booleans:
     """Tell at which buses the sign of some shadow price of the island is open, (period, bus)."""
     priced = evidence["line_shadow_price"] > PRICED
@@ -99,60 +90,76 @@ def _open(evidence: Evidence, network: Network) -> Booleans:
     return network.island_sum(at_bus) > 0
 
 
-def _congestion(evidence: Evidence, network: Network) -> Residual:
+def _congestion(evidence: Evidence, network: Network, security: Security) -> Residual:
     """5.1: congestion_n = Σ_l PTDF_ln·μ_l, with the PTDF of the load-weighted reference."""
-    collected = network.collected(_signed(evidence))
-    at_reference = network.island_sum(_weights(evidence, network) * collected)
-    off = apart(evidence["price_congestion"], collected - at_reference)
+    by_bus = collected(evidence, network, security)
+    at_reference = network.island_sum(_weights(evidence, network) * by_bus)
+    off = apart(evidence["price_congestion"], by_bus - at_reference)
     return _at_buses(evidence, np.where(_open(evidence, network), 0.0, off))
 
 
 def _shadow_prices(evidence: Evidence) -> list[Residual]:
-    """No shadow price is negative; where there is one, the flow is at the rating, MW."""
-    shadow = evidence["line_shadow_price"]
-    if evidence.limits == "none":
-        return [_at_lines(evidence, np.abs(shadow), "without limits")]
-    sign = _at_lines(evidence, -shadow, "sign")
-    side = np.abs(np.abs(evidence.limit_side) - 1.0)
-    named = _at_lines(evidence, np.where(shadow > PRICED, side, 0.0), "side")
-    if evidence.pricing == "relaxed":
-        return [sign, named]
-    slack = np.abs(evidence.limit_side * evidence["line_flow"] - evidence["line_rating"])
-    off = _at_lines(evidence, np.where(shadow > PRICED, slack, 0.0), "off its limit")
-    return [sign, off] if evidence.mode != "optimal" else [sign, named, off]
+    """No shadow price is negative; where there is one, the flow is at the limit, MW."""
+    return [
+        Residual(limits.kind, evidence.names[limits.kind], rule, values)
+        for limits in gather_shadows(evidence)
+        for rule, values in _of_one_kind(evidence, limits).items()
+    ]
 
 
-def _rent(evidence: Evidence) -> Residual:
+def _of_one_kind(evidence: Evidence, limits: Shadows) -> dict[str, Floats]:
+    if not limits.held:
+        return {"without limits": np.abs(limits.shadow)}
+    priced = limits.shadow > PRICED
+    found = {"sign": -limits.shadow}
+    if limits.kind != "line" or evidence.mode == "optimal":
+        found["side"] = np.where(priced, np.abs(np.abs(limits.side) - 1.0), 0.0)
+    if evidence.pricing == "fixed":
+        slack = np.abs(limits.side * limits.flow - limits.limit)
+        found["off its limit"] = np.where(priced, slack, 0.0)
+    return found
+
+
+def _rent(evidence: Evidence) -> list[Residual]:
     """5.2: shadow price × flow towards the limit × Δ, as a share of it where it is large."""
-    rent = -_signed(evidence) * evidence["line_flow"] * evidence.length
-    off = apart(evidence["congestion_rent"], rent) / np.maximum(1.0, np.abs(rent))
-    return _at_lines(evidence, off)
+    found = []
+    for limits in gather_shadows(evidence):
+        rent = -limits.signed * limits.flow * evidence.length
+        off = apart(limits.rent, rent) / np.maximum(1.0, np.abs(rent))
+        found.append(Residual(limits.kind, evidence.names[limits.kind], "", off))
+    return found
 
 
-def _identity(evidence: Evidence, network: Network) -> Residual:
-    """5.2: Σ_n price_n·(withdrawal_n − injection_n)·Δ = Σ_l rent_l, in MWh at the island's dearest price.
+def _identity(evidence: Evidence, network: Network, security: Security) -> Residual:
+    """5.2: Σ_n price_n·(withdrawal_n − injection_n)·Δ = Σ rent, in MWh at the island's dearest price.
 
-    What phase shifters alone make flow is taken off the lines' flows.
+    What phase shifters alone make flow is taken off the flows.
     """
     paid = network.island_sum(-evidence["price"] * evidence.injection) * evidence.length
-    constant = _signed(evidence) * network.shift_flows * evidence.length
-    rent = summed(evidence["congestion_rent"] + constant, network.from_bus, network.buses)
+    rent = network.island_sum(rent_at_bus(evidence, network, security))
     dearest = network.island_peak(np.abs(evidence["price"]))
-    off = apart(paid, network.island_sum(rent)) / np.maximum(1.0, dearest)
+    off = apart(paid, rent) / np.maximum(1.0, dearest)
     off = np.where(_open(evidence, network), 0.0, off)
     return Residual("island of bus", evidence.names["bus"], "", off)
 
 
 def _hours(evidence: Evidence) -> list[Residual]:
     """5.3: hours with a shadow price, and hours at the limit, counted again."""
-    priced = evidence["line_shadow_price"] > PRICED
-    at_limit = np.abs(evidence["line_flow"]) >= evidence["line_rating"] - AT_LIMIT
-    counted = {"congestion_hours": priced, "hours_at_limit": at_limit}
-    return [
-        _at_lines(
-            evidence,
-            apart(evidence[variable], marked.sum(axis=0) * evidence.length),
-            variable.replace("_", " "),
-        )
-        for variable, marked in counted.items()
-    ]
+    line, corridor, pair = gather_shadows(evidence)
+    after = np.zeros(line.flow.shape, dtype=bool)
+    np.logical_or.at(after, (evidence.pairs.period, evidence.pairs.line), pair.shadow > PRICED)
+    flow, forward = corridor.flow, evidence["corridor_forward_limit"]
+    counted = {
+        "congestion_hours": line.shadow > PRICED,
+        "hours_at_limit": np.abs(line.flow) >= line.limit - AT_LIMIT,
+        "security_hours": after,
+        "corridor_congestion_hours": corridor.shadow > PRICED,
+        "corridor_hours_at_limit": (flow >= forward - AT_LIMIT)
+        | (flow <= AT_LIMIT - evidence["corridor_reverse_limit"]),
+    }
+    found = []
+    for variable, marked in counted.items():
+        (kind,) = DIMENSIONS[variable]
+        off = apart(evidence[variable], marked.sum(axis=0) * evidence.length)
+        found.append(Residual(kind, evidence.names[kind], variable.replace("_", " "), off))
+    return found

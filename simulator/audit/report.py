@@ -13,6 +13,7 @@ from simulator.audit.check import Check
 from simulator.audit.commitment import commitment_checks
 from simulator.audit.costs import cost_checks
 from simulator.audit.evidence import gather
+from simulator.audit.limits import Security, limit_checks
 from simulator.audit.network import Network
 from simulator.audit.optimality import optimality_checks
 from simulator.audit.powers import power_checks
@@ -32,11 +33,13 @@ def audit(case: Case, dataset: xr.Dataset) -> list[Check]:
     """
     evidence = gather(case, dataset)
     network, units = Network(evidence), Units(evidence)
+    security = Security.of(evidence, network)
     return [
         *power_checks(evidence, network, units),
         *commitment_checks(evidence, units),
         *storage_checks(evidence),
-        *price_checks(evidence, network),
+        *limit_checks(evidence, network, security),
+        *price_checks(evidence, network, security),
         *optimality_checks(evidence, units),
         *cost_checks(evidence, units),
     ]

@@ -219,7 +219,8 @@ def run_inputs(case: Case, span: slice, run_periods: int, mode: str, limits: str
     cells = common_cells(topology.topologies)
     whole = WindowInputs(
         number=0, first=0, mode=mode, gap=case.settings.commitment.mip_gap,
-        seconds=case.settings.commitment.seconds, limited=limits != "none", period_hours=case.time.period_hours,
+        seconds=case.settings.commitment.seconds, limited=limits != "none",
+        period_hours=case.time.period_hours,
         surplus_cost=case.settings.penalties.surplus, short_cost=_short_cost(case),
         limits=_limits(case, span, network, secure=limits == "secure"), topology=topology, cells=cells,
         joined=cells.joined[topology.index], buses=len(case.buses), ends_run=True,

@@ -1,6 +1,6 @@
 """Network limits on demand (formulation.md 2.6 and 3): the rows, when they are added, and when they go.
 
-Public names: `Duals`, `LimitRows`, `Pairs`.
+Public names: `Duals`, `LimitRows`.
 
 A row reads  lower − fixed ≤ Σ_columns (w·PTDF)·factor·x ≤ upper − fixed, where w are the weights with which
 line flows count in it (`NetworkLimits.weights`) and `fixed` is what demand and phase shifters make it carry
@@ -17,11 +17,12 @@ from simulator.dispatch.compiled import CompiledFleet
 from simulator.dispatch.injections import InjectionMap
 from simulator.dispatch.inputs import WindowInputs
 from simulator.dispatch.limits import NONE, Places
+from simulator.dispatch.priced import Pairs
 from simulator.dispatch.solver import BASIC, LinearSolver
 from simulator.dispatch.start import Start
 from simulator.grid import Topology
 
-__all__ = ["Duals", "LimitRows", "Pairs"]
+__all__ = ["Duals", "LimitRows"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -32,35 +33,10 @@ _SMALLEST_FACTOR = 1e-9  # HiGHS drops smaller coefficients by itself
 
 
 @dataclass(frozen=True, eq=False)
-class Pairs:
-    """Lines priced after a contingency, arrays (pair,).
-
-    contingency, line, period : positions; dual : signed, currency/MWh
-    """
-
-    contingency: Integers
-    line: Integers
-    period: Integers
-    dual: Floats
-
-    def between(self, first: int, last: int, begins: int) -> "Pairs":
-        """Return the pairs of some periods, counted anew from `begins`."""
-        here = (self.period >= first) & (self.period < last)
-        period = self.period[here] - first + begins
-        return Pairs(self.contingency[here], self.line[here], period, self.dual[here])
-
-    @classmethod
-    def joined(cls, parts: "list[Pairs]") -> "Pairs":
-        """Put pairs end to end."""
-        names = ("contingency", "line", "period", "dual")
-        return cls(*(np.concatenate([getattr(part, name) for part in parts]) for name in names))
-
-
-@dataclass(frozen=True, eq=False)
 class Duals:
-    """What limits cost, signed: negative where a flow is held down at its upper limit, currency/MWh.
+    """What limits cost, signed, currency/MWh.
 
-    line : array (period, line), as things are; corridor : array (period, corridor); pairs : after losses
+    line (period, line), corridor (period, corridor), pairs : as in `Priced`
     flow : array (period, line), all of them as if they were duals of line flows: with it
         price_n = energy + Σ_l PTDF_ln·flow_l (5.1)
     """
@@ -232,7 +208,9 @@ def possible(inputs: WindowInputs, places: Places) -> NDArray[np.bool_]:
     found = places.contingency == NONE
     for number in np.unique(inputs.topology.index[places.period]).tolist():
         here = inputs.topology.index[places.period] == number
-        held = np.unique(inputs.limits.contingencies.after(inputs.topology.topologies[number]).owner)
+        held = np.unique(
+            inputs.limits.contingencies.after(inputs.topology.topologies[number]).owner
+        )
         found |= here & np.isin(places.contingency, held)
     return found
 

@@ -3,7 +3,7 @@
 Public names: `FLOW_TOLERANCE`, `NONE`, `NetworkLimits`, `Places`.
 
 Three kinds of limit, all on sums of line flows: a line within its rating, a corridor within its limits,
-and a line within its emergency rating after a contingency. `line_rows.py` makes rows of them.
+and a line within its emergency rating after a contingency. `limit_rows.py` makes rows of them.
 """
 
 from dataclasses import dataclass
@@ -138,11 +138,9 @@ class NetworkLimits:
         are seldom needed once it holds.
         """
         as_is = self._broken_as_is(flow)
-        after = [
-            self._worst(self._broken_after(topology, flow, periods), standing)
-            for topology, periods in _by_topology(schedule)
-        ]
-        found = sum((places for places in after), as_is[as_is.found_in(standing) < 0])
+        found = as_is[as_is.found_in(standing) < 0]
+        for topology, periods in _by_topology(schedule):
+            found += self._worst(self._broken_after(topology, flow, periods), standing)
         return found
 
     def _broken_as_is(self, flow: Floats) -> Places:

@@ -5,7 +5,6 @@ Public names: `WindowError`, `WindowModel`, `WindowSolution`, `shape_of`.
 
 import time
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,7 +14,8 @@ from simulator.dispatch.compiled import CompiledFleet, compile_fleet
 from simulator.dispatch.counts import Counts, WindowRecord
 from simulator.dispatch.fleet import fleet_data, given_commitment
 from simulator.dispatch.inputs import WindowInputs
-from simulator.dispatch.limit_rows import Duals, LimitRows, Pairs
+from simulator.dispatch.limit_rows import LimitRows
+from simulator.dispatch.priced import Priced
 from simulator.dispatch.search import Decided, Search
 from simulator.dispatch.solver import LinearSolver, SolverError
 from simulator.dispatch.start import Start, shifted
@@ -47,11 +47,8 @@ class WindowSolution:
     on, start, stop, cold_start : (period, unit), 0..1
     output (unit), block (block), renewable (plant), charge, discharge (store), tie_forward, tie_reverse
     (tie), unserved (load), surplus (bus), flow (line) : MW; stored (store) : MWh at the end of a period
-    price : (period, bus), currency/MWh (5.1)
-    line_dual (period, line), corridor_dual (period, corridor) : signed, currency/MWh; negative where a
-        flow is held down at its upper limit; pairs : the same of lines after contingencies
-    relaxed_… : the same from the relaxation, in which any decision may be partly taken; they differ in
-        mode `optimal` only
+    priced : prices, and what limits cost; relaxed : the same from the relaxation, in which any decision
+        may be partly taken; they differ in mode `optimal` only
     objective : currency; left : what the next window may start from
     """
 
@@ -70,16 +67,20 @@ class WindowSolution:
     unserved: Floats
     surplus: Floats
     flow: Floats
-    price: Floats
-    line_dual: Floats
-    corridor_dual: Floats
-    pairs: Pairs
-    relaxed_price: Floats
-    relaxed_line_dual: Floats
-    relaxed_corridor_dual: Floats
-    relaxed_pairs: Pairs
+    priced: Priced
+    relaxed: Priced
     objective: float
     left: Start
+
+    @property
+    def price(self) -> Floats:
+        """Prices, array (period, bus), currency/MWh."""
+        return self.priced.price
+
+    @property
+    def line_dual(self) -> Floats:
+        """Signed duals of lines as things are, array (period, line), currency/MWh."""
+        return self.priced.line
 
     def state_after(self, before: State, kept: int, hot_periods: Integers, *, whole: bool) -> State:
         """Return the state at the end of the first `kept` periods (formulation.md 4).
@@ -158,14 +159,9 @@ class WindowModel:
         except SolverError as failure:
             raise WindowError(failure.status, self._contradictions(failure)) from failure
         self._record(inputs, time.perf_counter() - began, decided)
-        price, duals = self._prices(inputs, attempt) if decided else relaxed
-        priced = {
-            "price": price, "line_dual": duals.line, "corridor_dual": duals.corridor,
-            "pairs": duals.pairs, "relaxed_price": relaxed[0], "relaxed_line_dual": relaxed[1].line,
-            "relaxed_corridor_dual": relaxed[1].corridor, "relaxed_pairs": relaxed[1].pairs,
-        }  # fmt: skip
+        priced = self._prices(inputs, attempt) if decided else relaxed
         left = self._left(inputs, attempt, decided)
-        return self._solution(inputs, state, attempt, priced, left)
+        return self._solution(inputs, state, attempt, (priced, relaxed), left)
 
     def _record(self, inputs: WindowInputs, seconds: float, decided: Decided | None) -> None:
         record = WindowRecord(inputs.number, seconds)
@@ -255,7 +251,7 @@ class WindowModel:
         inputs: WindowInputs,
         state: State,
         attempt: Attempt,
-        priced: dict[str, Any],
+        priced: tuple[Priced, Priced],
         left: Start,
     ) -> WindowSolution:
         values = self.fleet.named(attempt.solution)
@@ -270,18 +266,19 @@ class WindowModel:
             cold = np.zeros_like(decided["start"])
             cold[:, inputs.unit.cold_rows] = values.pop("cold_start")
         return WindowSolution(
-            **decided, **values, **priced, cold_start=cold, flow=attempt.flow,
-            objective=self._solver.objective, left=left,
+            **decided, **values, cold_start=cold, flow=attempt.flow, priced=priced[0],
+            relaxed=priced[1], objective=self._solver.objective, left=left,
         )  # fmt: skip
 
-    def _prices(self, inputs: WindowInputs, attempt: Attempt) -> tuple[Floats, Duals]:
-        """Return prices (period, bus) of the last solve, and what limits cost in it (5.1).
+    def _prices(self, inputs: WindowInputs, attempt: Attempt) -> Priced:
+        """Return prices of the last solve, and what limits cost in it (5.1).
 
         price_n = (dual of n's balance row)/Δ + Σ_l PTDF_ln·μ_l
         """
         energy = attempt.row_dual[self.fleet.rows["balance"]][:, inputs.cells.cell]
         duals = self.limits.duals(attempt.row_dual, inputs)
-        return energy / inputs.period_hours + inputs.topology.collected(duals.flow), duals
+        price = energy / inputs.period_hours + inputs.topology.collected(duals.flow)
+        return Priced(price, duals.line, duals.corridor, duals.pairs)
 
 
 _WITHIN = ("exchange", "energy_short", "stopped", "matched", "tie_way")

@@ -29,7 +29,9 @@ Integers = NDArray[np.int64]
 Booleans = NDArray[np.bool_]
 
 _SINGULAR = 1e-7
-_AT_ONCE = 2_000_000  # flows of one block of contingencies; a larger one leaves the processor's cache
+_AT_ONCE = (
+    2_000_000  # flows of one block of contingencies; a larger one leaves the processor's cache
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -118,7 +120,9 @@ class AfterLoss:
             some = held[start : start + step]
             begin = first[start]
             end = first[start + step] if start + step < len(first) else len(self.owner)
-            moved = factors[:, begin:end].T[:, None, :] * flow[:, self.line[begin:end]].T[:, :, None]
+            moved = (
+                factors[:, begin:end].T[:, None, :] * flow[:, self.line[begin:end]].T[:, :, None]
+            )
             if end - begin > len(some):
                 moved = np.add.reduceat(moved, first[start : start + step] - begin, axis=0)
             moved += before
@@ -142,14 +146,16 @@ def _own_transfer(topology: Topology, line: Integers) -> Floats:
     return topology.transfer(line)[line] if len(line) else np.zeros((0, 0))
 
 
-def _inverses(
-    transfer: Floats, owner: Integers, count: int
-) -> tuple[sparse.csr_array, Booleans]:
+def _inverses(transfer: Floats, owner: Integers, count: int) -> tuple[sparse.csr_array, Booleans]:
     """Return (1 − T_KK)⁻¹ of every contingency on the diagonal of one matrix, and which have none."""
     splits = np.zeros(count, dtype=bool)
     blocks = []
     for contingency, size in zip(*np.unique(owner, return_counts=True), strict=True):
-        own = np.flatnonzero(owner == contingency) if size > 1 else np.searchsorted(owner, [contingency])
+        own = (
+            np.flatnonzero(owner == contingency)
+            if size > 1
+            else np.searchsorted(owner, [contingency])
+        )
         system = np.eye(size) - transfer[np.ix_(own, own)]
         splits[contingency] = np.linalg.svd(system, compute_uv=False)[-1] < _SINGULAR
         blocks.append(np.eye(size) if splits[contingency] else np.linalg.inv(system))

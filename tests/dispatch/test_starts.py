@@ -37,7 +37,7 @@ def test_what_a_model_solved_before_leaves_no_trace(convex_case, seed, mode):
     case = convex_case(seed)
     periods = len(case.time)
     length, keep = periods // 2, max(periods // 4, 1)
-    inputs = run_inputs(case, slice(0, periods), periods, mode, limited=True)
+    inputs = run_inputs(case, slice(0, periods), periods, mode, "lines")
     state, start, steps = initial_state(case, inputs.whole.unit), None, []
     model = WindowModel(inputs.window(0, 0, length), state, Counts())
     for number, first in enumerate(range(0, periods - length + 1, keep)):

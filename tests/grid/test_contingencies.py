@@ -49,9 +49,7 @@ def test_flows_after_a_loss_are_those_of_the_network_without_the_lines(seed, isl
             weights = after.weights(np.full(len(every), contingency), every)
             np.testing.assert_allclose((weights @ flow.T).T, left.flows(injection), atol=1e-6)
             seen.append(contingency)
-    split = [
-        without(net, topology, group).islands > topology.islands for group in groups
-    ]
+    split = [without(net, topology, group).islands > topology.islands for group in groups]
     assert sorted(seen) == np.flatnonzero(~np.array(split)).tolist()
     assert after.splits.tolist() == split
 
