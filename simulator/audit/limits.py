@@ -105,7 +105,7 @@ class Security:
                 yield some, self.after(name, used) if known else None
 
 
-def limit_checks(evidence: Evidence, network: Network, security: Security) -> list[Check]:
+def limit_checks(evidence: Evidence, security: Security) -> list[Check]:
     """Check corridors, and what is carried after contingencies."""
     hours = evidence.hours
     found = [
@@ -152,9 +152,9 @@ def _corridor_limits(evidence: Evidence) -> list[Residual]:
 
 
 def _pairs(evidence: Evidence, security: Security) -> list[Residual]:
-    """Hold flows after losses to fresh power flows, and ratings to the case; a loss that asks for
+    """Hold flows after losses to fresh power flows, and ratings to the case.
 
-    nothing, or of which the case does not know, has no price.
+    A loss that asks for nothing, or of which the case does not know, has no price.
     """
     pairs, injection = evidence.pairs, evidence.injection
     flow = np.full(len(pairs.line), np.inf)

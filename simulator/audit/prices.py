@@ -2,9 +2,9 @@
 
 Public names: `price_checks`.
 
-Where a line with a shadow price carries nothing (its
-rating is zero) and no side is named the sign is open, and what needs it is left out for that island and
-period. Prices of a relaxation come with its shadow prices, whose limits the plan need not be at.
+Where a line with a shadow price carries nothing (its rating is zero) and no side is named the sign is
+open, and what needs it is left out for that island and period. Prices of a relaxation come with its
+shadow prices, whose limits the plan need not be at.
 """
 
 import numpy as np

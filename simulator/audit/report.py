@@ -38,7 +38,7 @@ def audit(case: Case, dataset: xr.Dataset) -> list[Check]:
         *power_checks(evidence, network, units),
         *commitment_checks(evidence, units),
         *storage_checks(evidence),
-        *limit_checks(evidence, network, security),
+        *limit_checks(evidence, security),
         *price_checks(evidence, network, security),
         *optimality_checks(evidence, units),
         *cost_checks(evidence, units),

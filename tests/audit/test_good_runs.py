@@ -12,7 +12,7 @@ from simulator.horizon import MODES, plan_run, run
 from simulator.results import open_run, save, to_dataset
 from tests.audit.plants import town_case
 from tests.dispatch.building import case_of
-from tests.dispatch.drawing import drawn
+from tests.dispatch.drawing import drawn, secured
 from tests.support import write_case
 
 RTS_GMLC = Path(__file__).parents[2].parent / "shared" / "data" / "rts-gmlc"
@@ -46,6 +46,19 @@ def test_random_cases_pass(tmp_path, seed, windows, mode):
     if windows != "one window":  # what a store must end with may be out of reach by then
         checks = [check for check in checks if check.name != "final energy"]
     assert not checks
+
+
+@pytest.mark.parametrize("mode", MODES)
+@pytest.mark.parametrize("seed", range(300, 308))
+def test_random_cases_with_corridors_and_contingencies_pass(tmp_path, seed, mode):
+    try:
+        case = case_of(tmp_path / "case", **secured(seed))
+        dataset = solved(case, mode, limits="secure")
+    except (CaseError, SolveError):
+        pytest.skip("the case contradicts itself")
+    checks = audit(case, dataset)
+    assert {"corridor limits", "security"} <= {check.name for check in checks}
+    assert not failed(checks)
 
 
 @pytest.mark.parametrize("mode", MODES)

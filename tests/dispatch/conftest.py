@@ -7,7 +7,7 @@ import pytest
 
 from simulator.case import Case
 from tests.dispatch.building import case_of
-from tests.dispatch.drawing import drawn, lossless
+from tests.dispatch.drawing import drawn, lossless, secured
 
 
 @pytest.fixture(scope="session")
@@ -20,3 +20,9 @@ def random_case(tmp_path_factory) -> Callable[[int], Case]:
 def convex_case(tmp_path_factory) -> Callable[[int], Case]:
     """The same with ties that lose nothing, so that its optimum is that of a linear program."""
     return cache(lambda seed: case_of(tmp_path_factory.mktemp("convex") / "case", **lossless(seed)))
+
+
+@pytest.fixture(scope="session")
+def secured_case(tmp_path_factory) -> Callable[[int], Case]:
+    """The same with corridors, emergency ratings and contingencies."""
+    return cache(lambda seed: case_of(tmp_path_factory.mktemp("secured") / "case", **secured(seed)))

@@ -1,4 +1,4 @@
-"""Random small cases full of corners: `drawn(seed)` and `lossless(seed)` give the arguments of `case_of`.
+"""Random small cases full of corners: `drawn`, `lossless` and `secured` give the arguments of `case_of`.
 
 Data are consistent most of the time, not always: what contradicts itself must be refused as well.
 """
@@ -91,6 +91,37 @@ def lossless(seed: int) -> dict[str, Any]:
     system = drawn(seed)
     ties = [row | {"loss_percent": None} for row in system["dc_ties"]]
     return system | {"dc_ties": ties}
+
+
+def secured(seed: int) -> dict[str, Any]:
+    """The same case with corridors, with emergency ratings and, often, with contingencies of its own.
+
+    Some corridors are in the way, some losses would split the network, some are of two lines or of lines
+    that are out at times.
+    """
+    system, draw = lossless(seed), Draw(seed + 10_000)
+    draw.periods = system["periods"]
+    names = [row["line"] for row in system["lines"]]
+    lines = [row | {"emergency_rating_mw": draw.maybe(0.7, 20, 110)} for row in system["lines"]]
+    corridors, members = [], []
+    for number in range(draw.random.integers(0, 3) if names else 0):
+        corridor = f"corridor {number}"
+        profile = draw.profile(f"{corridor} shape", 0.5, 1.1) if draw.chance(0.4) else None
+        corridors.append({
+            "corridor": corridor, "forward_mw": draw.maybe(0.7, 0, 60),
+            "reverse_mw": draw.maybe(0.7, 0, 60), "limit_profile": profile,
+        })  # fmt: skip
+        for line in draw.random.permutation(names)[: int(draw.random.integers(1, 4))].tolist():
+            weight = draw.between(-1, 1.5) if draw.chance(0.3) else None
+            members.append({"corridor": corridor, "line": line, "weight": weight})
+    contingencies = []
+    for number in range(draw.random.integers(0, 5) if names else 0):
+        lost = draw.random.permutation(names)[: int(draw.random.integers(1, 3))].tolist()
+        contingencies += [{"contingency": f"loss {number}", "line": line} for line in lost]
+    return system | {
+        "lines": lines, "corridors": corridors, "corridor_lines": members,
+        "contingencies": contingencies, "profiles": system["profiles"] | draw.profiles,
+    }  # fmt: skip
 
 
 def _lines(draw: Draw) -> list[Row]:

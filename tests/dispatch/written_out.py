@@ -72,7 +72,9 @@ def _rows(table: pd.DataFrame) -> list[tuple[str, Row]]:
     return list(table.to_dict("index").items())
 
 
-def written_out(case: Case, mode: str, *, limits: bool = True, one_way: bool = False) -> Program:
+def written_out(
+    case: Case, mode: str, *, limits: bool = True, one_way: bool = False, secure: bool = False
+) -> Program:
     """Return the program of a case; its optimum is what a run of one window must cost."""
     model = Model(case, mode, limits)
     for name, unit in _rows(case.units):
@@ -85,6 +87,9 @@ def written_out(case: Case, mode: str, *, limits: bool = True, one_way: bool = F
         _ways(model)
     _loads_and_surplus(model)
     _lines(model)
+    _corridors(model)
+    if secure:
+        _after_losses(model)
     _balances(model)
     return model.program
 
@@ -357,6 +362,80 @@ def _lines(model: Model) -> None:
             model.program.row(("angles", name, t), terms, "=", -per_rad * shift)
             model.injected[line["from_bus"], t].append((-1, flow))
             model.injected[line["to_bus"], t].append((1, flow))
+
+
+def _corridors(model: Model) -> None:
+    """−reverse ≤ Σ weight·flow ≤ forward, each times its profile; lines out carry nothing."""
+    members = model.case.corridor_lines.to_dict("records")
+    for name, corridor in _rows(model.case.corridors):
+        times = model.profile(corridor["limit_profile"])
+        own = [row for row in members if row["corridor"] == name]
+        for t in model.periods:
+            flows = [
+                (row["weight"], ("flow", row["line"], t))
+                for row in own if model.share("line", row["line"])[t] > 0
+            ]  # fmt: skip
+            for way, sign in (("forward", 1), ("reverse", -1)):
+                if not model.limits or corridor[f"{way}_mw"] == inf:
+                    continue
+                terms = [(sign * weight, flow) for weight, flow in flows]
+                limit = corridor[f"{way}_mw"] * times[t]
+                model.program.row((way, name, t), terms, "<=", limit)
+
+
+def _after_losses(model: Model) -> None:
+    """Each contingency with angles and flows of its own, within emergency ratings, and at each bus
+
+    as much carried away as before it. One that splits the network, or finds its lines out, is left out.
+    """
+    lines = dict(_rows(model.case.lines))
+    groups = model.case.contingencies.groupby("contingency")["line"].agg(set).to_dict()
+    if not groups:
+        whole = _islands(model.case, set(lines))
+        groups = {
+            name: {name} for name in lines if _islands(model.case, set(lines) - {name}) == whole
+        }
+    for name, lost in groups.items():
+        for t in model.periods:
+            used = {line for line in lines if model.share("line", line)[t] > 0}
+            if used & lost and _islands(model.case, used) == _islands(model.case, used - lost):
+                _after_one(model, name, t, used, used - lost)
+
+
+def _after_one(model: Model, c: str, t: int, used: set[str], left: set[str]) -> None:
+    lines = dict(_rows(model.case.lines))
+    carried: dict[str, list] = {bus: [] for bus in model.case.buses.index}
+    for bus in carried:
+        model.program.column(("angle after", c, bus, t), -inf)
+    for name in sorted(used):
+        line = lines[name]
+        ends = line["from_bus"], line["to_bus"]
+        for sign, bus in zip((1, -1), ends, strict=True):
+            carried[bus].append((-sign, ("flow", name, t)))
+        if name not in left:
+            continue
+        per_rad = model.case.settings.base_mva / (line["reactance_pu"] * line["tap_ratio"])
+        limit = line["emergency_rating_mw"] * model.profile(line["rating_profile"])[t]
+        flow = ("flow after", c, name, t)
+        model.program.column(flow, -limit, limit)
+        start, end = (("angle after", c, bus, t) for bus in ends)
+        right = -per_rad * np.radians(line["phase_shift_deg"])
+        terms = [(1, flow), (-per_rad, start), (per_rad, end)]
+        model.program.row(("angles after", c, name, t), terms, "=", right)
+        for sign, bus in zip((1, -1), ends, strict=True):
+            carried[bus].append((sign, flow))
+    for bus, terms in carried.items():
+        if terms:
+            model.program.row(("carried after", c, bus, t), terms, "=", 0)
+
+
+def _islands(case: Case, used: set[str]) -> int:
+    """How many islands some lines leave."""
+    group = {bus: bus for bus in case.buses.index}
+    for name in used:
+        one, other = (group[case.lines.at[name, end]] for end in ("from_bus", "to_bus"))
+        group = {bus: (one if of == other else of) for bus, of in group.items()}
+    return len(set(group.values()))
 
 
 def _balances(model: Model) -> None:
