@@ -141,10 +141,6 @@ def plan_run(
         raise OptionError(_too_long(case, first, periods))
     mode = _choice("--commitment", commitment or case.settings.commitment.mode, MODES)
     chosen = _choice("--limits", limits or case.settings.network.limits, LIMITS)
-    if case.settings.network.losses:
-        raise OptionError(
-            "network.losses, must be false in this version, found true, set it to false in case.toml"
-        )
     return Plan(first, periods, seen, window, keep, mode, chosen, _pricing(pricing, mode))
 
 

@@ -1,6 +1,6 @@
 """Prices taken apart and congestion accounted for (formulation.md 5): pure functions.
 
-Public names: `congestion_rent`, `energy_and_congestion`, `pair_name`, `price_cause`,
+Public names: `congestion_rent`, `delivered_share`, `energy_and_congestion`, `pair_name`, `price_cause`,
 `reference_weights`.
 
 Arrays have periods first; prices are currency/MWh, powers MW, Δ is the length of a period in h.
@@ -17,6 +17,7 @@ from simulator.grid import Network, Topology
 
 __all__ = [
     "congestion_rent",
+    "delivered_share",
     "energy_and_congestion",
     "pair_name",
     "price_cause",
@@ -27,6 +28,7 @@ Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
 
 _NO_LOAD = 1e-9
+_NO_PRICE = 0.1  # currency/MWh; of less, rounding would make the proportion
 
 
 def reference_weights(demand: Floats, island: Integers) -> Floats:
@@ -63,6 +65,22 @@ def energy_and_congestion(
     """
     energy = _island_sums(weights * price, island)
     return energy, price - energy
+
+
+def delivered_share(own: Floats, factor: Floats, weights: Floats, island: Integers) -> Floats:
+    """Return what arrives at the reference of one more MW injected at each bus, array (period, bus).
+
+    own : array (period, bus), prices without their congestion part, in proportion to that share with
+        respect to some reference
+    factor : array (period, bus), what one more MW injected adds to losses; it serves where power has no
+        price and so no proportion
+    With that share the loss part of a price is energy·(share − 1): minus the energy price times the loss
+    factor with respect to the load-weighted reference (5.1).
+    """
+    at_reference = _island_sums(weights * own, island)
+    by_flows = (1.0 - factor) / _island_sums(weights * (1.0 - factor), island)
+    priced = np.abs(at_reference) > _NO_PRICE
+    return np.where(priced, own / np.where(priced, at_reference, 1.0), by_flows)
 
 
 def congestion_rent(line_dual: Floats, flow: Floats, period_hours: float) -> Floats:

@@ -23,7 +23,7 @@ from numpy.typing import NDArray
 
 from simulator import prices
 from simulator.case import series
-from simulator.dispatch import Priced
+from simulator.dispatch import Point, Priced
 from simulator.dispatch.counts import WindowRecord
 from simulator.errors import OptionError
 from simulator.horizon import Run
@@ -76,6 +76,7 @@ VARIABLES: Mapping[str, Entry] = {
     ),
     "line_flow": (("time", "line"), "MW", "flow, positive from from_bus to to_bus"),
     "line_rating": (("time", "line"), "MW", "rating in the period"),
+    "line_loss": (("time", "line"), "MW", "power lost in the line, drawn half at each end"),
     "line_shadow_price": (("time", "line"), PRICE, "saving from one more MW of rating"),
     "congestion_rent": (("time", "line"), MONEY, "shadow price times flow"),
     "security_hours": (("line",), "h", "hours with a shadow price after a contingency"),
@@ -215,6 +216,9 @@ def _powers(run: Run) -> dict[str, Floats]:
         "surplus": kept.surplus,
         "tie_flow": kept.tie_forward - kept.tie_reverse,
         "line_flow": kept.flow,
+        "line_loss": np.zeros_like(kept.flow)
+        if inputs.losses is None
+        else inputs.losses.lost(kept.flow),
         "line_rating": inputs.limits.rating,
     }
 
@@ -227,6 +231,13 @@ def _lines_and_prices(run: Run) -> dict[str, Floats]:
     island = island[inputs.topology.index]
     weights = prices.reference_weights(inputs.demand_at_bus, island)
     energy, congestion = prices.energy_and_congestion(price, weights, island)
+    loss = np.zeros_like(price)
+    if inputs.losses is not None:
+        delivered = prices.delivered_share(
+            priced.price - priced.congestion, _loss_factors(run), weights, island
+        )
+        loss = energy * (delivered - 1.0)
+        congestion = congestion - loss
     none = np.zeros((len(run.times), 0))
     return {
         "line_shadow_price": np.abs(line_dual),
@@ -237,10 +248,19 @@ def _lines_and_prices(run: Run) -> dict[str, Floats]:
         "price_relaxed": kept.relaxed.price,
         "price_energy": energy,
         "price_congestion": congestion,
-        "price_loss": np.zeros_like(price),
+        "price_loss": loss,
         "reserve_price": none,
         "reserve_shortage": none,
     }
+
+
+def _loss_factors(run: Run) -> Floats:
+    """Return what one more MW injected at each bus adds to losses at the flows, array (period, bus)."""
+    inputs, periods = run.kept_inputs, np.arange(len(run.times))
+    point = Point(
+        np.zeros((len(periods), inputs.buses)), run.kept.flow, inputs.losses.slope(run.kept.flow)
+    )
+    return point.factors(inputs, periods, point.slope)
 
 
 def _priced(run: Run) -> Priced:
@@ -372,6 +392,7 @@ def run_record(
             "rebuilds": max(counts.builds - 1, 0), "simplex_iterations": counts.iterations,
         },
         "windows": [_window_record(run, record) for record in counts.windows],
+        "network": _network(run),
         "seconds": {name: round(value, 4) for name, value in spent.items()},
         "versions": {name: version(name) for name in PACKAGES},
     }  # fmt: skip
@@ -387,6 +408,35 @@ def _window_record(run: Run, record: WindowRecord) -> dict[str, Any]:
         "gap": record.gap,
         "time_limit": record.time_limit,
     }
+
+
+def _network(run: Run) -> dict[str, Any]:
+    """Return how many contingencies held, which did not and why, and how exact losses are."""
+    schedule, held = run.kept_inputs.topology, run.kept_inputs.limits.contingencies
+    length, count = run.case.time.period_hours, np.bincount(schedule.index)
+    left_out: list[dict[str, Any]] = []
+    for reason in ("splits", "idle"):
+        hours = np.zeros(len(held))
+        for number in np.unique(schedule.index):
+            marked = getattr(held.after(schedule.topologies[number]), reason)
+            hours += marked * count[number] * length
+        left_out += [
+            {
+                "contingency": str(held.names[place]),
+                "reason": _LEFT_OUT[reason],
+                "hours": float(hours[place]),
+            }
+            for place in np.flatnonzero(hours)
+        ]
+    found: dict[str, Any] = {"contingencies": len(held), "left_out": left_out}
+    if run.kept_inputs.losses is not None:
+        found |= {
+            "loss_accuracy_mw": run.counts.loss_gap, "linearisations": run.counts.linearisations,
+        }  # fmt: skip
+    return found
+
+
+_LEFT_OUT = {"splits": "its loss splits the network", "idle": "its lines are out already"}
 
 
 def _congestion_cost(dataset: xr.Dataset, unlimited: Run | None) -> dict[str, float]:
@@ -422,6 +472,7 @@ def _totals(dataset: xr.Dataset) -> dict[str, float]:
         "unserved_mwh": energy("load_unserved"),
         "curtailed_mwh": energy("curtailment"),
         "surplus_mwh": energy("surplus"),
+        "lost_mwh": energy("line_loss"),
         "emissions_t": float(dataset["emissions"].sum()),
         "congestion_rent": sum(
             float(dataset[name].sum()) for name in ("congestion_rent", "corridor_rent", "pair_rent")

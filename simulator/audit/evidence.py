@@ -32,7 +32,8 @@ DIMENSIONS: Mapping[str, tuple[str, ...]] = {
         ("surplus", "price", "price_energy", "price_congestion", "price_loss"), ("time", "bus")),
     "tie_flow": ("time", "tie"),
     **dict.fromkeys(
-        ("line_flow", "line_rating", "line_shadow_price", "congestion_rent"), ("time", "line")),
+        ("line_flow", "line_loss", "line_rating", "line_shadow_price", "congestion_rent"),
+        ("time", "line")),
     **dict.fromkeys(("congestion_hours", "hours_at_limit", "security_hours"), ("line",)),
     **dict.fromkeys(
         ("corridor_flow", "corridor_forward_limit", "corridor_reverse_limit", "corridor_shadow_price",
@@ -180,6 +181,26 @@ class Evidence:
             - self["surplus"]
         )
 
+    @property
+    def lossy(self) -> bool:
+        """Whether lines lose power."""
+        return self.case.settings.network.losses
+
+    @cached_property
+    def loss_rate(self) -> Floats:
+        """What a line loses over its flow squared, array (line,), 1/MW: r/base_mva, or nothing."""
+        rate: Floats = (
+            self.case.lines["resistance_pu"].to_numpy(float) / self.case.settings.base_mva
+        )
+        return rate * self.lossy
+
+    @cached_property
+    def net_injection(self) -> Floats:
+        """Net injection less half of what each line loses at either end, array (period, bus), MW."""
+        half = self.loss_rate * self["line_flow"] ** 2 / 2
+        ends = (self.bus(self.case.lines, end) for end in ("from_bus", "to_bus"))
+        return self.injection - sum(summed(half, end, len(self.names["bus"])) for end in ends)
+
 
 def summed(values: Floats, place: Integers, places: int) -> Floats:
     """Sum values (period, element) at the places of the elements, array (period, place).
@@ -202,8 +223,6 @@ def gather(case: Case, dataset: xr.Dataset) -> Evidence:
     for dimension, expected in names.items():
         _same_elements(dataset, dimension, expected)
     _no_products(dataset)
-    if case.settings.network.losses:
-        raise _unfit("the case", "must be without network losses", "losses", "audit it without")
     mode = _choice(dataset, "commitment", MODES)
     wanted = {**DIMENSIONS, **(OF_DECISIONS if mode == "optimal" else {})}
     span = _span(case, dataset)

@@ -80,7 +80,7 @@ class Security:
         """Find the contingency that leaves a line furthest beyond its emergency rating, MW."""
         evidence = self.evidence
         rating = series.line_rating(evidence.case, evidence.span, "emergency_rating_mw")
-        injection = evidence.injection
+        injection = evidence.net_injection
         worst = Residual("line", evidence.names["line"], "", np.full(rating.shape, -np.inf))
         for name in self.lost:
             over = np.full(rating.shape, -np.inf)
@@ -156,7 +156,7 @@ def _pairs(evidence: Evidence, security: Security) -> list[Residual]:
 
     A loss that asks for nothing, or of which the case does not know, has no price.
     """
-    pairs, injection = evidence.pairs, evidence.injection
+    pairs, injection = evidence.pairs, evidence.net_injection
     flow = np.full(len(pairs.line), np.inf)
     for some, left in security.of_pairs():
         if left is not None:

@@ -112,7 +112,10 @@ def _islands(from_bus: Integers, to_bus: Integers, used: Booleans, buses: int) -
 
 
 class PowerFlow:
-    """The power flow of one set of lines in service."""
+    """The power flow of one set of lines in service.
+
+    island : array (bus,); incidence, weighted : sparse arrays (line, bus), A and b·A
+    """
 
     def __init__(
         self,
@@ -128,13 +131,14 @@ class PowerFlow:
         ends = np.concatenate([line, line]), np.concatenate([from_bus, to_bus])
         signs = np.repeat([1.0, -1.0], len(line))
         incidence = sparse.csr_array((signs, ends), shape=(len(line), buses))
-        self._weighted = sparse.csr_array(sparse.diags_array(susceptance) @ incidence)
-        self._matrix = sparse.csc_array(incidence.T @ self._weighted)
+        self.incidence = incidence
+        self.weighted = sparse.csr_array(sparse.diags_array(susceptance) @ incidence)
+        self._matrix = sparse.csc_array(incidence.T @ self.weighted)
         self._pushed = susceptance * shift
         self._into_bus = incidence.T @ self._pushed
 
     @cached_property
-    def _solved(self) -> Integers:
+    def solved(self) -> Integers:
         """All buses but the last of each island, whose angle is zero."""
         backwards = np.unique(self.island[::-1], return_index=True)[1]
         return np.setdiff1d(np.arange(len(self.island)), len(self.island) - 1 - backwards)
@@ -142,7 +146,7 @@ class PowerFlow:
     @cached_property
     def _factor(self) -> Any:
         try:
-            return splu(sparse.csc_matrix(self._matrix[self._solved][:, self._solved]))
+            return splu(sparse.csc_matrix(self._matrix[self.solved][:, self.solved]))
         except RuntimeError as error:
             raise AuditError(
                 "the power flow, must have one solution, found a singular susceptance matrix, "
@@ -152,20 +156,20 @@ class PowerFlow:
     def _angles(self, right: Floats) -> Floats:
         """Return bus angles (bus, column), rad, for right-hand sides of that shape, MW."""
         angle = np.zeros(right.shape)
-        if len(self._solved):
+        if len(self.solved):
             for first in range(0, right.shape[1], _BLOCK):
                 block = slice(first, first + _BLOCK)
-                angle[self._solved, block] = self._factor.solve(right[self._solved, block])
+                angle[self.solved, block] = self._factor.solve(right[self.solved, block])
         return angle
 
     def flows(self, injection: Floats) -> Floats:
         """Return line flows (period, line), MW, from injections (period, bus), MW."""
         angle = self._angles(injection.T + self._into_bus[:, None])
-        return (self._weighted @ angle).T - self._pushed
+        return (self.weighted @ angle).T - self._pushed
 
     def collected(self, weight: Floats) -> Floats:
         """Return Σ_l PTDF_ln·weight_l, array (row, bus), for weights (row, line)."""
-        return self._angles(self._weighted.T @ weight.T).T
+        return self._angles(self.weighted.T @ weight.T).T
 
     def over_island(self, values: Floats, ufunc: np.ufunc) -> Floats:
         """Give every bus what a ufunc makes of values (period, bus) over its island."""

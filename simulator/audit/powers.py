@@ -7,7 +7,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from simulator.audit.check import COUNTED, POWER, Check, Residual, apart, beyond, judge
+from simulator.audit.check import ADDED, COUNTED, POWER, Check, Residual, apart, beyond, judge
 from simulator.audit.evidence import DIMENSIONS, Evidence
 from simulator.audit.network import Network
 from simulator.audit.units import Units
@@ -25,6 +25,7 @@ def power_checks(evidence: Evidence, network: Network, units: Units) -> list[Che
         judge("inputs", COUNTED, evidence.hours, _inputs(evidence, units)),
         judge("balance", POWER, evidence.hours, [_balance(evidence, network)]),
         judge("flows", POWER, evidence.hours, [_flows(evidence, network)]),
+        judge("losses", ADDED, evidence.hours, [_losses(evidence)]),
         judge("tie limits", POWER, evidence.hours, [_tie_limits(evidence)]),
         judge("unit limits", POWER, evidence.hours, _unit_limits(evidence, units)),
         judge("renewable limits", POWER, evidence.hours, [_renewable_limits(evidence)]),
@@ -74,14 +75,20 @@ def _residual(evidence: Evidence, variable: str, rule: str, values: Floats) -> R
 
 
 def _balance(evidence: Evidence, network: Network) -> Residual:
-    left_over = np.abs(network.island_sum(evidence.injection))
+    left_over = np.abs(network.island_sum(evidence.net_injection))
     return Residual("island of bus", evidence.names["bus"], "", left_over)
 
 
 def _flows(evidence: Evidence, network: Network) -> Residual:
     """Flows against a power flow of the dataset's own injections; lines out carry nothing."""
-    expected = network.flows(evidence.injection)
+    expected = network.flows(evidence.net_injection)
     return _residual(evidence, "line_flow", "", apart(evidence["line_flow"], expected))
+
+
+def _losses(evidence: Evidence) -> Residual:
+    """Hold what a line loses to r·f²/base_mva."""
+    lost = evidence.loss_rate * evidence["line_flow"] ** 2
+    return _residual(evidence, "line_loss", "", apart(evidence["line_loss"], lost))
 
 
 def _line_limits(evidence: Evidence) -> Residual:

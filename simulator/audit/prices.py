@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from simulator.audit.check import ADDED, COUNTED, POWER, Check, Residual, apart, judge
 from simulator.audit.evidence import DIMENSIONS, Evidence, summed
 from simulator.audit.limits import Security
+from simulator.audit.losses import Margins
 from simulator.audit.network import Network
 from simulator.audit.shadows import Shadows, collected, gather_shadows, rent_at_bus
 
@@ -25,6 +26,9 @@ PRICED = 1e-6
 """Currency/MWh; a shadow price above it makes an hour a congestion hour (5.3)."""
 AT_LIMIT = 1e-4
 """MW; a flow this close to its rating is at its limit (5.3)."""
+LOSS_FACTOR = 2e-3
+"""Share of the dearest price. Losses are linearised until they are within 1e-3 MW of the true ones, so at
+flows a few MW from the final ones; each MW moves what a line loses of one more MW by 2r/base_mva, 1e-4."""
 NO_LOAD = 1e-9
 """MW; an island with less has a reference in which all its buses weigh the same."""
 
@@ -36,10 +40,10 @@ def price_checks(evidence: Evidence, network: Network, security: Security) -> li
         judge("price parts", ADDED, hours, [_parts(evidence)]),
         *_kind(evidence),
         judge("energy price", ADDED, hours, _energy(evidence, network)),
-        judge("congestion price", ADDED, hours, [_congestion(evidence, network, security)]),
+        *_network_parts(evidence, network, security),
         judge("shadow prices", POWER, hours, _shadow_prices(evidence)),
         judge("congestion rent", ADDED, hours, _rent(evidence)),
-        judge("rent identity", POWER, hours, [_identity(evidence, network, security)]),
+        *_rent_identity(evidence, network, security),
         judge("congestion hours", COUNTED, hours, _hours(evidence)),
     ]
 
@@ -90,12 +94,30 @@ def _open(evidence: Evidence, network: Network) -> Booleans:
     return network.island_sum(at_bus) > 0
 
 
-def _congestion(evidence: Evidence, network: Network, security: Security) -> Residual:
-    """5.1: congestion_n = Σ_l PTDF_ln·μ_l, with the PTDF of the load-weighted reference."""
-    by_bus = collected(evidence, network, security)
-    at_reference = network.island_sum(_weights(evidence, network) * by_bus)
-    off = apart(evidence["price_congestion"], by_bus - at_reference)
-    return _at_buses(evidence, np.where(_open(evidence, network), 0.0, off))
+def _network_parts(evidence: Evidence, network: Network, security: Security) -> list[Check]:
+    """5.1: congestion_n = Σ_l PTDF_ln·μ_l, with the PTDF of the load-weighted reference.
+
+    With losses, of one more MW injected a share s arrives at the reference; the loss part is
+    energy·(s − 1), and the congestion part what limits cost at n less s times what they do there.
+    """
+    margins, weights = Margins(evidence, network), _weights(evidence, network)
+    by_bus = collected(evidence, network, security, margins)
+    share = np.ones_like(by_bus)
+    if evidence.lossy:
+        kept = 1.0 - margins.of_flows(margins.slope)
+        share = kept / network.island_sum(weights * kept)
+    at_reference = network.island_sum(weights * by_bus)
+    off = apart(evidence["price_congestion"], by_bus - share * at_reference)
+    off = np.where(_open(evidence, network), 0.0, off)
+    lost = apart(evidence["price_loss"], evidence["price_energy"] * (share - 1.0))
+    size = (
+        np.maximum(1.0, network.island_peak(np.abs(evidence["price"]))) if evidence.lossy else 1.0
+    )
+    tolerance = LOSS_FACTOR if evidence.lossy else ADDED
+    return [
+        judge("congestion price", tolerance, evidence.hours, [_at_buses(evidence, off / size)]),
+        judge("loss price", tolerance, evidence.hours, [_at_buses(evidence, lost / size)]),
+    ]
 
 
 def _shadow_prices(evidence: Evidence) -> list[Residual]:
@@ -128,6 +150,14 @@ def _rent(evidence: Evidence) -> list[Residual]:
         off = apart(limits.rent, rent) / np.maximum(1.0, np.abs(rent))
         found.append(Residual(limits.kind, evidence.names[limits.kind], "", off))
     return found
+
+
+def _rent_identity(evidence: Evidence, network: Network, security: Security) -> list[Check]:
+    """5.2 holds without losses; with them prices are held to limits and losses bus by bus."""
+    if evidence.lossy:
+        return []
+    off = _identity(evidence, network, security)
+    return [judge("rent identity", POWER, evidence.hours, [off])]
 
 
 def _identity(evidence: Evidence, network: Network, security: Security) -> Residual:

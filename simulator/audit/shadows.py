@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 from simulator.audit.evidence import Evidence, summed
 from simulator.audit.limits import Security, corridor_weights
+from simulator.audit.losses import Margins
 from simulator.audit.network import Network
 
 __all__ = ["Shadows", "collected", "gather_shadows", "rent_at_bus"]
@@ -90,12 +91,19 @@ def _pair_terms(
             yield some, left.collected(weight), still[line]
 
 
-def collected(evidence: Evidence, network: Network, security: Security) -> Floats:
-    """Return Σ PTDF·dual over all limits, array (period, bus), with respect to some reference."""
-    total = network.collected(_per_line(evidence))
+def collected(evidence: Evidence, network: Network, security: Security, margins: Margins) -> Floats:
+    """Return what all limits add to prices, array (period, bus), with respect to some reference.
+
+    Without losses Σ PTDF·dual. With them, losses that an injection causes move flows too: also those after
+    a contingency, before which they are drawn.
+    """
+    after = np.zeros((evidence.periods, len(evidence.names["bus"])))
     for some, shares, _ in _pair_terms(evidence, security):
-        np.add.at(total, evidence.pairs.period[some], shares)
-    return total
+        np.add.at(after, evidence.pairs.period[some], shares)
+    if not evidence.lossy:
+        return network.collected(_per_line(evidence)) + after
+    weight = _per_line(evidence) - margins.slope * margins.at_ends(after)
+    return margins.of_flows(weight) + after
 
 
 def rent_at_bus(evidence: Evidence, network: Network, security: Security) -> Floats:

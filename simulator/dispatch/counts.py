@@ -23,12 +23,17 @@ class WindowRecord:
 
 @dataclass
 class Counts:
-    """Solves, rows of limits added, models built, seconds by stage, and a record a window."""
+    """Solves, rows of limits added, models built, seconds by stage, and a record a window.
+
+    linearisations : of losses; loss_gap : how far losses are from those of the flows, MW, at most
+    """
 
     lp_solves: int = 0
     mip_solves: int = 0
     limit_rows: int = 0
     builds: int = 0
+    linearisations: int = 0
+    loss_gap: float = 0.0
     iterations: int = 0
     windows: list[WindowRecord] = field(default_factory=list)
     seconds: dict[str, float] = field(

@@ -118,7 +118,9 @@ def _store_columns(inputs: WindowInputs) -> dict[str, Bounds]:
 
 def _balance_columns(inputs: WindowInputs) -> dict[str, Bounds]:
     reach = np.where(inputs.joined, INFINITY, 0.0)
-    return {
+    lost = np.full((inputs.periods, inputs.cells.count), INFINITY)
+    losses = {} if inputs.losses is None else {"loss": (-lost, lost)}
+    return losses | {
         "tie_forward": _between(0.0, inputs.tie_forward),
         "tie_reverse": _between(0.0, inputs.tie_reverse),
         "unserved": _between(0.0, np.maximum(inputs.demand, 0.0)),

@@ -214,7 +214,7 @@ def energy_floor(model: Model, t: int, store: int) -> Any:
 
 
 def balance(model: Model, t: int, cell: int) -> Any:
-    """2.5: injections − withdrawals + what other cells of the island send = demand."""
+    """2.5: injections − withdrawals + what other cells of the island send − losses = demand."""
     inputs, at = model.inputs, model.inputs.cells.cell
 
     def summed(family: str, buses: Integers, factor: Any = 1.0) -> Any:
@@ -242,6 +242,8 @@ def balance(model: Model, t: int, cell: int) -> Any:
         - summed("surplus", np.arange(inputs.buses))
         + received
     )
+    if inputs.losses is not None:
+        total -= model.loss[t, cell]
     return total == model.right["balance"][t][cell]
 
 

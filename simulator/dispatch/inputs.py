@@ -16,7 +16,7 @@ from scipy import sparse
 from simulator.case import Case, series
 from simulator.dispatch.limits import NetworkLimits
 from simulator.dispatch.reach import reachable_ceiling, reachable_floor, reachable_minimum
-from simulator.grid import Cells, Contingencies, Network, TopologySchedule, common_cells
+from simulator.grid import Cells, Contingencies, LineLosses, Network, TopologySchedule, common_cells
 
 __all__ = ["RunInputs", "StoreData", "UnitData", "WindowInputs", "run_inputs"]
 
@@ -112,7 +112,8 @@ class WindowInputs:
     tie_lossy : positions of the ties that lose something; tie_widest : array (direction, tie), MW, the
         most either way with nothing out
     demand (period, load); unserved_cost (load,); surplus_cost, short_cost : currency/MWh
-    limits : what lines and corridors may carry; topology : which topology holds when
+    limits : what lines and corridors may carry; losses : what lines lose, None if nothing counts
+    topology : which topology holds when
     joined (period, pair)
     """
 
@@ -160,6 +161,7 @@ class WindowInputs:
     surplus_cost: float
     short_cost: float
     limits: NetworkLimits
+    losses: LineLosses | None
     topology: TopologySchedule
     cells: Cells
     joined: Booleans
@@ -223,6 +225,7 @@ def run_inputs(case: Case, span: slice, run_periods: int, mode: str, limits: str
         period_hours=case.time.period_hours,
         surplus_cost=case.settings.penalties.surplus, short_cost=_short_cost(case),
         limits=_limits(case, span, network, secure=limits == "secure"), topology=topology, cells=cells,
+        losses=LineLosses.of(case, network) if case.settings.network.losses else None,
         joined=cells.joined[topology.index], buses=len(case.buses), ends_run=True,
         **_unit_inputs(case, span), **_renewable_inputs(case, span),
         **_store_inputs(case, span, run_periods), **_tie_inputs(case, span), **_load_inputs(case, span),

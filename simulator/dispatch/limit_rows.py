@@ -4,7 +4,7 @@ Public names: `Duals`, `LimitRows`.
 
 A row reads  lower − fixed ≤ Σ_columns (w·PTDF)·factor·x ≤ upper − fixed, where w are the weights with which
 line flows count in it (`NetworkLimits.weights`) and `fixed` is what demand and phase shifters make it carry
-on their own.
+on their own. With losses, which flows cause and which change flows, both are taken around a `Point`.
 """
 
 from dataclasses import dataclass
@@ -17,6 +17,7 @@ from simulator.dispatch.compiled import CompiledFleet
 from simulator.dispatch.injections import InjectionMap
 from simulator.dispatch.inputs import WindowInputs
 from simulator.dispatch.limits import NONE, Places
+from simulator.dispatch.point import Point
 from simulator.dispatch.priced import Pairs
 from simulator.dispatch.solver import BASIC, LinearSolver
 from simulator.dispatch.start import Start
@@ -57,9 +58,10 @@ class LimitRows:
 
     carried = 0
 
-    def __init__(self, inputs: WindowInputs, fleet: CompiledFleet) -> None:
-        self.injection = InjectionMap(inputs, dict(fleet.columns))
-        self._first_row = fleet.matrix.shape[0]
+    def __init__(
+        self, inputs: WindowInputs, fleet: CompiledFleet, injection: InjectionMap, first_row: int
+    ) -> None:
+        self.injection, self._first_row = injection, first_row
         self._columns = fleet.matrix.shape[1]
         self._factors = _Factors(self.injection)
         self._clear(inputs)
@@ -73,7 +75,7 @@ class LimitRows:
         return len(self.places)
 
     def begin_window(
-        self, solver: LinearSolver, inputs: WindowInputs, fixed: Floats, start: Start | None
+        self, solver: LinearSolver, inputs: WindowInputs, point: Point, start: Start | None
     ) -> Statuses:
         """Add the rows a window starts with to a model that has none; return their statuses.
 
@@ -93,30 +95,61 @@ class LimitRows:
         carried = carried[possible(inputs, carried)]
         self.carried = len(carried)
         idle = np.concatenate([start.idle[serve], np.zeros(len(carried), dtype=np.int64)])
-        self._add(solver, inputs, fixed, kept + carried, idle)
+        self._add(solver, inputs, point, kept + carried, idle)
         moved = _moved_statuses(start, shift, inputs.periods)[serve]
         return np.concatenate([moved, np.full(len(carried), BASIC, dtype=np.int8)])
 
-    def add(
-        self, solver: LinearSolver, inputs: WindowInputs, fixed: Floats, places: Places
-    ) -> None:
+    def add(self, solver: LinearSolver, inputs: WindowInputs, point: Point, places: Places) -> None:
         """Add rows for places that have none."""
-        self._add(solver, inputs, fixed, places, np.zeros(len(places), dtype=np.int64))
+        self._add(solver, inputs, point, places, np.zeros(len(places), dtype=np.int64))
 
     def _add(
-        self, solver: LinearSolver, inputs: WindowInputs, fixed: Floats, places: Places, idle: Integers
+        self, solver: LinearSolver, inputs: WindowInputs, point: Point, places: Places, idle: Integers
     ) -> None:  # fmt: skip
         if not len(places):
             return
         topology = inputs.topology.index[places.period]
         weights, factors = self._factors.of(inputs, places, topology)
-        base = _products(weights, fixed[places.period])
-        lower, upper = inputs.limits.bounds(places)
-        solver.add_rows(self._matrix(factors, places.period), lower - base, upper - base)
+        solver.add_rows(*self._rows(inputs, point, places, weights, factors))
         self.places = self.places + places
         self.topology = np.concatenate([self.topology, topology])
         self.idle = np.concatenate([self.idle, idle])
         self._weights = sparse.csr_array(sparse.vstack([self._weights, weights], format="csr"))
+
+    def _rows(
+        self, inputs: WindowInputs, point: Point, places: Places, weights: sparse.csr_array,
+        factors: sparse.csr_array,
+    ) -> tuple[sparse.csr_array, Floats, Floats]:  # fmt: skip
+        """Return rows and their bounds; factors (row, injection) are those without losses."""
+        period = places.period
+        fixed = _products(weights, point.flow[period])
+        if point.slope is not None:
+            at_bus = point.factors(inputs, period, weights.toarray())
+            fixed -= (at_bus * (point.injection + inputs.demand_at_bus)[period]).sum(axis=1)
+            factors = sparse.csr_array(_without_dust(at_bus @ self.injection.at_bus))
+        lower, upper = inputs.limits.bounds(places)
+        return self._matrix(factors, period), lower - fixed, upper - fixed
+
+    def moved(self, inputs: WindowInputs, point: Point) -> tuple[sparse.csr_array, Floats, Floats]:
+        """Return all rows that stand, and their bounds, linearised at another point."""
+        nothing = sparse.csr_array((len(self), self.injection.at_bus.shape[1]))
+        return self._rows(inputs, point, self.places, self._weights, nothing)
+
+    def settle(
+        self, solver: LinearSolver, inputs: WindowInputs, row_value: Floats, flow: Floats
+    ) -> None:
+        """Move the bounds of rows that stand by how far flows are from what the rows take them for."""
+        carried = _products(self._weights, flow[self.places.period])
+        fixed = carried - row_value[self._first_row :][: len(self)]
+        lower, upper = inputs.limits.bounds(self.places)
+        rows = self._first_row + np.arange(len(self))
+        solver.set_row_bounds(rows, lower - fixed, upper - fixed)
+
+    def excess(self, inputs: WindowInputs, flow: Floats) -> float:
+        """Return by how much flows break limits that stand, MW; negative if by nothing."""
+        carried = _products(self._weights, flow[self.places.period])
+        lower, upper = inputs.limits.bounds(self.places)
+        return float(np.maximum(lower - carried, carried - upper).max(initial=-np.inf))
 
     def _matrix(self, factors: sparse.csr_array, period: Integers) -> sparse.csr_array:
         """Put factors (row, injection) at the columns of each row's period."""
@@ -187,20 +220,23 @@ class _Factors:
         if not fresh:
             return
         weights = inputs.limits.weights(topology, places[fresh])
-        factors = topology.collected(weights.toarray()) @ self._injection.at_bus
-        factors[np.abs(factors) <= _SMALLEST_FACTOR] = 0.0
+        factors = _without_dust(topology.collected(weights.toarray()) @ self._injection.at_bus)
         known = len(self._at)
         self._at |= {(topology, *names[place]): known + at for at, place in enumerate(fresh)}
         self._weights = sparse.csr_array(sparse.vstack([self._weights, weights]))
         self._values = sparse.csr_array(sparse.vstack([self._values, sparse.csr_array(factors)]))
 
 
+def _without_dust(factors: Floats) -> Floats:
+    return np.where(np.abs(factors) > _SMALLEST_FACTOR, factors, 0.0)
+
+
 def _products(weights: sparse.csr_array, flow: Floats) -> Floats:
     """Return Σ_l weight_rl·flow_rl, array (row,), for flows (row, line)."""
     entry = weights.tocoo()
-    return np.bincount(
-        entry.row, weights=entry.data * flow[entry.row, entry.col], minlength=weights.shape[0]
-    )
+    total = np.zeros(weights.shape[0])
+    np.add.at(total, entry.row, entry.data * flow[entry.row, entry.col])
+    return total
 
 
 def possible(inputs: WindowInputs, places: Places) -> NDArray[np.bool_]:

@@ -37,12 +37,15 @@ class Pairs:
 class Priced:
     """Prices and signed duals of limits, currency/MWh; negative where a flow is held down at its upper limit.
 
-    price : array (period, bus) (5.1)
+    price : array (period, bus) (5.1); congestion, loss : its parts from limits and from losses, with
+        respect to some reference of each island
     line (period, line), corridor (period, corridor) : duals of limits as things are
     pairs : duals of limits after contingencies
     """
 
     price: Floats
+    congestion: Floats
+    loss: Floats
     line: Floats
     corridor: Floats
     pairs: Pairs
@@ -52,7 +55,7 @@ class Priced:
         """Join the first periods of some windows, given how many of each."""
         arrays = {
             name: np.concatenate([getattr(priced, name)[:kept] for kept, priced in parts])
-            for name in ("price", "line", "corridor")
+            for name in ("price", "congestion", "loss", "line", "corridor")
         }
         begins = np.cumsum([0, *(kept for kept, _ in parts)])
         pairs = [priced.pairs.first(kept) for kept, priced in parts]

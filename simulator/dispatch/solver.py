@@ -1,6 +1,6 @@
 """The one border to HiGHS: options checked, every status mapped, failures raised.
 
-Public names: `BASIC`, `Decision`, `LinearSolver`, `SolverError`, `STATUS`.
+Public names: `AT_LOWER`, `BASIC`, `Decision`, `LinearSolver`, `SolverError`, `STATUS`.
 
 HiGHS reports a wrong option only by a return code, and `run()` may return "ok" on an infeasible model,
 so every call's code is checked and only the model status is believed.
@@ -17,7 +17,7 @@ from scipy import sparse
 
 from simulator.dispatch.compiled import Vectors
 
-__all__ = ["BASIC", "STATUS", "Decision", "LinearSolver", "SolverError"]
+__all__ = ["AT_LOWER", "BASIC", "STATUS", "Decision", "LinearSolver", "SolverError"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -146,6 +146,14 @@ class LinearSolver:
         )
         self._check(code, "rows of limits")
 
+    def replace_rows(
+        self, first: int, matrix: sparse.csr_array, lower: Floats, upper: Floats
+    ) -> None:
+        """Put other rows in place of all from `first` on; the basis is lost."""
+        rows = np.arange(first, self.rows, dtype=np.int32)
+        self._check(self._highs.deleteRows(len(rows), rows), "a deletion of rows")
+        self.add_rows(matrix, lower, upper)
+
     def basis(self) -> tuple[Statuses, Statuses]:
         """Return the status of every column and row as numbers; `BASIC` marks the basic ones."""
         found = self._highs.getBasis()
@@ -220,6 +228,10 @@ class LinearSolver:
         found = self._highs.getSolution()
         return np.asarray(found.col_value), np.asarray(found.row_dual)
 
+    def row_values(self) -> Floats:
+        """Return row values of the last run."""
+        return np.asarray(self._highs.getSolution().row_value)
+
     def reduced_costs(self) -> Floats:
         """Return column duals of the last run."""
         return np.asarray(self._highs.getSolution().col_dual)
@@ -238,6 +250,7 @@ _INTEGER, _CONTINUOUS = highspy.HighsVarType.kInteger, highspy.HighsVarType.kCon
 _KINDS = (_INTEGER, _CONTINUOUS)
 _STATUSES = list(highspy.HighsBasisStatus.__members__.values())
 BASIC = int(highspy.HighsBasisStatus.kBasic)
+AT_LOWER = int(highspy.HighsBasisStatus.kLower)
 
 
 def _numbers(statuses: Any) -> Statuses:

@@ -16,6 +16,7 @@ from simulator.dispatch.limits import Places
 
 __all__ = ["Start"]
 
+Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
 Statuses = NDArray[np.int8]
 
@@ -30,6 +31,7 @@ class Start:
     places, topology, idle : what the limit rows held, in the order in which they stood, the topology of
         their period, and in how many windows each has not been at its limit
     on : array (period, unit), 0 or 1, decided; None where nothing is decided
+    injection : array (period, bus), MW, where losses were linearised last; None where nothing is lost
     """
 
     shape: tuple[object, ...]
@@ -41,11 +43,19 @@ class Start:
     topology: Integers
     idle: Integers
     on: Statuses | None
+    injection: Floats | None = None
 
     def moved_to(self, first: int, periods: int) -> int:
         """Return by how many periods a window that begins at `first` overlaps later; 0 if not at all."""
         shift = first - self.first
         return shift if 0 < shift < periods else 0
+
+    def injection_from(self, first: int, periods: int) -> Floats | None:
+        """Return the injections of a window that begins at `first`, those of new hours as the last seen."""
+        if self.injection is None:
+            return None
+        later = np.arange(periods) + self.moved_to(first, periods)
+        return self.injection[np.where(later < periods, later, np.arange(periods))]
 
     def without_limits(self) -> "Start":
         """Return the same start with no rows of limits, for a run without them."""

@@ -8,13 +8,18 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy import sparse
 
 from simulator.dispatch.attempt import Attempt
 from simulator.dispatch.compiled import CompiledFleet, compile_fleet
 from simulator.dispatch.counts import Counts, WindowRecord
 from simulator.dispatch.fleet import fleet_data, given_commitment
+from simulator.dispatch.injections import InjectionMap
 from simulator.dispatch.inputs import WindowInputs
 from simulator.dispatch.limit_rows import LimitRows
+from simulator.dispatch.limits import FLOW_TOLERANCE
+from simulator.dispatch.loss_rows import LOSS_ACCURACY, LossRows
+from simulator.dispatch.point import Point
 from simulator.dispatch.priced import Priced
 from simulator.dispatch.search import Decided, Search
 from simulator.dispatch.solver import LinearSolver, SolverError
@@ -127,7 +132,10 @@ class WindowModel:
         with self.counts.timed("build"):
             self.fleet: CompiledFleet = compile_fleet(inputs, fleet_data(inputs, state))
             self.shape = shape_of(inputs)
-            self.limits = LimitRows(inputs, self.fleet)
+            injection = InjectionMap(inputs, dict(self.fleet.columns))
+            self.losses = LossRows(inputs, self.fleet, injection)
+            first_row = self.fleet.matrix.shape[0] + self.losses.count
+            self.limits = LimitRows(inputs, self.fleet, injection, first_row)
             self._solver = LinearSolver()
 
     def __repr__(self) -> str:
@@ -158,6 +166,7 @@ class WindowModel:
                 decided = search.decide(inputs, state, attempt, self._solve_with_lines, start)
         except SolverError as failure:
             raise WindowError(failure.status, self._contradictions(failure)) from failure
+        self.counts.loss_gap = max(self.counts.loss_gap, attempt.loss_gap)
         self._record(inputs, time.perf_counter() - began, decided)
         priced = self._prices(inputs, attempt) if decided else relaxed
         left = self._left(inputs, attempt, decided)
@@ -174,9 +183,10 @@ class WindowModel:
         columns, rows = decided.basis if decided else self._solver.basis()
         fleet_rows = self.fleet.matrix.shape[0]
         return Start(
-            self.shape, inputs.first, columns, rows[:fleet_rows], rows[fleet_rows:],
+            self.shape, inputs.first, columns, rows[:fleet_rows], rows[fleet_rows + self.losses.count :],
             self.limits.places, self.limits.topology,
             self.limits.idle_after(attempt.row_dual), decided.on if decided else None,
+            None if inputs.losses is None else attempt.reached.injection,
         )  # fmt: skip
 
     def _begin(self, inputs: WindowInputs, state: State, start: Start | None) -> Attempt:
@@ -185,8 +195,11 @@ class WindowModel:
         with self.counts.timed("solve"):
             self._solver.load(self.fleet.filled(inputs, data), self.fleet.vectors(data))
         with self.counts.timed("network"):
-            attempt = Attempt(inputs, data, self.fleet.columns)
-            limit_rows = self.limits.begin_window(self._solver, inputs, attempt.fixed, start)
+            attempt = Attempt(inputs, data, self.fleet.columns, _first_point(inputs, start))
+            self.losses.begin_window(inputs, attempt.point)
+            if inputs.losses is not None:
+                self._solver.add_rows(*self.losses.matrix(inputs))
+            limit_rows = self.limits.begin_window(self._solver, inputs, attempt.point, start)
             self.counts.limit_rows += self.limits.carried
         if start is not None:
             with self.counts.timed("solve"):
@@ -198,7 +211,9 @@ class WindowModel:
         shift, periods = start.moved_to(inputs.first, inputs.periods), inputs.periods
         columns = shifted(start.columns, self.fleet.columns, shift, periods)
         rows = shifted(start.rows, self.fleet.rows, shift, periods)
-        self._solver.set_basis(columns, np.concatenate([rows, limit_rows]))
+        self._solver.set_basis(
+            columns, np.concatenate([rows, self.losses.first_statuses, limit_rows])
+        )
 
     def _solve_with_lines(
         self, inputs: WindowInputs, attempt: Attempt, *, turning: bool = True
@@ -208,27 +223,62 @@ class WindowModel:
         turning : close a direction of ties that run both ways; in mode `optimal` the relaxation may
             not, since which way a tie runs is a decision there
         """
+        self.losses.begin_solve()
         while True:
             with self.counts.timed("solve"):
                 self._solver.run()
             self.counts.lp_solves += 1
             self.counts.iterations += self._solver.iterations
             attempt.solution, attempt.row_dual = self._solver.solution()
-            added = self._limits_added(inputs, attempt)
-            if not (added or (turning and attempt.ties.close(self._solver, attempt.solution))):
+            row_value = self._solver.row_values() if inputs.losses else np.zeros(0)
+            changed = self._limits_added(inputs, attempt)
+            changed |= self._losses_moved(inputs, attempt, row_value)
+            if not (changed or (turning and attempt.ties.close(self._solver, attempt.solution))):
                 return
 
     def _limits_added(self, inputs: WindowInputs, attempt: Attempt) -> bool:
         """Look at the flows of a solution; add rows for limits they break, if any."""
         with self.counts.timed("network"):
             injection = self.limits.injection.injections(attempt.solution, inputs)
-            attempt.flow = inputs.topology.flows(injection)
+            attempt.reached = Point.at(inputs, injection)
             if not inputs.limited:
                 return False
             broken = inputs.limits.broken(attempt.flow, inputs.topology, self.limits.places)
-            self.limits.add(self._solver, inputs, attempt.fixed, broken)
+            self.limits.add(self._solver, inputs, attempt.point, broken)
             self.counts.limit_rows += len(broken)
             return len(broken) > 0
+
+    def _losses_moved(self, inputs: WindowInputs, attempt: Attempt, row_value: Floats) -> bool:
+        """Linearise losses anew at the flows of a solution, unless they are its losses already."""
+        if inputs.losses is None:
+            return False
+        with self.counts.timed("network"):
+            gap = self.losses.gaps(inputs, attempt.solution, attempt.reached)
+            attempt.loss_gap = float(np.abs(gap).max(initial=0.0))
+            off = self.limits.excess(inputs, attempt.flow) > FLOW_TOLERANCE
+            if (attempt.loss_gap <= LOSS_ACCURACY and not off) or self.losses.moves >= _MOST_MOVES:
+                return False
+            if self.losses.settles(gap):
+                self.losses.shift(self._solver, gap)
+                self.limits.settle(self._solver, inputs, row_value, attempt.flow)
+            else:
+                self._linearise(inputs, attempt)
+        self.counts.linearisations += 1
+        return True
+
+    def _linearise(self, inputs: WindowInputs, attempt: Attempt) -> None:
+        """Put rows linearised at the point reached in place of those that stand, and keep the basis."""
+        columns, rows = self._solver.basis()
+        fleet_rows = self.fleet.matrix.shape[0]
+        of_losses, of_limits = np.split(rows[fleet_rows:], [self.losses.count])
+        attempt.point = attempt.reached
+        of_losses = self.losses.move(inputs, attempt.solution, attempt.point, of_losses)
+        parts = self.losses.matrix(inputs), self.limits.moved(inputs, attempt.point)
+        matrix = sparse.csr_array(sparse.vstack([part[0] for part in parts], format="csr"))
+        lower, upper = (np.concatenate([part[side] for part in parts]) for side in (1, 2))
+        self._solver.replace_rows(fleet_rows, matrix, lower, upper)
+        self.losses.bound_columns(self._solver, inputs, attempt.point)
+        self._solver.set_basis(columns, np.concatenate([rows[:fleet_rows], of_losses, of_limits]))
 
     def _contradictions(self, failure: SolverError) -> list[tuple[str, int, int]]:
         if "infeasible" not in failure.status:
@@ -236,7 +286,8 @@ class WindowModel:
         rows, columns = self._solver.contradictions()
         len_fleet = self.fleet.matrix.shape[0]
         fleet_rows = rows[rows < len_fleet]
-        held = self.limits.places[rows[rows >= len_fleet] - len_fleet]
+        held = rows - len_fleet - self.losses.count
+        held = self.limits.places[held[held >= 0]]
         return (
             [self.fleet.row_name(row) for row in fleet_rows.tolist()]
             + [self.fleet.column_name(column) for column in columns.tolist()]
@@ -273,15 +324,28 @@ class WindowModel:
     def _prices(self, inputs: WindowInputs, attempt: Attempt) -> Priced:
         """Return prices of the last solve, and what limits cost in it (5.1).
 
-        price_n = (dual of n's balance row)/Δ + Σ_l PTDF_ln·μ_l
+        price_n = (dual of n's balance row)/Δ + Σ_l PTDF_ln·μ_l − Σ_tangents dual·(what n adds to losses)
         """
         energy = attempt.row_dual[self.fleet.rows["balance"]][:, inputs.cells.cell]
         duals = self.limits.duals(attempt.row_dual, inputs)
-        price = energy / inputs.period_hours + inputs.topology.collected(duals.flow)
-        return Priced(price, duals.line, duals.corridor, duals.pairs)
+        every = np.arange(inputs.periods)
+        congestion = attempt.point.factors(inputs, every, duals.flow)
+        loss = self.losses.price_part(attempt.row_dual, inputs) / inputs.period_hours
+        price = energy / inputs.period_hours + congestion + loss
+        return Priced(price, congestion, loss, duals.line, duals.corridor, duals.pairs)
 
 
-_WITHIN = ("exchange", "energy_short", "stopped", "matched", "tie_way")
+def _first_point(inputs: WindowInputs, start: Start | None) -> Point:
+    """Return where a window's flows and losses are linearised first."""
+    if inputs.losses is None:
+        return Point.at(inputs, -inputs.demand_at_bus)
+    seen = None if start is None else start.injection_from(inputs.first, inputs.periods)
+    return Point.at(inputs, np.zeros((inputs.periods, inputs.buses)) if seen is None else seen)
+
+
+_MOST_MOVES = 60
+"""Linearisations after which a window is kept with the losses it has; the audit then says how far off."""
+_WITHIN = ("loss", "exchange", "energy_short", "stopped", "matched", "tie_way")
 """Column families that no result shows."""
 
 
@@ -296,4 +360,5 @@ def shape_of(inputs: WindowInputs) -> tuple[object, ...]:
         inputs.cells.cell.tobytes(),
         inputs.cells.pair_from.tobytes(),
         inputs.cells.pair_to.tobytes(),
+        inputs.losses is not None,
     )

@@ -36,6 +36,9 @@ class Program:
         self._columns: dict[Name, tuple[float, float, float]] = {}
         self._rows: dict[str, list[tuple[Name, Terms, float]]] = {"=": [], "<=": []}
 
+    def __contains__(self, name: Name) -> bool:
+        return name in self._columns
+
     def column(
         self, name: Name, lower: float = 0.0, upper: float = np.inf, cost: float = 0.0
     ) -> None:

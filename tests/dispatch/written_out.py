@@ -87,6 +87,8 @@ def written_out(
         _ways(model)
     _loads_and_surplus(model)
     _lines(model)
+    if case.settings.network.losses:
+        _losses(model)
     _corridors(model)
     if secure:
         _after_losses(model)
@@ -362,6 +364,31 @@ def _lines(model: Model) -> None:
             model.program.row(("angles", name, t), terms, "=", -per_rad * shift)
             model.injected[line["from_bus"], t].append((-1, flow))
             model.injected[line["to_bus"], t].append((1, flow))
+
+
+def loss_columns(model_case: Case, program: Program) -> dict[tuple[str, int], float]:
+    """Return r/base of each line that loses something, by line and period in which it has a flow."""
+    rates = model_case.lines["resistance_pu"] / model_case.settings.base_mva
+    return {
+        (name, t): rate
+        for name, rate in rates.items() if rate > 0
+        for t in range(len(model_case.time)) if ("flow", name, t) in program
+    }  # fmt: skip
+
+
+def _losses(model: Model) -> None:
+    """A column for what each line loses, half of it drawn at either end; tangents come from outside."""
+    for name, t in loss_columns(model.case, model.program):
+        model.program.column(("loss", name, t))
+        for end in ("from_bus", "to_bus"):
+            bus = model.case.lines.at[name, end]
+            model.injected[bus, t].append((-0.5, ("loss", name, t)))
+
+
+def add_tangent(program: Program, name: str, t: int, rate: float, at: float) -> None:
+    """Losses are at least those of the tangent at a flow: loss ≥ rate·(2·at·flow − at²)."""
+    terms = [(-1, ("loss", name, t)), (2 * rate * at, ("flow", name, t))]
+    program.row(("tangent", name, t, at), terms, "<=", rate * at**2)
 
 
 def _corridors(model: Model) -> None:
