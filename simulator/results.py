@@ -431,7 +431,8 @@ def _network(run: Run) -> dict[str, Any]:
     found: dict[str, Any] = {"contingencies": len(held), "left_out": left_out}
     if run.kept_inputs.losses is not None:
         found |= {
-            "loss_accuracy_mw": run.counts.loss_gap, "linearisations": run.counts.linearisations,
+            "loss_accuracy_mw": run.counts.loss_gap, "loss_step_mw": run.counts.loss_step,
+            "linearisations": run.counts.linearisations,
         }  # fmt: skip
     return found
 

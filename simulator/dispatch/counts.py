@@ -25,7 +25,8 @@ class WindowRecord:
 class Counts:
     """Solves, rows of limits added, models built, seconds by stage, and a record a window.
 
-    linearisations : of losses; loss_gap : how far losses are from those of the flows, MW, at most
+    linearisations : of losses; loss_gap : how far losses are from those of the flows, MW, at
+        most; loss_step : how far they were when tangents closed in no further
     """
 
     lp_solves: int = 0
@@ -34,6 +35,7 @@ class Counts:
     builds: int = 0
     linearisations: int = 0
     loss_gap: float = 0.0
+    loss_step: float = 0.0
     iterations: int = 0
     windows: list[WindowRecord] = field(default_factory=list)
     seconds: dict[str, float] = field(

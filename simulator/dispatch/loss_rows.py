@@ -15,7 +15,7 @@ Should losses then lie above the true ones, because they cost nothing or pay, th
 
 Tangents close in on such a plan by a constant factor a step. Once losses are within `LOSS_CLOSE` of the true
 ones and steps are slow, the rows only move by what is missing: prices stay as they are, and the plan comes to
-balance with its true losses. Its cost is then within `LOSS_CLOSE` × price of the least, an hour.
+balance with its true losses. Its cost is then within about `LOSS_CLOSE` × price of the least, an hour.
 """
 
 import numpy as np
@@ -41,6 +41,7 @@ LOSS_CLOSE = 1e-3
 """MW; losses of a cell and period this close to the true ones are worth no more tangents."""
 _SLOTS = 8  # tangents kept of each cell and period
 _PATIENCE = 2  # linearisations before tangents are kept
+_STALLED = 5  # steps without a smaller gap after which none is expected
 _SLOW = 0.05  # of the gap before; less is the pace of a plan at a vertex, which ends by itself
 _ROOM = 10.0  # MW above the true losses that no optimum comes near
 _SMALLEST_FACTOR = 1e-9
@@ -52,6 +53,7 @@ class LossRows:
     slots : how many; count : rows in all
     factor : array (slot, period, cell, bus); base : array (slot, period, cell), MW
     exact : array (period, cell), whether the newest tangent, in slot 0, is an equation
+    last_step : how far losses were from the true ones, MW, when tangents closed in no further
     """
 
     def __init__(self, inputs: WindowInputs, fleet: CompiledFleet, injection: InjectionMap) -> None:
@@ -78,7 +80,8 @@ class LossRows:
 
     def begin_solve(self) -> None:
         """Count steps from here."""
-        self.moves, self.settling, self._last = 0, False, np.inf
+        self.moves, self.settling, self.last_step = 0, False, 0.0
+        self._last, self._best, self._without = np.inf, np.inf, 0
 
     def _put(self, inputs: WindowInputs, point: Point) -> None:
         """Put the tangent of a point into slot 0."""
@@ -133,13 +136,12 @@ class LossRows:
         statuses[:1] = AT_LOWER
         return statuses.ravel()
 
-    def move(
-        self, inputs: WindowInputs, solution: Floats, point: Point, statuses: Statuses
-    ) -> Statuses:
-        """Take in the tangent at the point a solution leads to; return the rows' new statuses."""
-        assert inputs.losses is not None
+    def move(self, inputs: WindowInputs, gap: Floats, point: Point, statuses: Statuses) -> Statuses:
+        """Take in the tangent at another point; return the rows' new statuses.
+
+        gap : losses of the last solution less those of its flows, array (period, cell), MW
+        """
         status = statuses.reshape(self.rows.shape).copy()
-        gap = self.gaps(inputs, solution, point)
         self.moves += 1
         self._always_exact |= ~self.exact & (gap > LOSS_ACCURACY)
         stuck = (np.abs(gap) > LOSS_ACCURACY) & (self.moves >= _PATIENCE)
@@ -153,9 +155,17 @@ class LossRows:
     def settles(self, gap: Floats) -> bool:
         """Tell, step by step, whether only balance is missing; gap : array (period, cell), MW."""
         worst = float(np.abs(gap).max(initial=0.0))
-        self.settling |= _SLOW * self._last < worst < LOSS_CLOSE
-        self._last = worst
+        self._without = 0 if worst < self._best else self._without + 1
+        if not self.settling:
+            self.last_step = worst
+        self.settling |= _SLOW * self._last < worst < LOSS_CLOSE or self._without >= _STALLED
+        self._last, self._best = worst, min(worst, self._best)
         return self.settling
+
+    def end(self, worst: float) -> None:
+        """Note that no step is left to take."""
+        if not self.settling:
+            self.last_step = worst
 
     def shift(self, solver: LinearSolver, gap: Floats) -> None:
         """Move every row of a cell and period by what its losses lack."""

@@ -167,6 +167,7 @@ class WindowModel:
         except SolverError as failure:
             raise WindowError(failure.status, self._contradictions(failure)) from failure
         self.counts.loss_gap = max(self.counts.loss_gap, attempt.loss_gap)
+        self.counts.loss_step = max(self.counts.loss_step, self.losses.last_step)
         self._record(inputs, time.perf_counter() - began, decided)
         priced = self._prices(inputs, attempt) if decided else relaxed
         left = self._left(inputs, attempt, decided)
@@ -257,6 +258,7 @@ class WindowModel:
             attempt.loss_gap = float(np.abs(gap).max(initial=0.0))
             off = self.limits.excess(inputs, attempt.flow) > FLOW_TOLERANCE
             if (attempt.loss_gap <= LOSS_ACCURACY and not off) or self.losses.moves >= _MOST_MOVES:
+                self.losses.end(attempt.loss_gap)
                 return False
             if self.losses.settles(gap):
                 self.losses.shift(self._solver, gap)
@@ -271,8 +273,9 @@ class WindowModel:
         columns, rows = self._solver.basis()
         fleet_rows = self.fleet.matrix.shape[0]
         of_losses, of_limits = np.split(rows[fleet_rows:], [self.losses.count])
+        gap = self.losses.gaps(inputs, attempt.solution, attempt.reached)
         attempt.point = attempt.reached
-        of_losses = self.losses.move(inputs, attempt.solution, attempt.point, of_losses)
+        of_losses = self.losses.move(inputs, gap, attempt.point, of_losses)
         parts = self.losses.matrix(inputs), self.limits.moved(inputs, attempt.point)
         matrix = sparse.csr_array(sparse.vstack([part[0] for part in parts], format="csr"))
         lower, upper = (np.concatenate([part[side] for part in parts]) for side in (1, 2))
