@@ -231,7 +231,7 @@ def test_geojson_of_a_case_without_positions_is_refused(tmp_path):
 def test_no_plan_in_time_ends_with_what_stopped_it_and_leaves_nothing(case, tmp_path, monkeypatch):
     """HiGHS finds some plan of a small case in any time, so that its having none is played."""
 
-    def none_found(self, gap, start, seconds):
+    def none_found(*_):
         raise SolverError("time limit")
 
     monkeypatch.setattr(search.Search, "_run", none_found)
