@@ -1,7 +1,6 @@
 """What a run leaves: the dataset of results-format.md, run.json, and the folder they live in.
 
-Public names: `FORMAT`, `made_whole`, `open_record`, `open_run`, `refuse_existing`, `replace_file`,
-`run_record`, `save`, `to_dataset`.
+Public names: `FORMAT`, `open_record`, `open_run`, `refuse_existing`, `run_record`, `save`, `to_dataset`.
 
 The only writer of that contract: each variable is declared once, with its dimensions, unit
 and name.
@@ -9,11 +8,9 @@ and name.
 
 import json
 import os
-from collections.abc import Callable, Iterator, Mapping
-from contextlib import contextmanager
+from collections.abc import Callable, Mapping
 from importlib.metadata import version
 from pathlib import Path
-from tempfile import TemporaryDirectory
 from typing import Any
 
 import numpy as np
@@ -25,15 +22,14 @@ from simulator import prices
 from simulator.case import series
 from simulator.dispatch.counts import WindowRecord
 from simulator.errors import OptionError
+from simulator.files import made_whole
 from simulator.horizon import Run
 
 __all__ = [
     "FORMAT",
-    "made_whole",
     "open_record",
     "open_run",
     "refuse_existing",
-    "replace_file",
     "run_record",
     "save",
     "to_dataset",
@@ -373,38 +369,6 @@ def save(
             page(made / "page.html")
 
 
-@contextmanager
-def made_whole(folder: Path, option: str) -> Iterator[Path]:
-    """Yield an empty folder that takes the place of `folder` once all went well.
-
-    option : what the caller named the folder by, for the message if it cannot be written
-    """
-    try:
-        folder.parent.mkdir(parents=True, exist_ok=True)
-        with TemporaryDirectory(prefix=f".{folder.name}-", dir=folder.parent) as scratch:
-            made = Path(scratch) / "new"
-            made.mkdir()
-            yield made
-            _swap(made, folder, Path(scratch) / "old")
-    except OSError as error:
-        raise OptionError(
-            f"{option}, must be a folder that can be written, found {folder} ({error.strerror}), "
-            "choose another folder"
-        ) from error
-
-
-def _swap(made: Path, folder: Path, aside: Path) -> None:
-    """Put the new folder in place of an old one; the old one is back if that is cut off."""
-    if folder.exists():
-        folder.rename(aside)
-    try:
-        made.rename(folder)
-    except BaseException:
-        if aside.exists():
-            aside.rename(folder)
-        raise
-
-
 def refuse_existing(folder: Path, *, force: bool) -> None:
     """Refuse a folder that is there, unless forced, or that is not the folder of a run."""
     if not folder.exists():
@@ -441,16 +405,6 @@ def open_record(folder: str | os.PathLike[str]) -> dict[str, Any]:
             "folder that `rampline week` wrote"
         ) from error
     return record
-
-
-def replace_file(path: Path, write: Callable[[Path], None]) -> None:
-    """Write a file under another name and move it into place whole."""
-    made = path.with_name(f".{path.name}-{os.getpid()}")
-    try:
-        write(made)
-        made.replace(path)
-    finally:
-        made.unlink(missing_ok=True)
 
 
 def open_run(folder: str | os.PathLike[str]) -> xr.Dataset:

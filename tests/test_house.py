@@ -11,7 +11,7 @@ import pytest
 ROOT = Path(__file__).parents[1]
 PACKAGE = ROOT / "simulator"
 ROOMS = (
-    "errors", "case", "grid", "dispatch", "horizon", "prices", "results", "audit", "studies",
+    "errors", "files", "case", "grid", "dispatch", "horizon", "prices", "results", "audit", "studies",
     "report", "cli",
 )  # fmt: skip
 TOP_LEVEL = {

@@ -24,11 +24,12 @@ from pandas.api.types import is_object_dtype
 
 from simulator.case.wording import listed, quoted
 from simulator.errors import OptionError
+from simulator.files import made_whole
 from simulator.report.geojson import LAYERS, feature_collections
 from simulator.report.moments import read_clock
 from simulator.report.page import CAUTION
 from simulator.report.view import View
-from simulator.results import VARIABLES, made_whole
+from simulator.results import VARIABLES
 
 __all__ = ["FORMATS", "Export", "Sheet", "export_run", "refuse_folder", "sheets"]
 
