@@ -24,6 +24,7 @@ from simulator.dispatch.counts import WindowRecord
 from simulator.errors import OptionError
 from simulator.files import made_whole
 from simulator.horizon import Run
+from simulator.reasons import REASONS, circumstances, unit_reasons
 
 __all__ = [
     "FORMAT",
@@ -86,8 +87,13 @@ VARIABLES: Mapping[str, Entry] = {
     "congestion_hours": (("line",), "h", "hours with a shadow price"),
     "hours_at_limit": (("line",), "h", "hours with the flow at the rating"),
     "ramp_limited_hours": (("unit",), "h", "hours in which output moved as fast as the unit can"),
+    "make_whole": (("day", "unit"), MONEY, "cost of a local day that revenue does not cover"),
+    "unit_reason": (("time", "unit"), "1", "why the unit is on"),
     "window": (("time",), "1", "number of the window the period was kept from"),
 }
+
+DERIVED = ("make_whole", "unit_reason")
+"""The variables that follow from others."""
 
 
 OF_DECISIONS: Mapping[str, Entry] = {
@@ -104,12 +110,12 @@ OF_DECISIONS: Mapping[str, Entry] = {
 
 def to_dataset(run: Run) -> xr.Dataset:
     """Return the results of a run as one labelled dataset (results-format.md)."""
-    coordinates = _coordinates(run)
     values = _powers(run) | _lines_and_prices(run) | _costs(run) | _summaries(run)
     written = {**VARIABLES, **(OF_DECISIONS if run.plan.mode == "optimal" else {})}
     variables = {
         name: (dims, values[name], {"units": unit, "long_name": label})
         for name, (dims, unit, label) in written.items()
+        if name not in DERIVED
     }
     settings = run.case.settings
     attributes = {
@@ -118,7 +124,22 @@ def to_dataset(run: Run) -> xr.Dataset:
         "period_hours": run.case.time.period_hours, "commitment": run.plan.mode,
         "limits": run.plan.limits, "pricing": run.plan.pricing, "base_mva": settings.base_mva,
     }  # fmt: skip
-    return xr.Dataset(variables, coordinates, attributes)
+    return _with_derived(run, xr.Dataset(variables, _coordinates(run), attributes))
+
+
+def _with_derived(run: Run, dataset: xr.Dataset) -> xr.Dataset:
+    """Add what follows from the other results."""
+    given = circumstances(run, dataset, _last_cost(run))
+    values = {"make_whole": prices.make_whole(dataset), "unit_reason": unit_reasons(given)}
+    flags = {
+        "flag_values": np.arange(len(REASONS), dtype=np.int8), "flag_meanings": " ".join(REASONS)
+    }  # fmt: skip
+    for name in DERIVED:
+        dims, unit, label = VARIABLES[name]
+        more = flags if name == "unit_reason" else {}
+        dataset[name] = (dims, values[name], {"units": unit, "long_name": label, **more})
+    days = np.unique(prices.local_days(dataset))
+    return dataset.assign_coords(day=("day", days, {"long_name": "local date"}))
 
 
 def _coordinates(run: Run) -> dict[str, Any]:
@@ -246,6 +267,15 @@ def _along_curve(run: Run) -> Floats:
     return np.clip(above - before, 0.0, width)
 
 
+def _last_cost(run: Run) -> Floats:
+    """Return the cost of the last MWh above the minimum, array (period, unit), currency/MWh; −inf at it."""
+    inputs = run.kept_inputs
+    used = np.where(_along_curve(run) > AT_LIMIT, inputs.block_cost, -np.inf)
+    last = np.full(run.kept.output.shape, -np.inf)
+    np.maximum.at(last.T, inputs.unit.block_unit, used.T)
+    return last
+
+
 def _summaries(run: Run) -> dict[str, Any]:
     kept, inputs = run.kept, run.kept_inputs
     length = inputs.period_hours
@@ -345,6 +375,8 @@ def _totals(dataset: xr.Dataset) -> dict[str, float]:
         "emissions_t": float(dataset["emissions"].sum()),
         "congestion_rent": float(dataset["congestion_rent"].sum()),
         "congestion_hours": float(dataset["congestion_hours"].sum()),
+        "starts": float(dataset["unit_start"].sum()),
+        "make_whole": float(dataset["make_whole"].sum()),
     }
 
 

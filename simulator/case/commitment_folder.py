@@ -24,6 +24,7 @@ from simulator.case.folder import FOLDERS, SETTINGS, look_into
 from simulator.case.hourly import read_hourly
 from simulator.case.model import TABLES, Case
 from simulator.case.reader import read_case
+from simulator.case.references import PROFILED
 from simulator.case.schema import UNITS
 from simulator.case.wording import number, quoted
 from simulator.errors import OptionError
@@ -147,8 +148,7 @@ def _profiles_in(case: Case, source: Path, path: str) -> set[str]:
 
 def _used_elsewhere(case: Case) -> set[str]:
     """Return the profiles that something other than a unit's schedule uses."""
-    columns = (case.lines["rating_profile"], case.fuels["price_profile"],
-               case.renewables["profile"], case.loads["profile"])  # fmt: skip
+    columns = [getattr(case, table)[column] for table, column in PROFILED if table != "units"]
     return {name for column in columns for name in column}
 
 
