@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 from plotly.colors import sequential
 
 from simulator.report.layout import place_buses
-from simulator.report.plans import HELD, reason_rows
+from simulator.report.plans import HELD, PAYS, reason_rows
 from simulator.report.tables import HALF, ranked
 from simulator.report.view import View, plotly_text, rounded
 
@@ -435,7 +435,7 @@ def on_off(view: View, order: Sequence[int]) -> Figure:
     layout = {"yaxis": _rows_axis(names), "hovermode": "closest", "showlegend": True}
     height = int(np.clip(120 + 15 * len(names), 180, 1500))
     why = reason_rows(view, order)
-    key = [_square("on", "var(--on)"), _square(HELD, "var(--held)")] if why else []
+    key = [_square(PAYS, "var(--on)"), _square(HELD, "var(--held)")] if why else []
     traces = [picture, *key, _starts(view, names, order)]
     return {"steps": True, "height": height, "traces": traces, "layout": layout, **why}
 

@@ -1,6 +1,6 @@
 """What the page says of the plan of on and off: reasons, make-whole amounts, how windows were solved.
 
-Public names: `HELD`, `PHRASES`, `hours_by_reason`, `largest_gap`, `make_whole_days`, `reason_rows`,
+Public names: `HELD`, `PAYS`, `PHRASES`, `hours_by_reason`, `largest_gap`, `make_whole_days`, `reason_rows`,
 `windows`.
 """
 
@@ -28,7 +28,7 @@ from simulator.report.view import View
 from simulator.report.wording import percent
 
 __all__ = [
-    "HELD", "PHRASES", "hours_by_reason", "largest_gap", "make_whole_days", "reason_rows",
+    "HELD", "PAYS", "PHRASES", "hours_by_reason", "largest_gap", "make_whole_days", "reason_rows",
     "windows",
 ]  # fmt: skip
 
@@ -50,6 +50,7 @@ PHRASES = {
 """The reasons a unit is on for, by flag meaning, as a reader sees them."""
 
 PAID = ("off", "at_no_cost", "in_the_money", "line")
+PAYS = "on, the hour pays"
 HELD = "on though the hour does not pay"
 MOST_DAYS = 7
 

@@ -133,9 +133,9 @@ MEANINGS = "off in_the_money line kept_on other"
 
 
 def reasons(on: np.ndarray) -> np.ndarray:
-    """Return why each unit is on: the first pays, the second is kept on, the third now this, now that."""
+    """Return why each unit is on: the first pays in most hours, the second is kept on."""
     code = on * [1, 3, 1]
-    code[::5, 2] *= 4
+    code[2::5, 0] *= 4
     return code.astype(np.int8)
 
 

@@ -232,17 +232,21 @@
   function fleetPicture(given) {
     if (!given.reasons) return given;
     const [picture, ...rest] = given.traces;
+    const starts = rest.pop();
+    const begins = new Set(starts.at.map((step, place) => `${starts.y[place]}\n${step}`));
     const letter = (unit, i) => given.reasons[unit][i];
     const lifted = (share, held) => (share > 0 && held ? share + 2 : share);
     const share = (on) => (on > 0 && on < 1 ? `${Math.round(100 * on)} &#37; on, ` : "");
-    const text = (on, unit, i) => share(on) + given.phrases[letter(unit, i).charCodeAt(0) - 97];
+    const start = (unit, i) => (begins.has(`${picture.y[unit]}\n${i}`) ? "start, " : "");
+    const text = (on, unit, i) => start(unit, i) + share(on) + given.phrases[letter(unit, i).charCodeAt(0) - 97];
     const shown = {
       ...picture,
       z: picture.z.map((row, unit) => row.map((on, i) => lifted(on, given.held.includes(letter(unit, i))))),
       text: picture.z.map((row, unit) => row.map((on, i) => text(on, unit, i))),
       hovertemplate: "%{y}<br>%{x}<br>%{text}<br>%{customdata:,.1f} MW<extra></extra>",
     };
-    return { ...given, traces: [shown, ...rest] };
+    const marked = { ...starts, hoverinfo: "skip", hovertemplate: null };
+    return { ...given, traces: [shown, ...rest, marked] };
   }
 
   // Prices
