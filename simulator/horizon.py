@@ -83,6 +83,7 @@ class Run:
     kept : the kept periods of all windows, end to end
     window : array (period,), the window a period was kept from
     counts : solves, rows, builds and seconds
+    last : the last window whole, its look-ahead included
     models : a model for each shape of window, which a like run may use
     starts : what each window left, from which the same window of a like run may start
     """
@@ -93,6 +94,7 @@ class Run:
     kept: WindowSolution
     window: Integers
     counts: Counts = field(repr=False)
+    last: WindowSolution = field(repr=False)
     models: Models = field(default_factory=dict, repr=False)
     starts: tuple[Start, ...] = field(default=(), repr=False)
 
@@ -105,6 +107,12 @@ class Run:
     def kept_inputs(self) -> WindowInputs:
         """The inputs of the kept periods."""
         return self.inputs.window(0, 0, self.plan.periods)
+
+    @property
+    def on_seen(self) -> NDArray[np.float64]:
+        """On or off in all periods of `plan.span`, array (period, unit): kept, then look-ahead."""
+        kept = int((self.window == self.window[-1]).sum())
+        return np.concatenate([self.kept.on, self.last.on[kept:]])
 
 
 def plan_run(
@@ -264,7 +272,10 @@ def _rolled(
     if progress:
         progress(len(spans), len(spans))
     left = tuple(solution.left for _, solution in solved)
-    return Run(case, plan, inputs, _joined(solved), _window_numbers(solved), counts, models, left)
+    return Run(
+        case, plan, inputs, _joined(solved), _window_numbers(solved), counts, solved[-1][1], models,
+        left,
+    )  # fmt: skip
 
 
 def _model_for(models: Models, window: WindowInputs, state: State, counts: Counts) -> WindowModel:

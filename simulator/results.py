@@ -1,7 +1,6 @@
 """What a run leaves: the dataset of results-format.md, run.json, and the folder they live in.
 
-Public names: `FORMAT`, `made_whole`, `open_record`, `open_run`, `refuse_existing`, `replace_file`,
-`run_record`, `save`, `to_dataset`.
+Public names: `FORMAT`, `open_record`, `open_run`, `refuse_existing`, `run_record`, `save`, `to_dataset`.
 
 The only writer of that contract: each variable is declared once, with its dimensions, unit
 and name.
@@ -9,11 +8,9 @@ and name.
 
 import json
 import os
-from collections.abc import Callable, Iterator, Mapping
-from contextlib import contextmanager
+from collections.abc import Callable, Mapping
 from importlib.metadata import version
 from pathlib import Path
-from tempfile import TemporaryDirectory
 from typing import Any
 
 import numpy as np
@@ -25,15 +22,15 @@ from simulator import prices
 from simulator.case import series
 from simulator.dispatch.counts import WindowRecord
 from simulator.errors import OptionError
+from simulator.files import made_whole
 from simulator.horizon import Run
+from simulator.reasons import REASONS, circumstances, unit_reasons
 
 __all__ = [
     "FORMAT",
-    "made_whole",
     "open_record",
     "open_run",
     "refuse_existing",
-    "replace_file",
     "run_record",
     "save",
     "to_dataset",
@@ -90,8 +87,13 @@ VARIABLES: Mapping[str, Entry] = {
     "congestion_hours": (("line",), "h", "hours with a shadow price"),
     "hours_at_limit": (("line",), "h", "hours with the flow at the rating"),
     "ramp_limited_hours": (("unit",), "h", "hours in which output moved as fast as the unit can"),
+    "make_whole": (("day", "unit"), MONEY, "cost of a local day that revenue does not cover"),
+    "unit_reason": (("time", "unit"), "1", "why the unit is on"),
     "window": (("time",), "1", "number of the window the period was kept from"),
 }
+
+DERIVED = ("make_whole", "unit_reason")
+"""The variables that follow from others."""
 
 
 OF_DECISIONS: Mapping[str, Entry] = {
@@ -108,12 +110,12 @@ OF_DECISIONS: Mapping[str, Entry] = {
 
 def to_dataset(run: Run) -> xr.Dataset:
     """Return the results of a run as one labelled dataset (results-format.md)."""
-    coordinates = _coordinates(run)
     values = _powers(run) | _lines_and_prices(run) | _costs(run) | _summaries(run)
     written = {**VARIABLES, **(OF_DECISIONS if run.plan.mode == "optimal" else {})}
     variables = {
         name: (dims, values[name], {"units": unit, "long_name": label})
         for name, (dims, unit, label) in written.items()
+        if name not in DERIVED
     }
     settings = run.case.settings
     attributes = {
@@ -122,7 +124,22 @@ def to_dataset(run: Run) -> xr.Dataset:
         "period_hours": run.case.time.period_hours, "commitment": run.plan.mode,
         "limits": run.plan.limits, "pricing": run.plan.pricing, "base_mva": settings.base_mva,
     }  # fmt: skip
-    return xr.Dataset(variables, coordinates, attributes)
+    return _with_derived(run, xr.Dataset(variables, _coordinates(run), attributes))
+
+
+def _with_derived(run: Run, dataset: xr.Dataset) -> xr.Dataset:
+    """Add what follows from the other results."""
+    given = circumstances(run, dataset, _last_cost(run))
+    values = {"make_whole": prices.make_whole(dataset), "unit_reason": unit_reasons(given)}
+    flags = {
+        "flag_values": np.arange(len(REASONS), dtype=np.int8), "flag_meanings": " ".join(REASONS)
+    }  # fmt: skip
+    for name in DERIVED:
+        dims, unit, label = VARIABLES[name]
+        more = flags if name == "unit_reason" else {}
+        dataset[name] = (dims, values[name], {"units": unit, "long_name": label, **more})
+    days = np.unique(prices.local_days(dataset))
+    return dataset.assign_coords(day=("day", days, {"long_name": "local date"}))
 
 
 def _coordinates(run: Run) -> dict[str, Any]:
@@ -250,6 +267,15 @@ def _along_curve(run: Run) -> Floats:
     return np.clip(above - before, 0.0, width)
 
 
+def _last_cost(run: Run) -> Floats:
+    """Return the cost of the last MWh above the minimum, array (period, unit), currency/MWh; −inf at it."""
+    inputs = run.kept_inputs
+    used = np.where(_along_curve(run) > AT_LIMIT, inputs.block_cost, -np.inf)
+    last = np.full(run.kept.output.shape, -np.inf)
+    np.maximum.at(last.T, inputs.unit.block_unit, used.T)
+    return last
+
+
 def _summaries(run: Run) -> dict[str, Any]:
     kept, inputs = run.kept, run.kept_inputs
     length = inputs.period_hours
@@ -349,6 +375,8 @@ def _totals(dataset: xr.Dataset) -> dict[str, float]:
         "emissions_t": float(dataset["emissions"].sum()),
         "congestion_rent": float(dataset["congestion_rent"].sum()),
         "congestion_hours": float(dataset["congestion_hours"].sum()),
+        "starts": float(dataset["unit_start"].sum()),
+        "make_whole": float(dataset["make_whole"].sum()),
     }
 
 
@@ -371,38 +399,6 @@ def save(
         (made / "run.json").write_text(json.dumps(record, indent=2) + "\n", encoding="utf-8")
         if page is not None:
             page(made / "page.html")
-
-
-@contextmanager
-def made_whole(folder: Path, option: str) -> Iterator[Path]:
-    """Yield an empty folder that takes the place of `folder` once all went well.
-
-    option : what the caller named the folder by, for the message if it cannot be written
-    """
-    try:
-        folder.parent.mkdir(parents=True, exist_ok=True)
-        with TemporaryDirectory(prefix=f".{folder.name}-", dir=folder.parent) as scratch:
-            made = Path(scratch) / "new"
-            made.mkdir()
-            yield made
-            _swap(made, folder, Path(scratch) / "old")
-    except OSError as error:
-        raise OptionError(
-            f"{option}, must be a folder that can be written, found {folder} ({error.strerror}), "
-            "choose another folder"
-        ) from error
-
-
-def _swap(made: Path, folder: Path, aside: Path) -> None:
-    """Put the new folder in place of an old one; the old one is back if that is cut off."""
-    if folder.exists():
-        folder.rename(aside)
-    try:
-        made.rename(folder)
-    except BaseException:
-        if aside.exists():
-            aside.rename(folder)
-        raise
 
 
 def refuse_existing(folder: Path, *, force: bool) -> None:
@@ -441,16 +437,6 @@ def open_record(folder: str | os.PathLike[str]) -> dict[str, Any]:
             "folder that `rampline week` wrote"
         ) from error
     return record
-
-
-def replace_file(path: Path, write: Callable[[Path], None]) -> None:
-    """Write a file under another name and move it into place whole."""
-    made = path.with_name(f".{path.name}-{os.getpid()}")
-    try:
-        write(made)
-        made.replace(path)
-    finally:
-        made.unlink(missing_ok=True)
 
 
 def open_run(folder: str | os.PathLike[str]) -> xr.Dataset:

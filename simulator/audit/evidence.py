@@ -35,6 +35,7 @@ DIMENSIONS: Mapping[str, tuple[str, ...]] = {
         ("line_flow", "line_rating", "line_shadow_price", "congestion_rent"), ("time", "line")),
     **dict.fromkeys(("congestion_hours", "hours_at_limit"), ("line",)),
     "cost": ("time", "component"),
+    "make_whole": ("day", "unit"),
     "window": ("time",),
 }  # fmt: skip
 """The variables that are audited, and their dimensions (results-format.md)."""
@@ -44,6 +45,9 @@ OF_DECISIONS: Mapping[str, tuple[str, ...]] = {
     "line_limit_side": ("time", "line"),
 }
 """What a run in mode `optimal` has besides."""
+
+CODES: Mapping[str, tuple[str, ...]] = {"unit_reason": ("time", "unit")}
+"""The audited variables that are codes and so always have a number."""
 
 COMPONENTS = (
     "unit_running", "unit_start", "renewable", "storage", "unserved", "surplus", "reserve_shortage",
@@ -60,6 +64,7 @@ class Evidence:
     names : dimension → labels in the order of the case's table
     span : the run's periods on the case's time axis; hours : their local starts
     length : Δ, h; mode, limits, pricing : what the run was asked for
+    reasons : what the codes of `unit_reason` mean
     values : variable → array with the dimensions of `DIMENSIONS`; NaN for what is endless and is not
         the rating of a line
     """
@@ -71,6 +76,7 @@ class Evidence:
     mode: str
     limits: str
     pricing: str
+    reasons: tuple[str, ...]
     values: Mapping[str, Floats] = field(repr=False)
 
     def __getitem__(self, variable: str) -> Floats:
@@ -183,11 +189,14 @@ def gather(case: Case, dataset: xr.Dataset) -> Evidence:
     _no_products(dataset)
     if case.settings.network.losses:
         raise _unfit("the case", "must be without network losses", "losses", "audit it without")
-    mode = _choice(dataset, "commitment", MODES)
-    wanted = {**DIMENSIONS, **(OF_DECISIONS if mode == "optimal" else {})}
+    mode, span = _choice(dataset, "commitment", MODES), _span(case, dataset)
+    names["day"] = pd.Index(case.time.local[span].strftime("%Y-%m-%d").unique())
+    _same_elements(dataset, "day", names["day"])
+    wanted = {**DIMENSIONS, **CODES, **(OF_DECISIONS if mode == "optimal" else {})}
     return Evidence(
-        case=case, names=names, span=_span(case, dataset), length=_length(case, dataset), mode=mode,
+        case=case, names=names, span=span, length=_length(case, dataset), mode=mode,
         limits=_choice(dataset, "limits", LIMITS), pricing=_choice(dataset, "pricing", PRICING),
+        reasons=_reasons(dataset),
         values={name: _values(dataset, name, dims) for name, dims in wanted.items()},
     )  # fmt: skip
 
@@ -230,6 +239,19 @@ def _choice(dataset: xr.Dataset, attribute: str, known: tuple[str, ...]) -> str:
         rule = f"must be one of {', '.join(known)}"
         raise _unfit(f"attribute {attribute} of the dataset", rule, value, _RERUN)
     return str(value)
+
+
+def _reasons(dataset: xr.Dataset) -> tuple[str, ...]:
+    """Return what the codes of `unit_reason` mean, as the dataset says itself."""
+    subject, rule = "unit_reason of the dataset", "must say what its codes from 0 mean"
+    described = dataset["unit_reason"].attrs if "unit_reason" in dataset else {}
+    meanings = tuple(str(described.get("flag_meanings", "")).split())
+    values = np.asarray(described.get("flag_values", []))
+    if not {"off", "at_no_cost"} <= set(meanings) or not np.array_equal(
+        values, np.arange(len(meanings))
+    ):
+        raise _unfit(subject, rule, f"{meanings} for {values}", _RERUN)
+    return meanings
 
 
 def _span(case: Case, dataset: xr.Dataset) -> slice:

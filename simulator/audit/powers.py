@@ -46,6 +46,7 @@ def _missing(evidence: Evidence) -> list[Residual]:
         kind, names = "variable", pd.Index([variable])
         if len(dimensions) > 1 or dimensions == ("line",):
             kind, names = dimensions[-1], evidence.names[dimensions[-1]]
+            there = np.atleast_1d(there.all(axis=0)) if dimensions[0] == "day" else there
         else:
             there = there[:, None]
         found.append(Residual(kind, names, variable.replace("_", " "), 1.0 - there))

@@ -15,6 +15,7 @@ from simulator.audit.costs import cost_checks
 from simulator.audit.evidence import gather
 from simulator.audit.network import Network
 from simulator.audit.optimality import optimality_checks
+from simulator.audit.plans import plan_checks
 from simulator.audit.powers import power_checks
 from simulator.audit.prices import price_checks
 from simulator.audit.storage import storage_checks
@@ -39,6 +40,7 @@ def audit(case: Case, dataset: xr.Dataset) -> list[Check]:
         *price_checks(evidence, network),
         *optimality_checks(evidence, units),
         *cost_checks(evidence, units),
+        *plan_checks(evidence, units),
     ]
 
 

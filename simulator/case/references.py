@@ -1,6 +1,6 @@
 """Names across tables: each one once, and each reference to a name that exists.
 
-Public names: `dangling`, `repeated`.
+Public names: `PROFILED`, `dangling`, `repeated`.
 """
 
 from collections.abc import Iterator
@@ -17,7 +17,7 @@ from simulator.case.sheet import Sheet
 from simulator.case.wording import did_you_mean, listed, quoted
 from simulator.errors import Problem
 
-__all__ = ["dangling", "repeated"]
+__all__ = ["PROFILED", "dangling", "repeated"]
 
 REFERENCES = (
     ("lines", "from_bus", "buses"),

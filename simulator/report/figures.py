@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 from plotly.colors import sequential
 
 from simulator.report.layout import place_buses
+from simulator.report.plans import HELD, PAYS, reason_rows
 from simulator.report.tables import HALF, ranked
 from simulator.report.view import View, plotly_text, rounded
 
@@ -418,20 +419,37 @@ def unit_order(view: View) -> list[int]:
 
 
 def on_off(view: View, order: Sequence[int]) -> Figure:
-    """When each unit was on, as a picture of units by steps, with its starts."""
+    """When each unit was on, as a picture of units by steps, with its starts and why it was on.
+
+    The script lifts what is on though it does not pay from 0..1 to 2..3, where it has its own colour.
+    """
     names = [plotly_text(view.names("unit")[unit]) for unit in order]
     on = view.steps.mean(view.values("unit_on"))[:, order]
     output = view.steps.mean(view.values("unit_output"))[:, order]
     picture = {
         "type": "heatmap", "y": names, "z": rounded(on.T, 2), "customdata": rounded(output.T),
-        "zmin": 0, "zmax": 1, "colorscale": [[0, "var(--off)"], [1, "var(--on)"]], "showscale": False,
+        "zmin": 0, "zmax": 3, "colorscale": ON_OFF, "showscale": False,
         "hovertemplate": "%{y}<br>%{x}<br>on %{z:.0%}, %{customdata:,.1f} MW<extra></extra>",
         "ygap": 1,
     }  # fmt: skip
     layout = {"yaxis": _rows_axis(names), "hovermode": "closest", "showlegend": True}
     height = int(np.clip(120 + 15 * len(names), 180, 1500))
-    traces = [picture, _starts(view, names, order)]
-    return {"steps": True, "height": height, "traces": traces, "layout": layout}
+    why = reason_rows(view, order)
+    key = [_square(PAYS, "var(--on)"), _square(HELD, "var(--held)")] if why else []
+    traces = [picture, *key, _starts(view, names, order)]
+    return {"steps": True, "height": height, "traces": traces, "layout": layout, **why}
+
+
+ON_OFF = [
+    [0, "var(--off)"], [0.3333, "var(--on)"], [0.6667, "var(--off)"], [1, "var(--held)"],
+]  # fmt: skip
+
+
+def _square(name: str, colour: str) -> Figure:
+    """Return an entry of the key without a point."""
+    marker = {"symbol": "square", "size": 11, "color": colour}
+    return {"type": "scatter", "mode": "markers", "name": name, "at": [0], "y": [None],
+            "marker": marker, "hoverinfo": "skip"}  # fmt: skip
 
 
 def _starts(view: View, names: Sequence[str], order: Sequence[int]) -> Figure:

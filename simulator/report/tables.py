@@ -435,20 +435,27 @@ def units(view: View) -> Table:
     starts = view.values("unit_start").sum(axis=0)
     running, starting = (view.values(name).sum(axis=0) for name in ("unit_cost", "unit_start_cost"))
     emitted = view.values("emissions").sum(axis=0)
+    paid = _make_whole(view)
     digits = 0 if _whole(on) and _whole(starts) else 2
     rows = [
         [
             word(names[unit]), *(word(label[unit]) for label in labels), figure(energy[unit]),
             figure(on[unit], digits), figure(starts[unit], digits), cash(running[unit], running),
-            cash(starting[unit], starting), figure(emitted[unit]),
+            cash(starting[unit], starting), *(cash(each[unit], each) for each in paid),
+            figure(emitted[unit]),
         ]
         for unit in ranked(energy, on)
     ]  # fmt: skip
     columns = words("Unit", "Technology", "Fuel", "Bus") + numbers(
         "MWh", "Hours on", "Starts", f"Running cost {view.currency}", f"Start cost {view.currency}",
-        "t CO\N{SUBSCRIPT TWO}",
+        *(f"Make-whole {view.currency}" for _ in paid), "t CO\N{SUBSCRIPT TWO}",
     )  # fmt: skip
     return Table("Units", columns, rows, sortable=True)
+
+
+def _make_whole(view: View) -> list[Floats]:
+    """Return make-whole amounts by unit, as a list of one array, or of none if they are not known."""
+    return [view.values("make_whole").sum(axis=0)] if view.has("make_whole") else []
 
 
 def _whole(values: Floats) -> bool:

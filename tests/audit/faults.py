@@ -218,7 +218,9 @@ FAULTS: dict[str, Fault] = {
     "half on": Fault(
         "switching", f'unit "spare" (on or off) {at(5)}', half_on, mode="optimal"
     ),
-    "on while out": Fault("outages", f'unit "spare" {at(10)}', on_while_out, mode="optimal"),
+    "on while out": Fault(
+        "outages", f'unit "spare" {at(10)}', on_while_out, mode="optimal", also=frozenset({"reasons"}),
+    ),
     "off schedule": Fault(
         "schedule", f'unit "gas twin" {at(0)}',
         changes={("units", "gas twin", "on_profile"): "peaker on"},
@@ -301,7 +303,7 @@ FAULTS: dict[str, Fault] = {
     ),
     "price below what spilling costs": Fault(
         "surplus prices", f'bus "Port" {at(12)}', shifted_price(12, ("Port",), -333.0),
-        also=frozenset({"unit prices", "tie prices"}),
+        also=frozenset({"unit prices", "tie prices", "reasons"}),
     ),
     "prices apart across a tie": Fault(
         "tie prices", f'tie "cable" (forward) {at(9)}', shifted_price(9, ("Port",), -0.01)
@@ -314,10 +316,49 @@ FAULTS: dict[str, Fault] = {
         "running cost", f'unit "engine" {at(12)}', adding("unit_cost", 12, engine=1.0)
     ),
     "a hot start booked as cold": Fault(
-        "start cost", f'unit "peaker" {at(21)}', adding("unit_start_cost", 21, peaker=250.0)
+        "start cost", f'unit "peaker" {at(21)}', adding("unit_start_cost", 21, peaker=250.0),
+        also=frozenset({"make-whole"}),
     ),
     "cost that does not add up": Fault(
         "cost", 'component "unserved" ' + at(12), adding("cost", 12, unserved=1.0)
+    ),
+    "make-whole amount": Fault(
+        "make-whole", f'unit "peaker" {at(0)}', adding("make_whole", 0, peaker=1.0)
+    ),
+    "paid by congestion, told as paid without": Fault(
+        "reasons", f'unit "gas" {at(2)}', adding("unit_reason", 2, gas=-1)
+    ),
+    "paid without congestion, told as paid by it": Fault(
+        "reasons", f'unit "gas" {at(9)}', adding("unit_reason", 9, gas=1)
+    ),
+    "out of the money, told as in it": Fault(
+        "reasons", f'unit "coal" {at(2)}', adding("unit_reason", 2, coal=-3)
+    ),
+    "in the money, told as on schedule": Fault(
+        "reasons", f'unit "engine" {at(16)}', adding("unit_reason", 16, engine=3)
+    ),
+    "on, told as off": Fault("reasons", f'unit "gas" {at(9)}', adding("unit_reason", 9, gas=-2)),
+    "idle, told as in the money": Fault(
+        "reasons", f'unit "spare" {at(2)}', adding("unit_reason", 2, spare=1)
+    ),
+    "must run that need not": Fault(
+        "reasons", f'unit "coal" {at(2)}', adding("unit_reason", 2, coal=1)
+    ),
+    "reserve that is not": Fault(
+        "reasons", f'unit "coal" {at(2)}', adding("unit_reason", 2, coal=-1)
+    ),
+    "minimum up time long past": Fault(
+        "reasons", f'unit "coal" {at(2)}', adding("unit_reason", 2, coal=2)
+    ),
+    "ramp that does not bind": Fault(
+        "reasons", f'unit "peaker" {at(15)}', adding("unit_reason", 15, peaker=3)
+    ),
+    "kept on for nothing": Fault(
+        "reasons", f'unit "peaker" {at(15)}', adding("unit_reason", 15, peaker=4)
+    ),
+    "no reason where one holds": Fault(
+        "reasons", f'unit "coal" {at(2)}', adding("unit_reason", 2, coal=5),
+        changes={("units", "coal", "must_run"): "true"},
     ),
     "emissions": Fault("emissions", f'unit "gas" {at(9)}', adding("emissions", 9, gas=0.1)),
 }  # fmt: skip
