@@ -105,6 +105,12 @@ store,bus,charge_mw,discharge_mw,energy_mwh,charge_efficiency,discharge_efficien
 loss_percent_per_h,initial_mwh,final_mwh
 cells,Midfen,15,,60,0.95,0.93,0.1,,
 """,
+    "fleet/reserves.csv": """\
+product,direction,zone,requirement_mw,requirement_profile,percent_of_load,response_minutes,\
+shortage_per_mwh
+spinning,up,,10,warmth,3,10,
+lowering,down,south,6,,,,400
+""",
     "demand/loads.csv": """\
 load,bus,profile,scale_mw,unserved_per_mwh
 town,Midfen,demand,90,

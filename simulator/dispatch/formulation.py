@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from simulator.dispatch.fleet import FleetData
 from simulator.dispatch.inputs import WindowInputs
+from simulator.dispatch.reserves import reserve_rules
 
 __all__ = ["MOVING", "state_fleet"]
 
@@ -28,14 +29,14 @@ MOVING = 1.0
 
 
 def state_fleet(inputs: WindowInputs, data: FleetData) -> Model:
-    """State the columns and rows of one window (formulation.md 2.1 to 2.5)."""
+    """State the columns and rows of one window (formulation.md 2.1 to 2.5, 2.7)."""
     model = pyo.ConcreteModel()
     model.inputs, model.data = inputs, data
     model.right = {family: _right_hand_sides(*bounds) for family, bounds in data.rows.items()}
     model.blocks_of = _members(inputs.unit.block_unit, len(inputs.unit.bus))
     for family, (lower, _) in data.columns.items():
         setattr(model, family, pyo.Var(*_ranges(lower)))
-    for family, rule in ROWS[inputs.mode].items():
+    for family, rule in {**ROWS[inputs.mode], **reserve_rules(inputs)}.items():
         setattr(model, family, pyo.Constraint(*_ranges(data.rows[family][0]), rule=rule))
     return model
 
