@@ -45,7 +45,7 @@ def _missing(evidence: Evidence) -> list[Residual]:
         there = ~np.isnan(values)
         kind, names = "variable", pd.Index([variable])
         if values.ndim > 2:  # noqa: PLR2004  (time, element, another): of one element all are one
-            there = there.all(axis=2)
+            there = np.all(there, axis=2)
             kind, names = dimensions[1], evidence.names[dimensions[1]]
         elif len(dimensions) > 1 or dimensions == ("line",):
             kind, names = dimensions[-1], evidence.names[dimensions[-1]]

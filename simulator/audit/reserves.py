@@ -99,7 +99,7 @@ def _of_units(reserves: Reserves, rule: str, values: Floats) -> Residual:
 
 
 def _requirement(reserves: Reserves) -> list[Residual]:
-    """What is provided and what is short make up what is asked, and nothing is short beyond that."""
+    """Hold what is provided and what is short to what is asked; nothing is short beyond that."""
     missing = reserves.asked - reserves.provided.sum(axis=1)
     return [
         _of_products(reserves, "provided and short", missing - reserves.short),
@@ -108,7 +108,7 @@ def _requirement(reserves: Reserves) -> list[Residual]:
 
 
 def _room(reserves: Reserves) -> list[Residual]:
-    """output + Σ up ≤ available·on; output − Σ down ≥ minimum·on."""
+    """2.7: output + Σ up ≤ available·on; output − Σ down ≥ minimum·on."""
     return [
         _of_units(reserves, "headroom", -reserves.room(upward=True)),
         _of_units(reserves, "footroom", -reserves.room(upward=False)),
@@ -116,7 +116,7 @@ def _room(reserves: Reserves) -> list[Residual]:
 
 
 def _response(reserves: Reserves) -> list[Residual]:
-    """0 ≤ provided ≤ ramp × response time × on, by units of the zone."""
+    """2.7: 0 ≤ provided ≤ ramp × response time × on, by units of the zone."""
     over = np.maximum(reserves.provided - reserves.limit, -reserves.provided)
     return [
         _of_units(reserves, f'of "{product}"', over[:, :, column])
@@ -130,7 +130,9 @@ def _prices(reserves: Reserves) -> list[Residual]:
     found = [
         _of_products(reserves, "sign", -price),
         _of_products(reserves, "shortage price", price - worth),
-        _of_products(reserves, "while short", np.where(reserves.short > INSIDE, worth - price, 0.0)),
+        _of_products(
+            reserves, "while short", np.where(reserves.short > INSIDE, worth - price, 0.0)
+        ),
     ]
     for upward, rule in ((True, "headroom left"), (False, "footroom left")):
         least, most = reserves.value(upward=upward)

@@ -28,7 +28,9 @@ def resolved(
     tables["storage"] = _storage(frames["storage"])
     tables["loads"] = _filled(frames["loads"], unserved_per_mwh=settings.penalties.unserved)
     tables["reserves"] = _filled(
-        frames["reserves"], response_minutes=np.inf, shortage_per_mwh=settings.penalties.unserved / 2
+        frames["reserves"],
+        response_minutes=np.inf,
+        shortage_per_mwh=settings.penalties.unserved / 2,
     )
     tables["outages"] = _outages(sheets["outages"].frame, time.time_zone)
     tables["blocks"] = _blocks(settings, sheets)

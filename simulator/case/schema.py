@@ -13,7 +13,17 @@ from typing import Any
 import pandas as pd
 import pandera.pandas as pa
 
-__all__ = ["BLANKS", "EVERYWHERE", "OUTAGE_KINDS", "TABLES", "Field", "Kind", "RowRule", "Rule", "Table"]
+__all__ = [
+    "BLANKS",
+    "EVERYWHERE",
+    "OUTAGE_KINDS",
+    "TABLES",
+    "Field",
+    "Kind",
+    "RowRule",
+    "Rule",
+    "Table",
+]
 
 
 class Kind(Enum):

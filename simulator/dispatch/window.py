@@ -287,8 +287,8 @@ class WindowModel:
         return attempt.row_dual[self.fleet.rows["reserve_requirement"]] / inputs.period_hours
 
 
-_PRICED = ("price", "line_dual", "reserve_price")
-_PRICED += tuple(f"relaxed_{name}" for name in _PRICED)
+_OF_ONE_SOLVE = ("price", "line_dual", "reserve_price")
+_PRICED = (*_OF_ONE_SOLVE, *(f"relaxed_{name}" for name in _OF_ONE_SOLVE))
 _WITHIN = ("exchange", "energy_short", "stopped", "matched", "tie_way")
 """Column families that no result shows."""
 

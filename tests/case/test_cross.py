@@ -123,14 +123,6 @@ def test_a_zone_called_all_leaves_it_open_what_all_means(tmp_path):
     assert problems_of(write_case(tmp_path / "b", {RESERVES: None}, cells)) == ()
 
 
-def test_a_requirement_profile_below_zero_is_told(tmp_path):
-    lines = case_texts()["network/lines.csv"].replace("warmth", "")
-    cells = {("hourly/weather.csv", 5, "warmth"): "-0.1"}
-    problem = only(tmp_path, {"network/lines.csv": lines}, cells)
-    assert (problem.path, problem.row, problem.column) == ("hourly/weather.csv", 5, "warmth")
-    assert 'product "spinning" has it as requirement_profile' in problem.rule
-
-
 def autumn_outage(folder, start, until):
     text = f"kind,name,from,until\nunit,gas 2,{start},{until}\n"
     return write_case(folder, {OUTAGES: text}, start="2026-10-24T00:00", hours=72)

@@ -131,7 +131,7 @@ def test_outages_are_instants_in_utc(bare):
 def test_profiles_stand_on_the_time_axis(tmp_path):
     case = small_case(tmp_path)
     assert (case.profiles.index == case.time.periods).all()
-    assert set(case.profiles) == {"demand", "wind", "warmth", "gas 2 on", "gas price"}
+    assert set(case.profiles) == {"demand", "wind", "warmth", "watch", "gas 2 on", "gas price"}
     assert (case.profiles.dtypes == "float64").all()
     text = case_texts()["hourly/demand.csv"].splitlines()[17]
     assert case.profiles["demand"].iloc[16] == float(text.split(",")[1])

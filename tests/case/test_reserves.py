@@ -13,10 +13,10 @@ def asked(case):
 
 
 def test_a_requirement_is_an_amount_by_profile_and_a_share_of_the_load_of_its_zone(tmp_path):
-    """By hand: 10 MW × warmth + 3 % of 150 MW × demand everywhere; 6 MW in the south."""
+    """By hand: 10 MW × watch + 3 % of 150 MW × demand everywhere; 6 MW in the south."""
     case = small_case(tmp_path)
-    demand, warmth = (case.profiles[name].to_numpy() for name in ("demand", "warmth"))
-    np.testing.assert_allclose(asked(case)[:, 0], 10 * warmth + 0.03 * 150 * demand)
+    demand, watch = (case.profiles[name].to_numpy() for name in ("demand", "watch"))
+    np.testing.assert_allclose(asked(case)[:, 0], 10 * watch + 0.03 * 150 * demand)
     np.testing.assert_allclose(asked(case)[:, 1], 6)
 
 
@@ -48,5 +48,3 @@ def test_the_summary_names_the_products_where_there_are_any(tmp_path):
     text = str(small_case(tmp_path / "a"))
     assert "2: spinning (up, 10 MW and 3 % of load), lowering (down, 6 MW)" in text
     assert "reserves" not in str(small_case(tmp_path / "b", {RESERVES: None}))
-
-

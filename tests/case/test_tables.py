@@ -98,7 +98,7 @@ VALUES = [
     (RESERVES, 3, "zone", "sought", 'product "lowering"', 'did you mean "south"?'),
     (RESERVES, 3, "zone", "Midfen", 'product "lowering"', "must be all, or name a zone"),
     (RESERVES, 2, "requirement_mw", "-1", 'product "spinning"', SIGN),
-    (RESERVES, 2, "requirement_profile", "wamth", 'product "spinning"', 'did you mean "warmth"?'),
+    (RESERVES, 2, "requirement_profile", "wacht", 'product "spinning"', 'did you mean "watch"?'),
     (RESERVES, 2, "percent_of_load", "-3", 'product "spinning"', "must be from 0 to 100"),
     (RESERVES, 2, "percent_of_load", "101", 'product "spinning"', "must be from 0 to 100"),
     (RESERVES, 2, "response_minutes", "0", 'product "spinning"', "must be greater than 0"),
@@ -164,7 +164,9 @@ def test_what_the_format_allows_is_read(tmp_path, path, row, column, value):
     assert problems_of(write_case(tmp_path, cells={(path, row, column): value})) == ()
 
 
-@pytest.mark.parametrize("path", [BUSES, LINES, TIES, UNITS, FUELS, PLANTS, STORES, RESERVES, LOADS])
+@pytest.mark.parametrize(
+    "path", [BUSES, LINES, TIES, UNITS, FUELS, PLANTS, STORES, RESERVES, LOADS]
+)
 def test_a_repeated_name_names_both_rows(tmp_path, path):
     text = case_texts()[path]
     first, last = text.splitlines()[1], len(text.splitlines()) + 1

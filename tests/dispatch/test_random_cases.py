@@ -91,8 +91,8 @@ def test_the_best_on_off_decisions_cost_what_an_integer_program_finds(random_cas
 def check_prices(case: Case, results: xr.Dataset, program: Program, random) -> None:
     """A price is what a little more and a little less asked for cost; where both agree, just that.
 
-    Cost is convex in what is withdrawn at a bus, and in what is required of a reserve: its slopes a step before and a step after
-    enclose every price that is right; where the two agree there is only one.
+    Cost is convex in what is withdrawn at a bus, and in what is required of a reserve: its slopes a step
+    before and a step after enclose every price that is right; where the two agree there is only one.
     """
     for row, variable, places in (("balance", "price", 5), ("reserves", "reserve_price", 2)):
         price = results[variable].to_pandas()
@@ -129,7 +129,9 @@ def check_network(run: Run) -> None:
 
 def test_the_random_cases_meet_what_they_are_meant_to_meet(random_case):
     """Of ten cases, some are short, some congested, some split, some full to overflowing."""
-    met = dict.fromkeys(["short", "congested", "split", "spilled", "stored", "tied", "started", *RESERVED], 0)
+    met = dict.fromkeys(
+        ["short", "congested", "split", "spilled", "stored", "tied", "started", *RESERVED], 0
+    )
     for seed in range(10):
         case = random_case(seed)
         try:
