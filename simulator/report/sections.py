@@ -389,7 +389,7 @@ def _reserves(view: View) -> Section | None:
     label = f"Price of each product by {view.steps.unit}, {view.price_unit}, and what is short, MW"
     chart = Chart("reserves", label, figures.reserve_prices(view), [tables.reserves(view)])
     providers = tables.reserve_providers(view)
-    return Section("reserves", "Reserves", text, charts=[chart], tables=[providers])
+    return Section("reserves", "Reserves", text, charts=[chart], folded=[providers])
 
 
 def _ramps(view: View) -> Section | None:
