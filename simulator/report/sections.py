@@ -383,8 +383,8 @@ def _reserves(view: View) -> Section | None:
         return None
     text = [
         "Price of a product: what one more MW asked for would cost in an hour.",
-        "A unit that provides some gives up output for it, or runs above its minimum. Reserve is not "
-        + "checked against line limits.",
+        "A unit that provides some gives up output for it, or runs above its minimum.",
+        "Reserve is not checked against line limits.",
     ]
     label = f"Price of each product by {view.steps.unit}, {view.price_unit}, and what is short, MW"
     chart = Chart("reserves", label, figures.reserve_prices(view), [tables.reserves(view)])
