@@ -300,6 +300,8 @@ def shape_of(inputs: WindowInputs) -> tuple[object, ...]:
         inputs.periods,
         len(inputs.unit.bus),
         len(inputs.unit.block_unit),
-        (len(inputs.reserve.upward), len(inputs.reserve.unit), len(inputs.reserve.limited)),
+        len(inputs.reserve.upward),
+        len(inputs.reserve.unit),
+        len(inputs.reserve.limited),
         inputs.buses,
     )
