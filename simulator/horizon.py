@@ -299,20 +299,35 @@ def _solve(
         return model.solve(window, state, start)
     except WindowError as failure:
         first = plan.first + window.first
-        elements = [_described(case, first, *broken) for broken in failure.broken]
+        elements = [
+            _described(case, first, family, period, _element(window, family, position))
+            for family, period, position in failure.broken
+        ]
         raise SolveError(window.number, failure.status, elements) from failure
 
 
 _ELEMENT = {
-    "unit": ("output_split", "ramp_up", "ramp_down", "switching", "minimum_up", "minimum_down",
-             "cold_start_stops", "stops_summed", "matched_sum", "output", "on", "start", "stop",
-             "cold_start"),
+    "unit": ("output_split", "block_width", "ramp_up", "ramp_down", "switching", "minimum_up",
+             "minimum_down", "cold_start_stops", "stops_summed", "matched_sum", "matched_after_stop",
+             "matched_in_time", "output", "on", "start", "stop", "cold_start", "headroom", "footroom"),
     "plant": ("renewable",),
     "store": ("store_balance", "energy_floor", "charge", "discharge", "stored"),
     "tie": ("tie_forward", "tie_reverse"),
     "load": ("unserved",),
     "line": ("line",),
 }  # fmt: skip
+
+
+def _element(window: WindowInputs, family: str, position: int) -> int:
+    """Return which element is meant: some families have rows for some units only, or for blocks."""
+    unit, reserve = window.unit, window.reserve
+    cold = ("cold_start", "cold_start_stops", "stops_summed", "matched_sum", "matched_after_stop",
+            "matched_in_time")  # fmt: skip
+    units = dict.fromkeys(cold, unit.cold_rows) | {
+        "block_width": unit.block_unit, "ramp_up": unit.ramp_up_rows,
+        "ramp_down": unit.ramp_down_rows, "headroom": reserve.up_units, "footroom": reserve.down_units,
+    }  # fmt: skip
+    return int(units[family][position]) if family in units else position
 
 
 def _described(case: Case, first: int, family: str, period: int, element: int) -> str:

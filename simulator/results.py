@@ -80,6 +80,8 @@ VARIABLES: Mapping[str, Entry] = {
     "price_loss": (("time", "bus"), PRICE, "price part caused by losses"),
     "reserve_price": (("time", "product"), PRICE, "reserve price"),
     "reserve_shortage": (("time", "product"), "MW", "reserve not provided"),
+    "reserve_requirement": (("time", "product"), "MW", "reserve asked for"),
+    "unit_reserve": (("time", "unit", "product"), "MW", "reserve provided"),
     "unit_cost": (("time", "unit"), MONEY, "running cost"),
     "unit_start_cost": (("time", "unit"), MONEY, "start cost"),
     "emissions": (("time", "unit"), "t", "carbon dioxide"),
@@ -99,6 +101,8 @@ DERIVED = ("make_whole", "unit_reason")
 OF_DECISIONS: Mapping[str, Entry] = {
     "price_fixed": (("time", "bus"), PRICE, "locational price with the decisions fixed"),
     "price_relaxed": (("time", "bus"), PRICE, "locational price of the relaxation"),
+    "reserve_price_fixed": (("time", "product"), PRICE, "reserve price with the decisions fixed"),
+    "reserve_price_relaxed": (("time", "product"), PRICE, "reserve price of the relaxation"),
     "line_limit_side": (
         ("time", "line"),
         "1",
@@ -110,7 +114,7 @@ OF_DECISIONS: Mapping[str, Entry] = {
 
 def to_dataset(run: Run) -> xr.Dataset:
     """Return the results of a run as one labelled dataset (results-format.md)."""
-    values = _powers(run) | _lines_and_prices(run) | _costs(run) | _summaries(run)
+    values = _powers(run) | _lines_and_prices(run) | _reserves(run) | _costs(run) | _summaries(run)
     written = {**VARIABLES, **(OF_DECISIONS if run.plan.mode == "optimal" else {})}
     variables = {
         name: (dims, values[name], {"units": unit, "long_name": label})
@@ -143,7 +147,7 @@ def _with_derived(run: Run, dataset: xr.Dataset) -> xr.Dataset:
 
 
 def _coordinates(run: Run) -> dict[str, Any]:
-    case, names = run.case, np.asarray([], dtype=str)
+    case = run.case
     tables = {
         "bus": (case.buses, {"zone": "", "voltage_kv": "kV", "latitude": "degrees_north",
                              "longitude": "degrees_east"}),
@@ -153,12 +157,12 @@ def _coordinates(run: Run) -> dict[str, Any]:
         "store": (case.storage, {"bus": "", "energy_mwh": "MWh"}),
         "tie": (case.dc_ties, {"from_bus": "", "to_bus": ""}),
         "load": (case.loads, {"bus": ""}),
+        "product": (case.reserves, {"direction": "", "zone": ""}),
     }  # fmt: skip
     found: dict[str, Any] = {
         "time": ("time", run.times.tz_localize(None), {
             "standard_name": "time", "axis": "T", "long_name": "start of the period, UTC",
         }),
-        "product": ("product", names),
         "component": ("component", np.array(COMPONENTS)),
     }  # fmt: skip
     for dimension, (table, columns) in tables.items():
@@ -203,7 +207,6 @@ def _lines_and_prices(run: Run) -> dict[str, Floats]:
     island = island[inputs.topology.index]
     weights = prices.reference_weights(inputs.demand_at_bus, island)
     energy, congestion = prices.energy_and_congestion(price, weights, island)
-    none = np.zeros((len(run.times), 0))
     return {
         "line_shadow_price": np.abs(line_dual),
         "line_limit_side": -np.sign(line_dual).astype(np.int8),
@@ -214,8 +217,29 @@ def _lines_and_prices(run: Run) -> dict[str, Floats]:
         "price_energy": energy,
         "price_congestion": congestion,
         "price_loss": np.zeros_like(price),
-        "reserve_price": none,
-        "reserve_shortage": none,
+    }
+
+
+def _reserves(run: Run) -> dict[str, Floats]:
+    """Return price, shortage, requirement and provision of reserves.
+
+    The optimum leaves open whether more is provided than asked for, which then is worth nothing; what
+    goes beyond is left out, of every unit the same share.
+    """
+    kept, inputs = run.kept, run.kept_inputs
+    offers, asked = inputs.reserve, inputs.reserve_requirement
+    provided = np.zeros((len(asked), len(inputs.unit.bus), len(offers.upward)))
+    provided[:, offers.unit, offers.product] = kept.reserve
+    total = provided.sum(axis=1)
+    share = np.divide(asked, total, out=np.ones_like(total), where=total > asked)
+    relaxed = run.plan.pricing == "relaxed"
+    return {
+        "reserve_price": kept.relaxed_reserve_price if relaxed else kept.reserve_price,
+        "reserve_price_fixed": kept.reserve_price,
+        "reserve_price_relaxed": kept.relaxed_reserve_price,
+        "reserve_shortage": kept.reserve_short,
+        "reserve_requirement": asked,
+        "unit_reserve": provided * share[:, None, :],
     }
 
 
@@ -242,7 +266,7 @@ def _costs(run: Run) -> dict[str, Floats]:
         kept.discharge @ inputs.store.throughput_cost * length,
         kept.unserved @ inputs.unserved_cost * length,
         kept.surplus.sum(axis=1) * inputs.surplus_cost * length,
-        np.zeros(len(running)),
+        kept.reserve_short @ inputs.reserve.shortage_cost * length,
     ]
     return {
         "unit_cost": running * length,

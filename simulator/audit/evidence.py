@@ -34,6 +34,9 @@ DIMENSIONS: Mapping[str, tuple[str, ...]] = {
     **dict.fromkeys(
         ("line_flow", "line_rating", "line_shadow_price", "congestion_rent"), ("time", "line")),
     **dict.fromkeys(("congestion_hours", "hours_at_limit"), ("line",)),
+    **dict.fromkeys(
+        ("reserve_price", "reserve_shortage", "reserve_requirement"), ("time", "product")),
+    "unit_reserve": ("time", "unit", "product"),
     "cost": ("time", "component"),
     "make_whole": ("day", "unit"),
     "window": ("time",),
@@ -42,6 +45,7 @@ DIMENSIONS: Mapping[str, tuple[str, ...]] = {
 
 OF_DECISIONS: Mapping[str, tuple[str, ...]] = {
     **dict.fromkeys(("price_fixed", "price_relaxed"), ("time", "bus")),
+    **dict.fromkeys(("reserve_price_fixed", "reserve_price_relaxed"), ("time", "product")),
     "line_limit_side": ("time", "line"),
 }
 """What a run in mode `optimal` has besides."""
@@ -86,6 +90,11 @@ class Evidence:
     def price_of_plan(self) -> Floats:
         """Return prices of the linear program whose optimum the amounts are, array (period, bus)."""
         return self["price_fixed" if self.mode == "optimal" else "price"]
+
+    @property
+    def reserve_price_of_plan(self) -> Floats:
+        """Return reserve prices of that linear program, array (period, product)."""
+        return self["reserve_price_fixed" if self.mode == "optimal" else "reserve_price"]
 
     @cached_property
     def limit_side(self) -> Floats:
@@ -182,11 +191,10 @@ def gather(case: Case, dataset: xr.Dataset) -> Evidence:
     names = {
         "bus": case.buses.index, "line": case.lines.index, "unit": case.units.index,
         "plant": case.renewables.index, "store": case.storage.index, "tie": case.dc_ties.index,
-        "load": case.loads.index, "component": pd.Index(COMPONENTS),
+        "load": case.loads.index, "product": case.reserves.index, "component": pd.Index(COMPONENTS),
     }  # fmt: skip
     for dimension, expected in names.items():
         _same_elements(dataset, dimension, expected)
-    _no_products(dataset)
     if case.settings.network.losses:
         raise _unfit("the case", "must be without network losses", "losses", "audit it without")
     mode, span = _choice(dataset, "commitment", MODES), _span(case, dataset)
@@ -216,13 +224,6 @@ def _same_elements(dataset: xr.Dataset, dimension: str, expected: pd.Index) -> N
     if found != [str(name) for name in expected]:
         other = [name for name in found if name not in expected][:5] or "another order or number"
         raise _unfit(subject, rule, other, _RERUN)
-
-
-def _no_products(dataset: xr.Dataset) -> None:
-    if dataset.sizes.get("product", 0):
-        rule = "must be empty, since reserves are not audited in this version"
-        found = f"{dataset.sizes['product']} products"
-        raise _unfit("dimension product of the dataset", rule, found, "leave reserves out")
 
 
 def _length(case: Case, dataset: xr.Dataset) -> float:

@@ -18,7 +18,6 @@ FOLDERS = ("network", "fleet", "demand", "calendar", "hourly")
 UNREAD = {
     "network/corridors.csv": "limits on sums of flows",
     "network/corridor_lines.csv": "limits on sums of flows",
-    "fleet/reserves.csv": "reserves",
 }
 """Files of the format that this version does not read, and what its results would lack."""
 UNUSED = "network/contingencies.csv"

@@ -12,7 +12,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from simulator.case.declaration import Declaration
-from simulator.case.schema import OUTAGE_KINDS, TABLES
+from simulator.case.schema import EVERYWHERE, OUTAGE_KINDS, TABLES
 from simulator.case.sheet import Sheet
 from simulator.case.wording import did_you_mean, listed, quoted
 from simulator.errors import Problem
@@ -38,6 +38,7 @@ PROFILED = (
     ("units", "on_profile"),
     ("fuels", "price_profile"),
     ("renewables", "profile"),
+    ("reserves", "requirement_profile"),
     ("loads", "profile"),
 )
 """Table and column of each reference to a profile."""
@@ -75,6 +76,8 @@ def dangling(declaration: Declaration) -> Iterator[Problem]:
         profiles = _Known.profiles_of(declaration)
         for name, column in PROFILED:
             yield from _unknown(sheets[name], column, profiles)
+    if sheets["buses"].whole:
+        yield from _unknown(sheets["reserves"], "zone", _Known.zones_of(sheets["buses"]))
     for kind, target in OUT.items():
         if sheets[target].whole:
             outages = sheets["outages"]
@@ -94,6 +97,12 @@ class _Known:
     def rows_of(cls, sheet: Sheet) -> "_Known":
         table = sheet.table
         return cls(sheet.names, f"must name a {table.noun} of {table.path}", table.path)
+
+    @classmethod
+    def zones_of(cls, buses: Sheet) -> "_Known":
+        names = pd.Index([EVERYWHERE, *buses["zone"].unique()])
+        place = buses.table.path
+        return cls(names, f"must be {EVERYWHERE}, or name a zone of {place}", place)
 
     @classmethod
     def profiles_of(cls, declaration: Declaration) -> "_Known":

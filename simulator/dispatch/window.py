@@ -47,9 +47,10 @@ class WindowSolution:
     output (unit), block (block), renewable (plant), charge, discharge (store), tie_forward, tie_reverse
     (tie), unserved (load), surplus (bus), flow (line) : MW; stored (store) : MWh at the end of a period
     price : (period, bus), currency/MWh (5.1)
+    reserve (offer), reserve_short (product) : MW; reserve_price (product) : currency/MWh (2.7)
     line_dual : (period, line), signed, currency/MWh; negative where the flow is held down at +F
-    relaxed_price, relaxed_line_dual : the same from the relaxation, in which any decision may be partly
-        taken; they differ in mode `optimal` only
+    relaxed_price, relaxed_line_dual, relaxed_reserve_price : the same from the relaxation, in which any
+        decision may be partly taken; they differ in mode `optimal` only
     objective : currency; left : what the next window may start from
     """
 
@@ -67,11 +68,15 @@ class WindowSolution:
     tie_reverse: Floats
     unserved: Floats
     surplus: Floats
+    reserve: Floats
+    reserve_short: Floats
+    reserve_price: Floats
     flow: Floats
     price: Floats
     line_dual: Floats
     relaxed_price: Floats
     relaxed_line_dual: Floats
+    relaxed_reserve_price: Floats
     objective: float
     left: Start
 
@@ -257,24 +262,33 @@ class WindowModel:
             decided = {name: values.pop(name) for name in ("on", "start", "stop")}
             cold = np.zeros_like(decided["start"])
             cold[:, inputs.unit.cold_rows] = values.pop("cold_start")
+        if not inputs.reserve.there:
+            values["reserve"] = values["reserve_short"] = np.zeros((inputs.periods, 0))
         priced = dict(zip(_PRICED, prices, strict=True))
         return WindowSolution(
             **decided, **values, **priced, cold_start=cold, flow=attempt.flow,
             objective=self._solver.objective, left=left,
         )  # fmt: skip
 
-    def _prices(self, inputs: WindowInputs, attempt: Attempt) -> tuple[Floats, Floats]:
-        """Return prices (period, bus) and line duals (period, line) of the last solve (5.1).
+    def _prices(self, inputs: WindowInputs, attempt: Attempt) -> tuple[Floats, Floats, Floats]:
+        """Return prices (period, bus), line duals (period, line), reserve prices of the last solve (5.1).
 
         price_n = (dual of n's balance row)/Δ + Σ_l PTDF_ln·μ_l
         """
         energy = attempt.row_dual[self.fleet.rows["balance"]][:, inputs.cells.cell]
         line_dual = self.lines.duals(attempt.row_dual, inputs) / inputs.period_hours
         bus = energy / inputs.period_hours + inputs.topology.collected(line_dual)
-        return bus, line_dual
+        return bus, line_dual, self._reserve_prices(inputs, attempt)
+
+    def _reserve_prices(self, inputs: WindowInputs, attempt: Attempt) -> Floats:
+        """Return (dual of a product's requirement)/Δ, array (period, product), at least 0 (2.7)."""
+        if not inputs.reserve.there:
+            return np.zeros((inputs.periods, 0))
+        return attempt.row_dual[self.fleet.rows["reserve_requirement"]] / inputs.period_hours
 
 
-_PRICED = ("price", "line_dual", "relaxed_price", "relaxed_line_dual")
+_OF_ONE_SOLVE = ("price", "line_dual", "reserve_price")
+_PRICED = (*_OF_ONE_SOLVE, *(f"relaxed_{name}" for name in _OF_ONE_SOLVE))
 _WITHIN = ("exchange", "energy_short", "stopped", "matched", "tie_way")
 """Column families that no result shows."""
 
@@ -286,5 +300,8 @@ def shape_of(inputs: WindowInputs) -> tuple[object, ...]:
         inputs.periods,
         len(inputs.unit.bus),
         len(inputs.unit.block_unit),
+        len(inputs.reserve.upward),
+        len(inputs.reserve.unit),
+        len(inputs.reserve.limited),
         inputs.buses,
     )

@@ -10,6 +10,7 @@ import math
 import re
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
+from itertools import product
 from pathlib import Path
 from typing import Any
 
@@ -35,7 +36,7 @@ from simulator.results import VARIABLES
 __all__ = ["FORMATS", "Export", "Sheet", "export_run", "refuse_folder", "sheets"]
 
 BOOK = "results.xlsx"
-DIMENSIONS = ("bus", "line", "unit", "plant", "store", "tie", "load")
+DIMENSIONS = ("bus", "line", "unit", "plant", "store", "tie", "load", "product")
 """The dimensions whose elements have a table of their own, with what the dataset says of them."""
 
 RISKY = ("=", "+", "-", "@", "\t", "\r", "\n", "\uff1d", "\uff0b", "\uff0d", "\uff20")
@@ -190,7 +191,10 @@ def _elements(dataset: xr.Dataset, dimension: str) -> Sheet:
 
 
 def _values(view: View, name: str) -> Sheet:
-    """Return a variable as a table: a row a period, or a row an element if it has no time."""
+    """Return a variable as a table: a row a period, or a row an element if it has no time.
+
+    Where it has two kinds of element, as reserve by unit and product, a column is a pair of them.
+    """
     variable, unit = view.dataset[name], _unit(view, name)
     values = _in_words(variable) if "flag_meanings" in variable.attrs else variable.to_numpy() + 0
     if variable.dims[0] == "day":
@@ -200,9 +204,9 @@ def _values(view: View, name: str) -> Sheet:
         return Sheet(
             name, pd.DataFrame({dimension: view.names(dimension), f"{name} [{unit}]": values})
         )
-    elements = view.names(str(variable.dims[1])) if variable.ndim > 1 else [name]
     unit = "in words" if "flag_meanings" in variable.attrs else unit
-    headings = [f"{element} [{unit}]" for element in elements]
+    parts = product(*(view.names(str(dimension)) for dimension in variable.dims[1:]))
+    headings = [f"{', '.join(each) or name} [{unit}]" for each in parts]
     frame = pd.DataFrame(values.reshape(len(values), -1), columns=headings)
     frame.insert(0, "time", read_clock(view.dataset).edges[:-1])
     return Sheet(name, frame)

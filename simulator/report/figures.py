@@ -1,8 +1,8 @@
 """The page's charts as plain plotly figures: traces and layouts without theme or time labels.
 
 Public names: `Figure`, `daily_spread`, `dispatch`, `duration_curves`, `energy_groups`, `line_strokes`,
-`lost_groups`, `network_map`, `on_off`, `price_picture`, `spread_by_day`, `stored_energy`, `tie_flows`,
-`unit_order`.
+`lost_groups`, `network_map`, `on_off`, `price_picture`, `reserve_prices`, `spread_by_day`, `stored_energy`,
+`tie_flows`, `unit_order`.
 
 The page's script completes them. It puts the labels of the steps on the time axis of a figure with
 `"steps": True`, turns the step numbers of a trace's `at` into labels, and resolves `var(--name)` to the
@@ -18,7 +18,7 @@ from plotly.colors import sequential
 
 from simulator.report.layout import place_buses
 from simulator.report.plans import HELD, PAYS, reason_rows
-from simulator.report.tables import HALF, ranked
+from simulator.report.tables import HALF, NEGLIGIBLE, ranked
 from simulator.report.view import View, plotly_text, rounded
 
 __all__ = [
@@ -32,6 +32,7 @@ __all__ = [
     "network_map",
     "on_off",
     "price_picture",
+    "reserve_prices",
     "spread_by_day",
     "stored_energy",
     "tie_flows",
@@ -405,6 +406,37 @@ def _store(view: View, places: list[int]) -> list[Figure]:
 def _bars(name: str, power: Floats, colour: str) -> Figure:
     return {"type": "bar", "name": name, "y": rounded(power), "yaxis": "y2", "marker":
             {"color": colour, "line": {"width": 0}}, "hovertemplate": "%{y:,.1f} MW"}  # fmt: skip
+
+
+def reserve_prices(view: View) -> Figure:
+    """Price of each reserve product, and below it what is short of it."""
+    price, short, names = (
+        view.values("reserve_price"), view.values("reserve_shortage"), view.names("product")
+    )  # fmt: skip
+    unit = plotly_text(view.price_unit)
+    lines = [
+        _outline(view, name, price[:, place], _stroke(place)) for place, name in enumerate(names)
+    ]
+    for line in lines:
+        line["hovertemplate"] = f"%{{y:,.2f}} {unit}"
+    bars = [
+        _bars(
+            f"{plotly_text(name)}, short", view.steps.mean(short[:, place]), _stroke(place)["color"]
+        )
+        for place, name in enumerate(names)
+        if short[:, place].max(initial=0.0) > NEGLIGIBLE
+    ]
+    layout: Figure = {
+        "yaxis": {"title": {"text": unit}, "rangemode": "tozero", "domain": [0.4 if bars else 0, 1]},
+        "hovermode": "x unified", "showlegend": True,
+    }  # fmt: skip
+    if bars:
+        layout |= {
+            "xaxis": {"anchor": "y2"}, "barmode": "stack", "bargap": 0,
+            "yaxis2": {"title": {"text": "MW short"}, "domain": [0, 0.3], "anchor": "x",
+                       "rangemode": "tozero"},
+        }  # fmt: skip
+    return {"steps": True, "height": 380 if bars else 280, "traces": lines + bars, "layout": layout}
 
 
 def unit_order(view: View) -> list[int]:

@@ -398,7 +398,15 @@ def _stores(view: View) -> Section:
 def _reserves(view: View) -> Section | None:
     if not view.size("product"):
         return None
-    return Section("reserves", "Reserves", tables=[tables.reserves(view)])
+    text = [
+        "Price of a product: what one more MW asked for would cost in an hour.",
+        "A unit that provides some gives up output for it, or runs above its minimum.",
+        "Reserve is not checked against line limits.",
+    ]
+    label = f"Price of each product by {view.steps.unit}, {view.price_unit}, and what is short, MW"
+    chart = Chart("reserves", label, figures.reserve_prices(view), [tables.reserves(view)])
+    providers = tables.reserve_providers(view)
+    return Section("reserves", "Reserves", text, charts=[chart], folded=[providers])
 
 
 def _ramps(view: View) -> Section | None:

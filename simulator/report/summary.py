@@ -33,6 +33,7 @@ def print_summary(dataset: xr.Dataset, record: Mapping[str, Any], console: Conso
         _hours(dataset),
         _lines(dataset),
         _curtailment(dataset),
+        _reserves(dataset),
     ):
         if table.row_count:
             console.print(table)
@@ -227,4 +228,24 @@ def _curtailment(dataset: xr.Dataset) -> Table:
     could = dataset["renewable_available"].sum("time").to_series() * length
     for name, value in lost[lost > NEGLIGIBLE].sort_values(ascending=False)[: 2 * SHOWN].items():
         table.add_row(escape(str(name)), f"{value:,.0f}", f"{value / could[name]:.1%}")
+    return table
+
+
+def _reserves(dataset: xr.Dataset) -> Table:
+    currency, length = dataset.attrs["currency"], dataset.attrs["period_hours"]
+    table = _table(
+        "Reserves", "product", f"mean {currency}/MWh", "most", "hours short", "MWh short"
+    )
+    for name in dataset["product"].to_numpy():
+        price, short = (
+            dataset[variable].sel(product=name).to_numpy()
+            for variable in ("reserve_price", "reserve_shortage")
+        )
+        table.add_row(
+            escape(str(name)),
+            f"{price.mean():,.2f}",
+            f"{price.max():,.2f}",
+            f"{(short > NEGLIGIBLE).sum() * length:g}",
+            f"{short.sum() * length:,.1f}",
+        )
     return table

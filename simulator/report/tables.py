@@ -29,6 +29,7 @@ __all__ = [
     "line_loading",
     "on_off",
     "ramp_limited",
+    "reserve_providers",
     "reserves",
     "spread_by_bus",
     "stores",
@@ -408,6 +409,27 @@ def reserves(view: View) -> Table:
         f"Mean price {unit}", f"Highest price {unit}", "Hours short", "Shortage MWh"
     )
     return Table("Reserves", columns, rows)
+
+
+def reserve_providers(view: View) -> Table:
+    """Who provides each reserve product, the most first."""
+    provided = view.values("unit_reserve")
+    units, products = view.names("unit"), view.names("product")
+    mean, most = provided.mean(axis=0), provided.max(axis=0, initial=0.0)
+    hours = (provided > NEGLIGIBLE).sum(axis=0) * view.period_hours
+    share = 100 * mean / np.maximum(mean.sum(axis=0), NEGLIGIBLE)
+    rows = [
+        [
+            word(products[product]), word(units[unit]), figure(mean[unit, product], 1),
+            figure(most[unit, product], 1), figure(hours[unit, product], _hour_decimals(view)),
+            figure(share[unit, product], 1, share[unit, product]),
+        ]
+        for product in range(len(products))
+        for unit in ranked(mean[:, product])
+        if most[unit, product] > NEGLIGIBLE
+    ]  # fmt: skip
+    columns = words("Product", "Unit") + numbers("Mean MW", "Most MW", "Hours", "Share %")
+    return Table("Who provides reserve", columns, rows, sortable=True)
 
 
 def ramp_limited(view: View) -> Table:

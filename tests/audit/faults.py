@@ -22,6 +22,7 @@ class Fault:
     check : the check that is there to find it; where : what its text must begin with
     also : the checks that cannot but find it too
     plant : does it to a dataset; changes : cells of the case; mode : commitment mode it is audited as
+    reserves : whether it is planted in the run with reserves
     """
 
     check: str
@@ -30,6 +31,7 @@ class Fault:
     also: frozenset[str] = frozenset()
     changes: Changes = field(default_factory=dict)
     mode: str = "given"
+    reserves: bool = False
 
 
 def add(dataset: xr.Dataset, variable: str, hour: int, amounts: Mapping[str, float]) -> None:
@@ -47,6 +49,8 @@ def taken_as(dataset: xr.Dataset, mode: str) -> None:
     if mode == "optimal":
         dataset["price_fixed"] = dataset["price"].copy(deep=True)
         dataset["price_relaxed"] = dataset["price"] + 1.0
+        dataset["reserve_price_fixed"] = dataset["reserve_price"].copy(deep=True)
+        dataset["reserve_price_relaxed"] = dataset["reserve_price"] + 1.0
         dataset["line_limit_side"] = np.sign(dataset["line_flow"]).astype(int)
 
 
@@ -153,6 +157,23 @@ def moved(giver: str, taker: str) -> Callable[[xr.Dataset], None]:
         add(dataset, taker, 3, dict.fromkeys(WEST, 1.0))
 
     return plant
+
+
+def provide(hour: int, product: str, **amounts: float) -> Callable[[xr.Dataset], None]:
+    """Return a plant that has units provide more of a product; "_" in a name stands for a blank."""
+
+    def plant(dataset: xr.Dataset) -> None:
+        for name, amount in amounts.items():
+            place = {"unit": name.replace("_", " "), "product": product}
+            dataset["unit_reserve"][hour].loc[place] += amount
+
+    return plant
+
+
+def less_short(dataset: xr.Dataset) -> None:
+    """Call less short than is, and pay for that only."""
+    add(dataset, "reserve_shortage", 12, {"spinning": -1.0})
+    add(dataset, "cost", 12, {"reserve_shortage": -60.0})
 
 
 FAULTS: dict[str, Fault] = {
@@ -359,6 +380,59 @@ FAULTS: dict[str, Fault] = {
     "no reason where one holds": Fault(
         "reasons", f'unit "coal" {at(2)}', adding("unit_reason", 2, coal=5),
         changes={("units", "coal", "must_run"): "true"},
+    ),
+    "reserve asked for": Fault(
+        "inputs", 'product "lowering" (reserve requirement) ' + at(3), reserves=True,
+        plant=adding("reserve_requirement", 3, lowering=-1.0),
+    ),
+    "less short than is": Fault(
+        "reserve requirement", 'product "spinning" (provided and short) ' + at(12), less_short,
+        reserves=True,
+    ),
+    "short of nothing": Fault(
+        "reserve requirement", 'product "lowering" (short) ' + at(3), reserves=True,
+        plant=adding("reserve_shortage", 3, lowering=1.0),
+        also=frozenset({"cost", "reserve prices"}),
+    ),
+    "reserve above what is available": Fault(
+        "reserve room", f'unit "gas" (headroom) {at(12)}', provide(12, "spinning", gas=1.0),
+        reserves=True, also=frozenset({"reserve requirement"}),
+    ),
+    "downward reserve at minimum output": Fault(
+        "reserve room", f'unit "engine" (footroom) {at(3)}', provide(3, "lowering", engine=1.0),
+        reserves=True,
+    ),
+    "reserve from another zone": Fault(
+        "reserve response", 'unit "engine" (of "spinning") ' + at(3),
+        provide(3, "spinning", engine=1.0), reserves=True,
+    ),
+    "reserve slower than its response time": Fault(
+        "reserve response", 'unit "coal" (of "spinning") at', reserves=True,
+        changes={("reserves", "spinning", "response_minutes"): 29},
+    ),
+    "reserve cheaper than its shortage": Fault(
+        "reserve prices", 'product "spinning" (while short) ' + at(12), reserves=True,
+        plant=adding("reserve_price", 12, spinning=-1.0), also=frozenset({"unit prices"}),
+    ),
+    "reserve dearer than its shortage": Fault(
+        "reserve prices", 'product "spinning" (shortage price) ' + at(12), reserves=True,
+        also=frozenset({"cost"}), changes={("reserves", "spinning", "shortage_per_mwh"): 59},
+    ),
+    "a price of reserve of which there is more": Fault(
+        "reserve prices", 'unit "', reserves=True, plant=adding("reserve_price", 3, spinning=0.01),
+        also=frozenset({"unit prices"}),
+    ),
+    "a negative price of reserve": Fault(
+        "reserve prices", 'product "lowering" (sign) ' + at(3), reserves=True,
+        plant=adding("reserve_price", 3, lowering=-0.01),
+    ),
+    "price beside cost and reserve price": Fault(
+        "unit prices", f'unit "gas" {at(12)}', shifted_price(12, WEST, 0.01), reserves=True,
+        also=frozenset({"tie prices"}),
+    ),
+    "shortage that costs more": Fault(
+        "cost", 'component "reserve_shortage" ' + at(12), reserves=True,
+        plant=lambda dataset: add(dataset, "cost", 12, {"reserve_shortage": 1.0}),
     ),
     "emissions": Fault("emissions", f'unit "gas" {at(9)}', adding("emissions", 9, gas=0.1)),
 }  # fmt: skip

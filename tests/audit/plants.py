@@ -1,7 +1,7 @@
 """The case whose good runs faults are planted in: two islands that a tie joins, a day of hours.
 
-`town_case(folder, changes)` writes it, with cells changed: {("units", "peaker", "min_up_h"): 4}. So a
-good dataset can also be audited against a case that asks for something else.
+`town_case(folder, changes)` writes it, with cells changed: {("units", "peaker", "min_up_h"): 4}, and with
+reserves if asked. So a good dataset can also be audited against a case that asks for something else.
 """
 
 from collections.abc import Mapping
@@ -21,11 +21,12 @@ OUT = "2027-03-01T10:00", "2027-03-01T13:00"
 
 KEYS = {
     "lines": "line", "dc_ties": "tie", "units": "unit", "renewables": "plant", "storage": "store",
-    "loads": "load", "outages": "name",
+    "reserves": "product", "loads": "load", "outages": "name",
 }  # fmt: skip
 
 TABLES: dict[str, list[dict[str, Any]]] = {
-    "buses": [{"bus": bus} for bus in ("Hill", "Mill", "Town", "Port")],
+    "buses": [{"bus": bus, "zone": "port" if bus == "Port" else "west"}
+              for bus in ("Hill", "Mill", "Town", "Port")],
     "lines": [
         {"line": "H-M", "from_bus": "Hill", "to_bus": "Mill", "reactance_pu": 0.1, "rating_mw": 55},
         {"line": "H-T", "from_bus": "Hill", "to_bus": "Town", "reactance_pu": 0.2, "rating_mw": 200,
@@ -88,6 +89,15 @@ TABLES: dict[str, list[dict[str, Any]]] = {
 }  # fmt: skip
 
 
+RESERVES: list[dict[str, Any]] = [
+    {"product": "spinning", "direction": "up", "zone": "west", "percent_of_load": 12,
+     "response_minutes": 30, "shortage_per_mwh": 60},
+    {"product": "lowering", "direction": "down", "requirement_mw": 14,
+     "requirement_profile": "demand", "response_minutes": 15},
+]  # fmt: skip
+"""Products that are short at noon, when the spare is out, and cost something in the hours before."""
+
+
 def profiles() -> dict[str, list[float]]:
     hour = np.arange(HOURS)
     found = {
@@ -101,9 +111,9 @@ def profiles() -> dict[str, list[float]]:
     return {name: np.asarray(values, float).round(4).tolist() for name, values in found.items()}
 
 
-def town_case(folder: Path, changes: Changes | None = None) -> Case:
-    """Write the case with some cells changed, and read it."""
-    tables = deepcopy(TABLES)
+def town_case(folder: Path, changes: Changes | None = None, *, reserves: bool = False) -> Case:
+    """Write the case, by default without reserves, with some cells changed, and read it."""
+    tables = deepcopy(TABLES | ({"reserves": RESERVES} if reserves else {}))
     for (table, name, column), value in (changes or {}).items():
         row = next(row for row in tables[table] if row[KEYS[table]] == name)
         row[column] = value

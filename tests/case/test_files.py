@@ -40,7 +40,8 @@ def test_an_empty_folder_misses_every_required_file(tmp_path):
 
 
 OPTIONAL = [
-    "network/dc_ties.csv", "fleet/renewables.csv", "fleet/storage.csv", "calendar/outages.csv",
+    "network/dc_ties.csv", "fleet/renewables.csv", "fleet/storage.csv", "fleet/reserves.csv",
+    "calendar/outages.csv",
 ]  # fmt: skip
 
 
@@ -221,7 +222,6 @@ def test_plain_text_scripts_and_hidden_files_are_let_be(tmp_path):
 UNREAD = {
     "network/corridors.csv": "limits on sums of flows",
     "network/corridor_lines.csv": "limits on sums of flows",
-    "fleet/reserves.csv": "reserves",
 }
 
 

@@ -20,7 +20,7 @@ from tests.report.conftest import BUSES, HOSTILE, record, results
 
 NAMES = ["=1+1", "@x", HOSTILE, "-2 east", "+3"]
 ZONES = ["=cmd|' /C calc'!A0", "", "\tsouth", "north", "north"]
-EMPTY = ("reserve_price", "reserve_shortage")
+EMPTY = ("reserve_price", "reserve_shortage", "reserve_requirement", "unit_reserve")
 
 
 def renamed(dataset: xr.Dataset, names: list[str]) -> xr.Dataset:
