@@ -104,6 +104,13 @@ def week(
         Path | None, typer.Option(help="Folder of results; by default outputs/<case>-<first day>.")
     ] = None,
     force: Annotated[bool, typer.Option(help="Replace an earlier run's folder.")] = False,
+    save_commitment: Annotated[
+        Path | None,
+        typer.Option(
+            metavar="FOLDER",
+            help="Also write the case again with this run's plan of on and off in it, to edit and run.",
+        ),
+    ] = None,
     congestion_cost: Annotated[
         bool, typer.Option(help="Run again without line limits and say what the limits cost.")
     ] = False,
@@ -112,7 +119,7 @@ def week(
     """Run a case over a week, or any number of hours, and keep results, record and page."""
     from simulator import results
     from simulator.audit import audit, audit_record
-    from simulator.case import read_case
+    from simulator.case import commitment_folder, read_case
     from simulator.horizon import plan_run, run, without_limits
     from simulator.report.page import write_page
 
@@ -126,6 +133,8 @@ def week(
         out or Path("outputs") / f"{case.resolve().name}-{found.time.local[plan.first]:%Y-%m-%d}"
     )
     results.refuse_existing(folder, force=force)
+    if save_commitment:
+        commitment_folder.refuse_commitment(case, save_commitment, plan.mode, [folder], force=force)
     _say_warnings(found)
     clock.lap("read")
     with _progress() as show:
@@ -141,6 +150,11 @@ def week(
     results.save(
         dataset, record, folder, force=force, page=lambda path: write_page(dataset, record, path)
     )
+    if save_commitment:
+        commitment_folder.save_commitment(
+            found, case, finished.on_seen, plan.span, save_commitment, force=force
+        )
+        typer.echo(f"commitment written to {save_commitment}", err=True)
     _report(dataset, record, folder, as_json=as_json)
     _say_gaps(record)
     _stop_unless_proved(record)
@@ -150,10 +164,11 @@ def week(
 def page(run: RunPath) -> None:
     """Write the page of a run again."""
     from simulator import results
+    from simulator.files import replace_file
     from simulator.report.page import write_page
 
     dataset, record = results.open_run(run), results.open_record(run)
-    results.replace_file(run / "page.html", lambda path: write_page(dataset, record, path))
+    replace_file(run / "page.html", lambda path: write_page(dataset, record, path))
     typer.echo(f"written to {run / 'page.html'}", err=True)
 
 

@@ -85,6 +85,7 @@ class Run:
     kept : the kept periods of all windows, end to end
     window : array (period,), the window a period was kept from
     counts : solves, rows, builds and seconds
+    last : the last window whole, its look-ahead included
     models : a model for each shape of window, which a like run may use
     starts : what each window left, from which the same window of a like run may start
     """
@@ -95,6 +96,7 @@ class Run:
     kept: WindowSolution
     window: Integers
     counts: Counts = field(repr=False)
+    last: WindowSolution = field(repr=False)
     models: Models = field(default_factory=dict, repr=False)
     starts: tuple[Start, ...] = field(default=(), repr=False)
 
@@ -107,6 +109,12 @@ class Run:
     def kept_inputs(self) -> WindowInputs:
         """The inputs of the kept periods."""
         return self.inputs.window(0, 0, self.plan.periods)
+
+    @property
+    def on_seen(self) -> NDArray[np.float64]:
+        """On or off in all periods of `plan.span`, array (period, unit): kept, then look-ahead."""
+        kept = int((self.window == self.window[-1]).sum())
+        return np.concatenate([self.kept.on, self.last.on[kept:]])
 
 
 def plan_run(
@@ -262,7 +270,10 @@ def _rolled(
     if progress:
         progress(len(spans), len(spans))
     left = tuple(solution.left for _, solution in solved)
-    return Run(case, plan, inputs, _joined(solved), _window_numbers(solved), counts, models, left)
+    return Run(
+        case, plan, inputs, _joined(solved), _window_numbers(solved), counts, solved[-1][1], models,
+        left,
+    )  # fmt: skip
 
 
 def _model_for(models: Models, window: WindowInputs, state: State, counts: Counts) -> WindowModel:
@@ -286,19 +297,34 @@ def _solve(
         return model.solve(window, state, start)
     except WindowError as failure:
         first = plan.first + window.first
-        elements = [_described(case, first, *broken) for broken in failure.broken]
+        elements = [
+            _described(case, first, family, period, _element(window, family, position))
+            for family, period, position in failure.broken
+        ]
         raise SolveError(window.number, failure.status, elements) from failure
 
 
 _ELEMENT = {
-    "unit": ("output_split", "ramp_up", "ramp_down", "switching", "minimum_up", "minimum_down",
-             "cold_start_stops", "stops_summed", "matched_sum", "output", "on", "start", "stop",
-             "cold_start"),
+    "unit": ("output_split", "block_width", "ramp_up", "ramp_down", "switching", "minimum_up",
+             "minimum_down", "cold_start_stops", "stops_summed", "matched_sum", "matched_after_stop",
+             "matched_in_time", "output", "on", "start", "stop", "cold_start", "headroom", "footroom"),
     "plant": ("renewable",),
     "store": ("store_balance", "energy_floor", "charge", "discharge", "stored"),
     "tie": ("tie_forward", "tie_reverse"),
     "load": ("unserved",),
 }  # fmt: skip
+
+
+def _element(window: WindowInputs, family: str, position: int) -> int:
+    """Return which element is meant: some families have rows for some units only, or for blocks."""
+    unit, reserve = window.unit, window.reserve
+    cold = ("cold_start", "cold_start_stops", "stops_summed", "matched_sum", "matched_after_stop",
+            "matched_in_time")  # fmt: skip
+    units = dict.fromkeys(cold, unit.cold_rows) | {
+        "block_width": unit.block_unit, "ramp_up": unit.ramp_up_rows,
+        "ramp_down": unit.ramp_down_rows, "headroom": reserve.up_units, "footroom": reserve.down_units,
+    }  # fmt: skip
+    return int(units[family][position]) if family in units else position
 
 
 def _described(case: Case, first: int, family: str, period: int, element: int) -> str:

@@ -1,7 +1,7 @@
 """Prices taken apart and congestion accounted for (formulation.md 5): pure functions.
 
-Public names: `congestion_rent`, `delivered_share`, `energy_and_congestion`, `pair_name`, `price_cause`,
-`reference_weights`.
+Public names: `congestion_rent`, `delivered_share`, `energy_and_congestion`, `local_days`, `make_whole`,
+`pair_name`, `price_cause`, `reference_weights`, `reserve_revenue`.
 
 Arrays have periods first; prices are currency/MWh, powers MW, Δ is the length of a period in h.
 """
@@ -16,13 +16,9 @@ from simulator.errors import OptionError
 from simulator.grid import Network, Topology
 
 __all__ = [
-    "congestion_rent",
-    "delivered_share",
-    "energy_and_congestion",
-    "pair_name",
-    "price_cause",
-    "reference_weights",
-]
+    "congestion_rent", "delivered_share", "energy_and_congestion", "local_days", "make_whole", "pair_name",
+    "price_cause", "reference_weights", "reserve_revenue",
+]  # fmt: skip
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -98,6 +94,36 @@ def pair_name(line: str, contingency: str) -> str:
     'Ostrel-Vane after loss of Ostrel-Quill'
     """
     return f"{line} after loss of {contingency}"
+
+
+def make_whole(dataset: xr.Dataset) -> Floats:
+    """Return what each unit's revenue of a day falls short of its cost, (day, unit), currency (5.5).
+
+    max(0, Σ (running cost + start cost) − Σ (price at its bus × output × Δ + reserve revenue)), the
+    sums over the periods of the day that the run has; a day cut by an end of the run counts as it is,
+    so a start may stand on one day and what it was for on another.
+    """
+    bus = dataset.indexes["bus"].get_indexer(pd.Index(dataset["unit_bus"].to_numpy()))
+    earned = dataset["price"].to_numpy()[:, bus] * dataset["unit_output"].to_numpy()
+    revenue = earned * float(dataset.attrs["period_hours"]) + reserve_revenue(dataset)
+    cost = dataset["unit_cost"].to_numpy() + dataset["unit_start_cost"].to_numpy()
+    _, first = np.unique(local_days(dataset), return_index=True)
+    short: Floats = np.add.reduceat(cost - revenue, first, axis=0)
+    return np.maximum(short, 0.0)
+
+
+def local_days(dataset: xr.Dataset) -> NDArray[np.str_]:
+    """Return the local date of each period, array (period,), ISO 8601 text."""
+    times = dataset.indexes["time"].tz_localize("UTC").tz_convert(dataset.attrs["time_zone"])
+    return times.strftime("%Y-%m-%d").to_numpy(dtype=str)
+
+
+def reserve_revenue(dataset: xr.Dataset) -> Floats:
+    """Return what the reserve a unit holds earns, Σ_product price × MW × Δ, array (period, unit)."""
+    if "unit_reserve" not in dataset:
+        return np.zeros(dataset["unit_output"].shape)
+    worth = (dataset["unit_reserve"] * dataset["reserve_price"]).sum("product")
+    return worth.transpose("time", "unit").to_numpy() * float(dataset.attrs["period_hours"])
 
 
 PRICED = 1e-6

@@ -1,7 +1,6 @@
 """What a run leaves: the dataset of results-format.md, run.json, and the folder they live in.
 
-Public names: `FORMAT`, `made_whole`, `open_record`, `open_run`, `refuse_existing`, `replace_file`,
-`run_record`, `save`, `to_dataset`.
+Public names: `FORMAT`, `open_record`, `open_run`, `refuse_existing`, `run_record`, `save`, `to_dataset`.
 
 The only writer of that contract: each variable is declared once, with its dimensions, unit
 and name.
@@ -9,11 +8,9 @@ and name.
 
 import json
 import os
-from collections.abc import Callable, Iterator, Mapping
-from contextlib import contextmanager
+from collections.abc import Callable, Mapping
 from importlib.metadata import version
 from pathlib import Path
-from tempfile import TemporaryDirectory
 from typing import Any
 
 import numpy as np
@@ -23,18 +20,18 @@ from numpy.typing import NDArray
 
 from simulator import prices
 from simulator.case import series
-from simulator.dispatch import Point, Priced
+from simulator.dispatch import Priced, loss_factors
 from simulator.dispatch.counts import WindowRecord
 from simulator.errors import OptionError
+from simulator.files import made_whole
 from simulator.horizon import Run
+from simulator.reasons import REASONS, circumstances, unit_reasons
 
 __all__ = [
     "FORMAT",
-    "made_whole",
     "open_record",
     "open_run",
     "refuse_existing",
-    "replace_file",
     "run_record",
     "save",
     "to_dataset",
@@ -107,6 +104,8 @@ VARIABLES: Mapping[str, Entry] = {
     "price_loss": (("time", "bus"), PRICE, "price part caused by losses"),
     "reserve_price": (("time", "product"), PRICE, "reserve price"),
     "reserve_shortage": (("time", "product"), "MW", "reserve not provided"),
+    "reserve_requirement": (("time", "product"), "MW", "reserve asked for"),
+    "unit_reserve": (("time", "unit", "product"), "MW", "reserve provided"),
     "unit_cost": (("time", "unit"), MONEY, "running cost"),
     "unit_start_cost": (("time", "unit"), MONEY, "start cost"),
     "emissions": (("time", "unit"), "t", "carbon dioxide"),
@@ -114,13 +113,20 @@ VARIABLES: Mapping[str, Entry] = {
     "congestion_hours": (("line",), "h", "hours with a shadow price"),
     "hours_at_limit": (("line",), "h", "hours with the flow at the rating"),
     "ramp_limited_hours": (("unit",), "h", "hours in which output moved as fast as the unit can"),
+    "make_whole": (("day", "unit"), MONEY, "cost of a local day that revenue does not cover"),
+    "unit_reason": (("time", "unit"), "1", "why the unit is on"),
     "window": (("time",), "1", "number of the window the period was kept from"),
 }
+
+DERIVED = ("make_whole", "unit_reason")
+"""The variables that follow from others."""
 
 
 OF_DECISIONS: Mapping[str, Entry] = {
     "price_fixed": (("time", "bus"), PRICE, "locational price with the decisions fixed"),
     "price_relaxed": (("time", "bus"), PRICE, "locational price of the relaxation"),
+    "reserve_price_fixed": (("time", "product"), PRICE, "reserve price with the decisions fixed"),
+    "reserve_price_relaxed": (("time", "product"), PRICE, "reserve price of the relaxation"),
     "line_limit_side": (
         ("time", "line"),
         "1",
@@ -132,13 +138,13 @@ OF_DECISIONS: Mapping[str, Entry] = {
 
 def to_dataset(run: Run) -> xr.Dataset:
     """Return the results of a run as one labelled dataset (results-format.md)."""
-    coordinates = _coordinates(run)
-    values = _powers(run) | _lines_and_prices(run) | _costs(run) | _summaries(run)
+    values = _powers(run) | _lines_and_prices(run) | _reserves(run) | _costs(run) | _summaries(run)
     values |= _corridors(run) | _pairs(run)
     written = {**VARIABLES, **(OF_DECISIONS if run.plan.mode == "optimal" else {})}
     variables = {
         name: (dims, values[name], {"units": unit, "long_name": label})
         for name, (dims, unit, label) in written.items()
+        if name not in DERIVED
     }
     settings = run.case.settings
     attributes = {
@@ -147,11 +153,26 @@ def to_dataset(run: Run) -> xr.Dataset:
         "period_hours": run.case.time.period_hours, "commitment": run.plan.mode,
         "limits": run.plan.limits, "pricing": run.plan.pricing, "base_mva": settings.base_mva,
     }  # fmt: skip
-    return xr.Dataset(variables, coordinates, attributes)
+    return _with_derived(run, xr.Dataset(variables, _coordinates(run), attributes))
+
+
+def _with_derived(run: Run, dataset: xr.Dataset) -> xr.Dataset:
+    """Add what follows from the other results."""
+    given = circumstances(run, dataset, _last_cost(run))
+    values = {"make_whole": prices.make_whole(dataset), "unit_reason": unit_reasons(given)}
+    flags = {
+        "flag_values": np.arange(len(REASONS), dtype=np.int8), "flag_meanings": " ".join(REASONS)
+    }  # fmt: skip
+    for name in DERIVED:
+        dims, unit, label = VARIABLES[name]
+        more = flags if name == "unit_reason" else {}
+        dataset[name] = (dims, values[name], {"units": unit, "long_name": label, **more})
+    days = np.unique(prices.local_days(dataset))
+    return dataset.assign_coords(day=("day", days, {"long_name": "local date"}))
 
 
 def _coordinates(run: Run) -> dict[str, Any]:
-    case, names = run.case, np.asarray([], dtype=str)
+    case = run.case
     tables = {
         "bus": (case.buses, {"zone": "", "voltage_kv": "kV", "latitude": "degrees_north",
                              "longitude": "degrees_east"}),
@@ -162,12 +183,12 @@ def _coordinates(run: Run) -> dict[str, Any]:
         "tie": (case.dc_ties, {"from_bus": "", "to_bus": ""}),
         "corridor": (case.corridors, {}),
         "load": (case.loads, {"bus": ""}),
+        "product": (case.reserves, {"direction": "", "zone": ""}),
     }  # fmt: skip
     found: dict[str, Any] = {
         "time": ("time", run.times.tz_localize(None), {
             "standard_name": "time", "axis": "T", "long_name": "start of the period, UTC",
         }),
-        "product": ("product", names),
         "component": ("component", np.array(COMPONENTS)),
     }  # fmt: skip
     found |= _pair_names(run)
@@ -234,11 +255,10 @@ def _lines_and_prices(run: Run) -> dict[str, Floats]:
     loss = np.zeros_like(price)
     if inputs.losses is not None:
         delivered = prices.delivered_share(
-            priced.price - priced.congestion, _loss_factors(run), weights, island
+            priced.price - priced.congestion, loss_factors(inputs, kept.flow), weights, island
         )
         loss = energy * (delivered - 1.0)
         congestion = congestion - loss
-    none = np.zeros((len(run.times), 0))
     return {
         "line_shadow_price": np.abs(line_dual),
         "line_limit_side": -np.sign(line_dual).astype(np.int8),
@@ -249,18 +269,29 @@ def _lines_and_prices(run: Run) -> dict[str, Floats]:
         "price_energy": energy,
         "price_congestion": congestion,
         "price_loss": loss,
-        "reserve_price": none,
-        "reserve_shortage": none,
     }
 
 
-def _loss_factors(run: Run) -> Floats:
-    """Return what one more MW injected at each bus adds to losses at the flows, array (period, bus)."""
-    inputs, periods = run.kept_inputs, np.arange(len(run.times))
-    point = Point(
-        np.zeros((len(periods), inputs.buses)), run.kept.flow, inputs.losses.slope(run.kept.flow)
-    )
-    return point.factors(inputs, periods, point.slope)
+def _reserves(run: Run) -> dict[str, Floats]:
+    """Return price, shortage, requirement and provision of reserves.
+
+    The optimum leaves open whether more is provided than asked for, which then is worth nothing; what
+    goes beyond is left out, of every unit the same share.
+    """
+    kept, inputs = run.kept, run.kept_inputs
+    offers, asked = inputs.reserve, inputs.reserve_requirement
+    provided = np.zeros((len(asked), len(inputs.unit.bus), len(offers.upward)))
+    provided[:, offers.unit, offers.product] = kept.reserve
+    total = provided.sum(axis=1)
+    share = np.divide(asked, total, out=np.ones_like(total), where=total > asked)
+    return {
+        "reserve_price": _priced(run).reserve,
+        "reserve_price_fixed": kept.priced.reserve,
+        "reserve_price_relaxed": kept.relaxed.reserve,
+        "reserve_shortage": kept.reserve_short,
+        "reserve_requirement": asked,
+        "unit_reserve": provided * share[:, None, :],
+    }
 
 
 def _priced(run: Run) -> Priced:
@@ -321,7 +352,7 @@ def _costs(run: Run) -> dict[str, Floats]:
         kept.discharge @ inputs.store.throughput_cost * length,
         kept.unserved @ inputs.unserved_cost * length,
         kept.surplus.sum(axis=1) * inputs.surplus_cost * length,
-        np.zeros(len(running)),
+        kept.reserve_short @ inputs.reserve.shortage_cost * length,
     ]
     return {
         "unit_cost": running * length,
@@ -344,6 +375,15 @@ def _along_curve(run: Run) -> Floats:
     before = filled - filled[:, first]
     above = (kept.output - inputs.unit_min * kept.on)[:, owner]
     return np.clip(above - before, 0.0, width)
+
+
+def _last_cost(run: Run) -> Floats:
+    """Return the cost of the last MWh above the minimum, array (period, unit), currency/MWh; −inf at it."""
+    inputs = run.kept_inputs
+    used = np.where(_along_curve(run) > AT_LIMIT, inputs.block_cost, -np.inf)
+    last = np.full(run.kept.output.shape, -np.inf)
+    np.maximum.at(last.T, inputs.unit.block_unit, used.T)
+    return last
 
 
 def _summaries(run: Run) -> dict[str, Any]:
@@ -479,6 +519,8 @@ def _totals(dataset: xr.Dataset) -> dict[str, float]:
             float(dataset[name].sum()) for name in ("congestion_rent", "corridor_rent", "pair_rent")
         ),
         "congestion_hours": float(dataset["congestion_hours"].sum()),
+        "starts": float(dataset["unit_start"].sum()),
+        "make_whole": float(dataset["make_whole"].sum()),
     }
 
 
@@ -501,38 +543,6 @@ def save(
         (made / "run.json").write_text(json.dumps(record, indent=2) + "\n", encoding="utf-8")
         if page is not None:
             page(made / "page.html")
-
-
-@contextmanager
-def made_whole(folder: Path, option: str) -> Iterator[Path]:
-    """Yield an empty folder that takes the place of `folder` once all went well.
-
-    option : what the caller named the folder by, for the message if it cannot be written
-    """
-    try:
-        folder.parent.mkdir(parents=True, exist_ok=True)
-        with TemporaryDirectory(prefix=f".{folder.name}-", dir=folder.parent) as scratch:
-            made = Path(scratch) / "new"
-            made.mkdir()
-            yield made
-            _swap(made, folder, Path(scratch) / "old")
-    except OSError as error:
-        raise OptionError(
-            f"{option}, must be a folder that can be written, found {folder} ({error.strerror}), "
-            "choose another folder"
-        ) from error
-
-
-def _swap(made: Path, folder: Path, aside: Path) -> None:
-    """Put the new folder in place of an old one; the old one is back if that is cut off."""
-    if folder.exists():
-        folder.rename(aside)
-    try:
-        made.rename(folder)
-    except BaseException:
-        if aside.exists():
-            aside.rename(folder)
-        raise
 
 
 def refuse_existing(folder: Path, *, force: bool) -> None:
@@ -572,16 +582,6 @@ def open_record(folder: str | os.PathLike[str]) -> dict[str, Any]:
             "folder that `rampline week` wrote"
         ) from error
     return record
-
-
-def replace_file(path: Path, write: Callable[[Path], None]) -> None:
-    """Write a file under another name and move it into place whole."""
-    made = path.with_name(f".{path.name}-{os.getpid()}")
-    try:
-        write(made)
-        made.replace(path)
-    finally:
-        made.unlink(missing_ok=True)
 
 
 def open_run(folder: str | os.PathLike[str]) -> xr.Dataset:

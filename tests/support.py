@@ -127,6 +127,12 @@ store,bus,charge_mw,discharge_mw,energy_mwh,charge_efficiency,discharge_efficien
 loss_percent_per_h,initial_mwh,final_mwh
 cells,Midfen,15,,60,0.95,0.93,0.1,,
 """,
+    "fleet/reserves.csv": """\
+product,direction,zone,requirement_mw,requirement_profile,percent_of_load,response_minutes,\
+shortage_per_mwh
+spinning,up,,10,watch,3,10,
+lowering,down,south,6,,,,400
+""",
     "demand/loads.csv": """\
 load,bus,profile,scale_mw,unserved_per_mwh
 town,Midfen,demand,90,
@@ -158,6 +164,7 @@ def hourly_frames(
             "warmth": (1 - 0.1 * demand).round(4),
             "gas 2 on": (demand > 0.8).astype(int),
             "gas price": (1 + 0.05 * wind).round(4),
+            "watch": (0.5 + 0.5 * demand).round(4),
             "note": "as measured",
         }),
     }  # fmt: skip

@@ -55,7 +55,13 @@ def test_variables_dimensions_and_units_are_just_those_promised(dataset):
     }
     expected = promised()
     assert len(expected) > 25
-    more = {"ramp_limited_hours": (("unit",), "h")}
+    more = {
+        "ramp_limited_hours": (("unit",), "h"),
+        "make_whole": (("day", "unit"), "currency"),
+        "unit_reason": (("time", "unit"), "1"),
+        "reserve_requirement": (("time", "product"), "MW"),
+        "unit_reserve": (("time", "unit", "product"), "MW"),
+    }
     assert found == expected | more
     components = re.search(r"component \((.*?)\)", FORMAT_PAGE.read_text())
     assert components is not None

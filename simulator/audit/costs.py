@@ -108,12 +108,13 @@ def _expected(evidence: Evidence, units: Units) -> tuple[Floats, Floats, Floats]
         "storage": evidence["storage_discharge"] * throughput,
         "unserved": evidence["load_unserved"] * case.loads["unserved_per_mwh"].to_numpy(float),
         "surplus": evidence["surplus"] * case.settings.penalties.surplus,
+        "reserve_shortage": evidence["reserve_shortage"]
+        * case.reserves["shortage_per_mwh"].to_numpy(float),
     }
-    zero = np.zeros(evidence.periods)
     sums = {name: values.sum(axis=1) * length for name, values in amounts.items()}
     sizes = {name: np.abs(values).sum(axis=1) * length for name, values in amounts.items()}
-    sums |= {"unit_running": running.sum(axis=1), "reserve_shortage": zero}
-    sizes |= {"unit_running": full.sum(axis=1), "reserve_shortage": zero}
+    sums |= {"unit_running": running.sum(axis=1)}
+    sizes |= {"unit_running": full.sum(axis=1)}
     lower = sums | {"unit_start": cheapest.sum(axis=1)}
     upper = sums | {"unit_start": dearest.sum(axis=1)}
     sizes |= {"unit_start": upper["unit_start"]}

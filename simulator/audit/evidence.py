@@ -41,16 +41,24 @@ DIMENSIONS: Mapping[str, tuple[str, ...]] = {
     **dict.fromkeys(("corridor_congestion_hours", "corridor_hours_at_limit"), ("corridor",)),
     **dict.fromkeys(
         ("pair_flow", "pair_rating", "pair_shadow_price", "pair_limit_side", "pair_rent"), ("pair",)),
+    **dict.fromkeys(
+        ("reserve_price", "reserve_shortage", "reserve_requirement"), ("time", "product")),
+    "unit_reserve": ("time", "unit", "product"),
     "cost": ("time", "component"),
+    "make_whole": ("day", "unit"),
     "window": ("time",),
 }  # fmt: skip
 """The variables that are audited, and their dimensions (results-format.md)."""
 
 OF_DECISIONS: Mapping[str, tuple[str, ...]] = {
     **dict.fromkeys(("price_fixed", "price_relaxed"), ("time", "bus")),
+    **dict.fromkeys(("reserve_price_fixed", "reserve_price_relaxed"), ("time", "product")),
     "line_limit_side": ("time", "line"),
 }
 """What a run in mode `optimal` has besides."""
+
+CODES: Mapping[str, tuple[str, ...]] = {"unit_reason": ("time", "unit")}
+"""The audited variables that are codes and so always have a number."""
 
 COMPONENTS = (
     "unit_running", "unit_start", "renewable", "storage", "unserved", "surplus", "reserve_shortage",
@@ -81,6 +89,7 @@ class Evidence:
     names : dimension → labels in the order of the case's table
     span : the run's periods on the case's time axis; hours : their local starts
     length : Δ, h; mode, limits, pricing : what the run was asked for
+    reasons : what the codes of `unit_reason` mean
     values : variable → array with the dimensions of `DIMENSIONS`; NaN for what is endless and no limit
     pairs : what is priced after a contingency
     """
@@ -92,6 +101,7 @@ class Evidence:
     mode: str
     limits: str
     pricing: str
+    reasons: tuple[str, ...]
     values: Mapping[str, Floats] = field(repr=False)
     pairs: "Pairs" = field(repr=False)
 
@@ -102,6 +112,11 @@ class Evidence:
     def price_of_plan(self) -> Floats:
         """Return prices of the linear program whose optimum the amounts are, array (period, bus)."""
         return self["price_fixed" if self.mode == "optimal" else "price"]
+
+    @property
+    def reserve_price_of_plan(self) -> Floats:
+        """Return reserve prices of that linear program, array (period, product)."""
+        return self["reserve_price_fixed" if self.mode == "optimal" else "reserve_price"]
 
     @cached_property
     def limit_side(self) -> Floats:
@@ -218,19 +233,21 @@ def gather(case: Case, dataset: xr.Dataset) -> Evidence:
     names = {
         "bus": case.buses.index, "line": case.lines.index, "unit": case.units.index,
         "plant": case.renewables.index, "store": case.storage.index, "tie": case.dc_ties.index,
-        "load": case.loads.index, "component": pd.Index(COMPONENTS), "corridor": case.corridors.index,
+        "load": case.loads.index, "product": case.reserves.index, "component": pd.Index(COMPONENTS),
+        "corridor": case.corridors.index,
     }  # fmt: skip
     for dimension, expected in names.items():
         _same_elements(dataset, dimension, expected)
-    _no_products(dataset)
-    mode = _choice(dataset, "commitment", MODES)
-    wanted = {**DIMENSIONS, **(OF_DECISIONS if mode == "optimal" else {})}
-    span = _span(case, dataset)
+    mode, span = _choice(dataset, "commitment", MODES), _span(case, dataset)
+    names["day"] = pd.Index(case.time.local[span].strftime("%Y-%m-%d").unique())
+    _same_elements(dataset, "day", names["day"])
+    wanted = {**DIMENSIONS, **CODES, **(OF_DECISIONS if mode == "optimal" else {})}
     pairs = _pairs(case, dataset, span)
     names["pair"] = pd.Index([str(name) for name in dataset["pair"].to_numpy()])
     return Evidence(
         case=case, names=names, span=span, pairs=pairs, length=_length(case, dataset), mode=mode,
         limits=_choice(dataset, "limits", LIMITS), pricing=_choice(dataset, "pricing", PRICING),
+        reasons=_reasons(dataset),
         values={name: _values(dataset, name, dims) for name, dims in wanted.items()},
     )  # fmt: skip
 
@@ -252,13 +269,6 @@ def _same_elements(dataset: xr.Dataset, dimension: str, expected: pd.Index) -> N
         raise _unfit(subject, rule, other, _RERUN)
 
 
-def _no_products(dataset: xr.Dataset) -> None:
-    if dataset.sizes.get("product", 0):
-        rule = "must be empty, since reserves are not audited in this version"
-        found = f"{dataset.sizes['product']} products"
-        raise _unfit("dimension product of the dataset", rule, found, "leave reserves out")
-
-
 def _length(case: Case, dataset: xr.Dataset) -> float:
     length = dataset.attrs.get("period_hours")
     if length != case.time.period_hours:
@@ -273,6 +283,19 @@ def _choice(dataset: xr.Dataset, attribute: str, known: tuple[str, ...]) -> str:
         rule = f"must be one of {', '.join(known)}"
         raise _unfit(f"attribute {attribute} of the dataset", rule, value, _RERUN)
     return str(value)
+
+
+def _reasons(dataset: xr.Dataset) -> tuple[str, ...]:
+    """Return what the codes of `unit_reason` mean, as the dataset says itself."""
+    subject, rule = "unit_reason of the dataset", "must say what its codes from 0 mean"
+    described = dataset["unit_reason"].attrs if "unit_reason" in dataset else {}
+    meanings = tuple(str(described.get("flag_meanings", "")).split())
+    values = np.asarray(described.get("flag_values", []))
+    if not {"off", "at_no_cost"} <= set(meanings) or not np.array_equal(
+        values, np.arange(len(meanings))
+    ):
+        raise _unfit(subject, rule, f"{meanings} for {values}", _RERUN)
+    return meanings
 
 
 def _span(case: Case, dataset: xr.Dataset) -> slice:

@@ -107,16 +107,19 @@ class Security:
 
 def limit_checks(evidence: Evidence, security: Security) -> list[Check]:
     """Check corridors, and what is carried after contingencies."""
-    hours = evidence.hours
-    found = [
-        judge("corridor inputs", COUNTED, hours, _corridor_inputs(evidence)),
-        judge("corridor flows", POWER, hours, [_corridor_flows(evidence)]),
-        judge("pairs", POWER, hours, _pairs(evidence, security)),
-    ]
-    if evidence.limits != "none":
-        found.append(judge("corridor limits", POWER, hours, _corridor_limits(evidence)))
+    hours, found = evidence.hours, []
+    if len(evidence.names["corridor"]):
+        found += [
+            judge("corridor inputs", COUNTED, hours, _corridor_inputs(evidence)),
+            judge("corridor flows", POWER, hours, [_corridor_flows(evidence)]),
+        ]
+        if evidence.limits != "none":
+            found.append(judge("corridor limits", POWER, hours, _corridor_limits(evidence)))
     if evidence.limits == "secure":
-        found.append(judge("security", POWER, hours, [security.worst()]))
+        found += [
+            judge("pairs", POWER, hours, _pairs(evidence, security)),
+            judge("security", POWER, hours, [security.worst()]),
+        ]
     return found
 
 

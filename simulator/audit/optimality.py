@@ -8,9 +8,11 @@ with the decisions fixed, whichever kind the run was asked for: amounts are no o
 relaxation's. What is checked:
 
 units : every block of the cost curve that a unit may use as far as it is on, in all modes, with the
-    blocks filled from the lowest up. Left out are the hours in which a ramp may set the price too: the
-    ramp from the hour before or to the hour after is at its limit, and, for units with a ramp narrower
-    than their maximum output, the last kept hour of each window, whose next hour is not in the dataset.
+    blocks filled from the lowest up. The price counts less what room above the output is worth for
+    upward reserve, and more what room below it is for downward reserve (`reserves.py`). Left out are
+    the hours in which a ramp may set the price too: the ramp from the hour before or to the hour after
+    is at its limit, and, for units with a ramp narrower than their maximum output, the last kept hour
+    of each window, whose next hour is not in the dataset.
     Left out too are blocks that cost less than the one below them, and that one: such a curve has no
     price, and lies open only while a derate brings minimum output down to it. On/off decisions bound
     blocks but add nothing to their cost, so they hide no other case.
@@ -29,6 +31,7 @@ from numpy.typing import NDArray
 
 from simulator.audit.check import INSIDE, PRICE, Check, Residual, judge
 from simulator.audit.evidence import Evidence
+from simulator.audit.reserves import Reserves
 from simulator.audit.units import Units
 
 __all__ = ["optimality_checks"]
@@ -37,10 +40,10 @@ Floats = NDArray[np.float64]
 Booleans = NDArray[np.bool_]
 
 
-def optimality_checks(evidence: Evidence, units: Units) -> list[Check]:
+def optimality_checks(evidence: Evidence, units: Units, reserves: Reserves) -> list[Check]:
     """Check units, renewables, unserved load, surplus, ties and stores against prices."""
     rules: dict[str, Callable[[], list[Residual]]] = {
-        "unit prices": lambda: [_units(evidence, units)],
+        "unit prices": lambda: [_units(evidence, units, reserves)],
         "renewable prices": lambda: [_renewables(evidence)],
         "unserved prices": lambda: [_unserved(evidence)],
         "surplus prices": lambda: [_surplus(evidence)],
@@ -50,21 +53,30 @@ def optimality_checks(evidence: Evidence, units: Units) -> list[Check]:
     return [judge(name, PRICE, evidence.hours, rule()) for name, rule in rules.items()]
 
 
-def _mismatch(taken: Floats, room: Floats, cost: Floats, price: Floats) -> Floats:
+def _mismatch(
+    taken: Floats, room: Floats, cost: Floats, price: Floats, highest: Floats | None = None
+) -> Floats:
     """Return by how much prices break slackness, currency/MWh.
 
     taken, room : MW taken and MW that could still be taken, at `cost`
+    price, highest : the least and the most that what is taken may be worth; one price by default
     """
-    too_low = np.where(taken > INSIDE, cost - price, 0.0)
+    highest = price if highest is None else highest
+    too_low = np.where(taken > INSIDE, cost - highest, 0.0)
     too_high = np.where(room > INSIDE, price - cost, 0.0)
-    known = 0.0 * (taken + price)  # a missing number is no agreement
+    known = 0.0 * taken + np.where(np.isnan(price), np.nan, 0.0)  # a missing number is no agreement
     return np.maximum(np.maximum(too_low, too_high), 0.0) + known
 
 
-def _units(evidence: Evidence, units: Units) -> Residual:
+def _units(evidence: Evidence, units: Units, reserves: Reserves) -> Residual:
     price = evidence.price_of_plan[:, evidence.bus(units.table)]
+    (above, most_above), (below, most_below) = (reserves.value(upward=up) for up in (True, False))
+    lowest, highest = (
+        worth[:, units.block_unit]
+        for worth in (price - most_above + below, price - above + most_below)
+    )
     taken, room = units.block_taken, units.block_room
-    by_block = _mismatch(taken, room - taken, units.block_cost, price[:, units.block_unit])
+    by_block = _mismatch(taken, room - taken, units.block_cost, lowest, highest)
     by_block = np.where(_falling(units), 0.0, by_block)
     worst = np.zeros(price.shape)
     np.maximum.at(worst.T, units.block_unit, by_block.T)

@@ -45,8 +45,12 @@ def _missing(evidence: Evidence) -> list[Residual]:
         values = evidence[variable]
         there = ~np.isnan(values)
         kind, names = "variable", pd.Index([variable])
-        if dimensions != ("time",):
+        if values.ndim > 2:  # noqa: PLR2004  (time, element, another): of one element all are one
+            there = np.all(there, axis=2)
+            kind, names = dimensions[1], evidence.names[dimensions[1]]
+        elif dimensions != ("time",):
             kind, names = dimensions[-1], evidence.names[dimensions[-1]]
+            there = np.atleast_1d(there.all(axis=0)) if dimensions[0] == "day" else there
         else:
             there = there[:, None]
         found.append(Residual(kind, names, variable.replace("_", " "), 1.0 - there))
@@ -61,6 +65,7 @@ def _inputs(evidence: Evidence, units: Units) -> list[Residual]:
         "renewable_available": series.renewable_available(case, span),
         "unit_available": units.available,
         "line_rating": series.line_rating(case, span),
+        "reserve_requirement": series.reserve_requirement(case, span),
     }
     return [
         _residual(evidence, variable, variable.replace("_", " "), apart(evidence[variable], values))

@@ -61,9 +61,12 @@ def _kind(evidence: Evidence) -> list[Check]:
     """In mode `optimal` the price is the kind of price that the run was asked for."""
     if evidence.mode != "optimal":
         return []
-    asked = evidence[f"price_{evidence.pricing}"]
-    off = _at_buses(evidence, apart(evidence["price"], asked))
-    return [judge("kind of price", COUNTED, evidence.hours, [off])]
+    found = []
+    for variable, kind in (("price", "bus"), ("reserve_price", "product")):
+        asked = evidence[f"{variable}_{evidence.pricing}"]
+        off = apart(evidence[variable], asked)
+        found.append(Residual(kind, evidence.names[kind], "", off))
+    return [judge("kind of price", COUNTED, evidence.hours, found)]
 
 
 def _weights(evidence: Evidence, network: Network) -> Floats:

@@ -16,8 +16,10 @@ from simulator.audit.evidence import gather
 from simulator.audit.limits import Security, limit_checks
 from simulator.audit.network import Network
 from simulator.audit.optimality import optimality_checks
+from simulator.audit.plans import plan_checks
 from simulator.audit.powers import power_checks
 from simulator.audit.prices import price_checks
+from simulator.audit.reserves import Reserves, reserve_checks
 from simulator.audit.storage import storage_checks
 from simulator.audit.units import Units
 from simulator.case import Case
@@ -29,19 +31,22 @@ def audit(case: Case, dataset: xr.Dataset) -> list[Check]:
     """Prove a run's dataset from the case it was run on; raise `AuditError` if that cannot be tried.
 
     Checks that ask nothing of a run are left out: line limits without limits, minimum times and
-    must-run in mode `given`.
+    must-run in mode `given`, reserves without products.
     """
     evidence = gather(case, dataset)
     network, units = Network(evidence), Units(evidence)
     security = Security.of(evidence, network)
+    reserves = Reserves(evidence, units)
     return [
         *power_checks(evidence, network, units),
         *commitment_checks(evidence, units),
         *storage_checks(evidence),
         *limit_checks(evidence, security),
+        *reserve_checks(evidence, reserves),
         *price_checks(evidence, network, security),
-        *optimality_checks(evidence, units),
+        *optimality_checks(evidence, units, reserves),
         *cost_checks(evidence, units),
+        *plan_checks(evidence, units),
     ]
 
 

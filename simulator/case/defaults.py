@@ -30,6 +30,11 @@ def resolved(
     tables["units"] = _units(frames["units"], time.period_hours)
     tables["storage"] = _storage(frames["storage"])
     tables["loads"] = _filled(frames["loads"], unserved_per_mwh=settings.penalties.unserved)
+    tables["reserves"] = _filled(
+        frames["reserves"],
+        response_minutes=np.inf,
+        shortage_per_mwh=settings.penalties.unserved / 2,
+    )
     tables["outages"] = _outages(sheets["outages"].frame, time.time_zone)
     tables["blocks"] = _blocks(settings, sheets)
     return tables

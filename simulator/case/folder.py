@@ -15,11 +15,7 @@ __all__ = ["FOLDERS", "SETTINGS", "Folder", "look_into", "rank", "read_bytes"]
 
 SETTINGS = "case.toml"
 FOLDERS = ("network", "fleet", "demand", "calendar", "hourly")
-UNREAD = {
-    "fleet/reserves.csv": "reserves",
-}
-"""Files of the format that this version does not read, and what its results would lack."""
-_PATHS = (SETTINGS, *(table.path for table in TABLES), *UNREAD)
+_PATHS = (SETTINGS, *(table.path for table in TABLES))
 _PLAIN_SUFFIXES = {".md", ".txt", ".py"}
 _PLAIN_STEMS = {"license", "licence", "notice", "copying", "readme", "authors"}
 # A script in the folder leaves __pycache__, a run started in it leaves outputs.
@@ -95,7 +91,6 @@ def _sorted_out(present: dict[str, Path]) -> Folder:
         *(_unknown(path) for path in sorted(present) if path not in known),
         *(_no_file(path) for path in sorted(known - files)),
         *_missing(known, hourly),
-        *(_unread(path) for path in UNREAD if path in known),
     ]
     return Folder(
         files=files & known,
@@ -132,8 +127,3 @@ def _missing(known: set[str], hourly: tuple[str, ...]) -> Iterator[Problem]:
     if not hourly:
         rule, remedy = "must hold a .csv or .parquet file", "add one with a column for each profile"
         yield Problem("hourly", 1, "-", "the folder", rule, "none", remedy)
-
-
-def _unread(path: str) -> Problem:
-    rule = f"must not be there: this version leaves out {UNREAD[path]}, its numbers would be wrong"
-    return file_problem(path, rule, "the file", "remove it if results may do without")

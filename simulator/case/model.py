@@ -21,7 +21,7 @@ __all__ = ["TABLES", "Case", "TimeAxis"]
 
 TABLES = (
     "buses", "lines", "dc_ties", "corridors", "corridor_lines", "contingencies", "units", "blocks",
-    "fuels", "renewables", "storage", "loads", "outages",
+    "fuels", "renewables", "storage", "reserves", "loads", "outages",
 )  # fmt: skip
 """The tables a `Case` holds, each under the attribute of that name."""
 
@@ -46,6 +46,8 @@ class Case:
         and maintenance plus carbon), heat_rate_gj_per_mwh (0 for offers), fuel ("" for offers)
     fuels : index `fuel`; columns price_per_gj, co2_t_per_gj, price_profile
     renewables, storage, loads : index `plant`, `store`, `load`; columns of their files
+    reserves : index `product`; columns of reserves.csv; zone is "all" for every bus, response_minutes
+        inf where there is no limit
     outages : columns kind, name, from, until (UTC), available_percent
     profiles : frame (period, profile), dimensionless, on the rows of `time`
     warnings : what was odd but allowed
@@ -121,6 +123,11 @@ class Case:
     def storage(self) -> pd.DataFrame:
         """Stores, one a row."""
         return self._table("storage")
+
+    @property
+    def reserves(self) -> pd.DataFrame:
+        """Reserve products, one a row."""
+        return self._table("reserves")
 
     @property
     def loads(self) -> pd.DataFrame:

@@ -49,6 +49,7 @@ ROLES = (
     Role("units", "on_profile", "must be 0 or 1", _between_two),
     Role("fuels", "price_profile", "must be at least 0", _negative),
     Role("renewables", "profile", "must be from 0 to 1", _outside_one),
+    Role("reserves", "requirement_profile", "must be at least 0", _negative),
 )
 
 

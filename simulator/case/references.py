@@ -1,6 +1,6 @@
 """Names across tables: each one once, and each reference to a name that exists.
 
-Public names: `dangling`, `repeated`, `repeated_pairs`.
+Public names: `PROFILED`, `dangling`, `repeated`, `repeated_pairs`.
 """
 
 from collections.abc import Iterator
@@ -12,12 +12,12 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from simulator.case.declaration import Declaration
-from simulator.case.schema import OUTAGE_KINDS, TABLES
+from simulator.case.schema import EVERYWHERE, OUTAGE_KINDS, TABLES
 from simulator.case.sheet import Sheet
 from simulator.case.wording import did_you_mean, listed, quoted
 from simulator.errors import Problem
 
-__all__ = ["dangling", "repeated", "repeated_pairs"]
+__all__ = ["PROFILED", "dangling", "repeated", "repeated_pairs"]
 
 REFERENCES = (
     ("lines", "from_bus", "buses"),
@@ -42,6 +42,7 @@ PROFILED = (
     ("units", "on_profile"),
     ("fuels", "price_profile"),
     ("renewables", "profile"),
+    ("reserves", "requirement_profile"),
     ("loads", "profile"),
 )
 """Table and column of each reference to a profile."""
@@ -89,6 +90,8 @@ def dangling(declaration: Declaration) -> Iterator[Problem]:
         profiles = _Known.profiles_of(declaration)
         for name, column in PROFILED:
             yield from _unknown(sheets[name], column, profiles)
+    if sheets["buses"].whole:
+        yield from _unknown(sheets["reserves"], "zone", _Known.zones_of(sheets["buses"]))
     for kind, target in OUT.items():
         if sheets[target].whole:
             outages = sheets["outages"]
@@ -108,6 +111,12 @@ class _Known:
     def rows_of(cls, sheet: Sheet) -> "_Known":
         table = sheet.table
         return cls(sheet.names, f"must name a {table.noun} of {table.path}", table.path)
+
+    @classmethod
+    def zones_of(cls, buses: Sheet) -> "_Known":
+        names = pd.Index([EVERYWHERE, *buses["zone"].unique()])
+        place = buses.table.path
+        return cls(names, f"must be {EVERYWHERE}, or name a zone of {place}", place)
 
     @classmethod
     def profiles_of(cls, declaration: Declaration) -> "_Known":

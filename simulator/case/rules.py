@@ -15,6 +15,7 @@ from simulator.case.declaration import Declaration
 from simulator.case.folder import SETTINGS
 from simulator.case.profiles import profile_problems
 from simulator.case.references import dangling, repeated, repeated_pairs
+from simulator.case.schema import EVERYWHERE
 from simulator.case.sheet import Sheet
 from simulator.case.wording import file_problem, number, quoted
 from simulator.errors import Problem
@@ -39,6 +40,7 @@ def broken_rules(declaration: Declaration) -> list[Problem]:
         *_initial_hours(declaration),
         *_empty_corridors(declaration),
         *_lossy_gains(declaration),
+        *_unclear_zone(declaration),
     ]
 
 
@@ -48,6 +50,7 @@ def oddities(declaration: Declaration) -> list[Problem]:
         *_negative_reactance(declaration),
         *_lonely_buses(declaration),
         *_idle_operation_cost(declaration),
+        *_idle_reserves(declaration),
         *_outages_beyond(declaration),
     ]
 
@@ -129,6 +132,14 @@ def _lossy_gains(declaration: Declaration) -> Iterator[Problem]:
         yield from lines.problems(lines["resistance_pu"] < 0, "resistance_pu", words)
 
 
+def _unclear_zone(declaration: Declaration) -> Iterator[Problem]:
+    """Yield reserves for all buses where some buses are in a zone of that name."""
+    reserves = declaration.sheets["reserves"]
+    if (declaration.sheets["buses"]["zone"] == EVERYWHERE).any():
+        words = "must not be the name of a zone, as it means every bus", "rename that zone"
+        yield from reserves.problems(reserves["zone"] == EVERYWHERE, "zone", words)
+
+
 def _negative_reactance(declaration: Declaration) -> Iterator[Problem]:
     lines = declaration.sheets["lines"]
     words = "is usually positive", "keep it only for series compensation"
@@ -157,6 +168,18 @@ def _idle_operation_cost(declaration: Declaration) -> Iterator[Problem]:
     words = "is not added, since offers are complete costs", "leave it out, or add it to the offers"
     idle = offered & (units["variable_om_per_mwh"] != 0)
     yield from units.problems(idle, "variable_om_per_mwh", words)
+
+
+def _idle_reserves(declaration: Declaration) -> Iterator[Problem]:
+    """Yield reserve products that ask for nothing, or that no unit can provide."""
+    reserves, units = declaration.sheets["reserves"], declaration.sheets["units"]
+    asked = reserves["requirement_mw"] + reserves["percent_of_load"]
+    words = "asks for nothing", "give requirement_mw or percent_of_load, or leave the product out"
+    yield from reserves.problems(asked == 0, "requirement_mw", words)
+    zone_of = declaration.sheets["buses"].frame.drop_duplicates("bus").set_index("bus")["zone"]
+    manned = {EVERYWHERE, *units["bus"].map(zone_of).dropna()}
+    words = "has no unit, so that all of it is short", "put the product in another zone"
+    yield from reserves.problems(~reserves["zone"].isin(manned), "zone", words)
 
 
 def _outages_beyond(declaration: Declaration) -> Iterator[Problem]:

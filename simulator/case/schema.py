@@ -1,6 +1,6 @@
 """The tables of a case folder as data: their columns, types, defaults and rules of value.
 
-Public names: `BLANKS`, `Field`, `Kind`, `OUTAGE_KINDS`, `RowRule`, `Rule`, `TABLES`, `Table`.
+Public names: `BLANKS`, `EVERYWHERE`, `Field`, `Kind`, `OUTAGE_KINDS`, `RowRule`, `Rule`, `TABLES`, `Table`.
 """
 
 import unicodedata
@@ -13,7 +13,17 @@ from typing import Any
 import pandas as pd
 import pandera.pandas as pa
 
-__all__ = ["BLANKS", "OUTAGE_KINDS", "TABLES", "Field", "Kind", "RowRule", "Rule", "Table"]
+__all__ = [
+    "BLANKS",
+    "EVERYWHERE",
+    "OUTAGE_KINDS",
+    "TABLES",
+    "Field",
+    "Kind",
+    "RowRule",
+    "Rule",
+    "Table",
+]
 
 
 class Kind(Enum):
@@ -125,6 +135,8 @@ class Table:
 
 
 LONGEST_NAME = 64
+EVERYWHERE = "all"
+"""The zone of a reserve product that every bus is in."""
 OUTAGE_KINDS = ("unit", "renewable", "storage", "line", "dc_tie")
 
 
@@ -178,6 +190,11 @@ KIND = Rule(
     f"must be one of {', '.join(OUTAGE_KINDS)}",
     "name the kind of element that is out",
     lambda texts: texts.isin([*OUTAGE_KINDS, ""]),
+)
+DIRECTION = Rule(
+    "must be up or down",
+    "write up for reserve that can raise output, down for reserve that can lower it",
+    lambda texts: texts.isin(["up", "down", ""]),
 )
 
 
@@ -384,6 +401,16 @@ STORAGE = Table(
     ),
     (_at_most("initial_mwh", "energy_mwh"), _at_most("final_mwh", "energy_mwh")),
 )  # fmt: skip
+RESERVES = Table(
+    "reserves", "fleet/reserves.csv", "product", "product",
+    (
+        _name("product"), _text("direction", DIRECTION),
+        Field("zone", Kind.TEXT, required=False, default=EVERYWHERE, rules=()),
+        _number("requirement_mw", NOT_NEGATIVE, default=0.0), _optional_text("requirement_profile"),
+        _number("percent_of_load", PERCENT, default=0.0), _number("response_minutes", POSITIVE),
+        _number("shortage_per_mwh", NOT_NEGATIVE),
+    ),
+)  # fmt: skip
 LOADS = Table(
     "loads", "demand/loads.csv", "load", "load",
     (
@@ -403,6 +430,6 @@ OUTAGES = Table(
 )  # fmt: skip
 TABLES = (
     BUSES, LINES, DC_TIES, CORRIDORS, CORRIDOR_LINES, CONTINGENCIES,
-    UNITS, OFFERS, HEAT_RATES, FUELS, RENEWABLES, STORAGE, LOADS, OUTAGES,
+    UNITS, OFFERS, HEAT_RATES, FUELS, RENEWABLES, STORAGE, RESERVES, LOADS, OUTAGES,
 )  # fmt: skip
 """The tables that are read, in the order in which their problems are told."""

@@ -1,7 +1,8 @@
 """Hourly arrays of a case over a span of periods: what is demanded, available, in service, and at what cost.
 
 Public names: `available_share`, `block_cost`, `block_emissions`, `corridor_limit`, `in_service`,
-`line_rating`, `load_demand`, `profile_values`, `renewable_available`, `sum_by`, `unit_schedule`.
+`line_rating`, `load_demand`, `profile_values`, `renewable_available`, `reserve_requirement`, `sum_by`,
+`unit_schedule`, `zone_members`.
 
 Every function takes the case and a span (slice of positions on the case's time axis) and returns an
 array (period, element) with elements in table order.
@@ -13,6 +14,7 @@ from numpy.typing import NDArray
 from scipy import sparse
 
 from simulator.case.model import Case
+from simulator.case.schema import EVERYWHERE
 
 __all__ = [
     "available_share",
@@ -24,8 +26,10 @@ __all__ = [
     "load_demand",
     "profile_values",
     "renewable_available",
+    "reserve_requirement",
     "sum_by",
     "unit_schedule",
+    "zone_members",
 ]
 
 Floats = NDArray[np.float64]
@@ -75,6 +79,31 @@ def renewable_available(case: Case, span: slice) -> Floats:
         * share
         * plants["capacity_mw"].to_numpy(float)
     )
+
+
+def zone_members(case: Case, buses: pd.Series) -> Booleans:
+    """Tell which elements, by the buses they are at, are in the zone of each reserve product.
+
+    Array (element, product).
+    """
+    zone = case.buses["zone"].reindex(buses).to_numpy()[:, None]
+    wanted = case.reserves["zone"].to_numpy()[None, :]
+    members: Booleans = (wanted == EVERYWHERE) | (zone == wanted)
+    return members
+
+
+def reserve_requirement(case: Case, span: slice) -> Floats:
+    """Return what each reserve product asks for, MW, array (period, product).
+
+    requirement_mw × profile + percent_of_load / 100 × demand of its zone, where a load that feeds in
+    counts as none. It does not fall where load goes unserved.
+    """
+    products = case.reserves
+    demand = np.maximum(load_demand(case, span), 0.0)
+    in_zone = demand @ zone_members(case, case.loads["bus"]).astype(float)
+    multiplier = profile_values(case, products["requirement_profile"], span)
+    fixed = multiplier * products["requirement_mw"].to_numpy(float)
+    return fixed + products["percent_of_load"].to_numpy(float) / 100 * in_zone
 
 
 def in_service(case: Case, span: slice) -> Booleans:

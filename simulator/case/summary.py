@@ -24,6 +24,7 @@ def summary(case: "Case") -> str:
         "units": _fleet(case.units, "max_output_mw"),
         "renewables": _fleet(case.renewables, "capacity_mw"),
         "storage": _storage(case),
+        **({} if case.reserves.empty else {"reserves": _reserves(case)}),
         "loads": _loads(case),
         "outages": str(len(case.outages)),
         "warnings": str(len(case.warnings)),
@@ -71,6 +72,20 @@ def _storage(case: "Case") -> str:
     return (
         f"{len(stores)}, {_mw(stores['discharge_mw'].sum())}, {stores['energy_mwh'].sum():,.0f} MWh"
     )
+
+
+def _reserves(case: "Case") -> str:
+    return f"{len(case.reserves)}: " + ", ".join(
+        f"{product} ({_asked(row)})" for product, row in case.reserves.iterrows()
+    )
+
+
+def _asked(row: pd.Series) -> str:
+    """Return what is asked of one product: "up, 100 MW and 3 % of load"."""
+    fixed, share = row["requirement_mw"], row["percent_of_load"]
+    parts = [_mw(fixed)] if fixed or not share else []
+    parts += [f"{number(share)} % of load"] if share else []
+    return f"{row['direction']}, {' and '.join(parts)}"
 
 
 def _loads(case: "Case") -> str:

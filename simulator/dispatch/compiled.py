@@ -112,11 +112,20 @@ def _entries(
 ) -> tuple[Integers, Integers, Floats]:
     if values.ndim == 3:  # noqa: PLR2004  (lag, period, unit)
         return _lagged_entries(rows, columns, values, within_reach(family, inputs))
-    if family == "block_width":
-        columns = columns[:, inputs.unit.block_unit]
+    columns = columns[:, _units_of(family, inputs)]
     if len(values) < len(rows):  # a row that looks one period ahead
         rows, columns = rows[:-1], columns[1:]
     return rows.ravel(), columns.ravel(), values.ravel()
+
+
+def _units_of(family: str, inputs: WindowInputs) -> Integers | slice:
+    """Return the unit of each row of a family over one period; all of them, in order, by default."""
+    units: dict[str, Integers] = {
+        "block_width": inputs.unit.block_unit,
+        "headroom": inputs.reserve.up_units,
+        "footroom": inputs.reserve.down_units,
+    }
+    return units.get(family, slice(None))
 
 
 def _lagged_entries(

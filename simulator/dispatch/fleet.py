@@ -7,13 +7,19 @@ whole arrays; a family's array is (period, element) in the order of its elements
 """
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from simulator.case import series
 from simulator.dispatch.inputs import WindowInputs
+from simulator.dispatch.reserves import (
+    reserve_coefficients,
+    reserve_columns,
+    reserve_costs,
+    reserve_rows,
+)
 from simulator.dispatch.state import State
 
 __all__ = ["FleetData", "Given", "fleet_data", "given_commitment", "within_reach"]
@@ -56,7 +62,24 @@ class Given:
 
 
 def fleet_data(inputs: WindowInputs, state: State) -> FleetData:
-    """Put one window in numbers (formulation.md 2.1 to 2.5)."""
+    """Put one window in numbers (formulation.md 2.1 to 2.5, 2.7)."""
+    data = _without_reserves(inputs, state)
+    if not inputs.reserve.there:
+        return data
+    on = None if data.committed else given_commitment(inputs, state).on
+    return replace(
+        data,
+        columns={**data.columns, **reserve_columns(inputs, on)},
+        costs={**data.costs, **reserve_costs(inputs)},
+        rows={**data.rows, **reserve_rows(inputs, on)},
+        coefficients={
+            **data.coefficients,
+            **(reserve_coefficients(inputs) if data.committed else {}),
+        },
+    )
+
+
+def _without_reserves(inputs: WindowInputs, state: State) -> FleetData:
     columns = _output_columns(inputs) | _store_columns(inputs) | _balance_columns(inputs)
     costs = _costs(inputs)
     rows = _store_rows(inputs, state) | _balance_rows(inputs)

@@ -28,14 +28,15 @@ MOVING = 1.0
 
 
 def state_fleet(inputs: WindowInputs, data: FleetData) -> Model:
-    """State the columns and rows of one window (formulation.md 2.1 to 2.5)."""
+    """State the columns and rows of one window (formulation.md 2.1 to 2.5, 2.7)."""
     model = pyo.ConcreteModel()
     model.inputs, model.data = inputs, data
     model.right = {family: _right_hand_sides(*bounds) for family, bounds in data.rows.items()}
     model.blocks_of = _members(inputs.unit.block_unit, len(inputs.unit.bus))
     for family, (lower, _) in data.columns.items():
         setattr(model, family, pyo.Var(*_ranges(lower)))
-    for family, rule in ROWS[inputs.mode].items():
+    reserve_rules = RESERVE_ROWS[inputs.mode] if inputs.reserve.there else {}
+    for family, rule in (ROWS[inputs.mode] | reserve_rules).items():
         setattr(model, family, pyo.Constraint(*_ranges(data.rows[family][0]), rule=rule))
     return model
 
@@ -247,6 +248,53 @@ def balance(model: Model, t: int, cell: int) -> Any:
     return total == model.right["balance"][t][cell]
 
 
+def reserve_requirement(model: Model, t: int, product: int) -> Any:
+    """2.7: Σ provided + short ≥ requirement; its dual is the price of the product."""
+    offers = np.flatnonzero(model.inputs.reserve.product == product).tolist()
+    provided = sum(model.reserve[t, offer] for offer in offers)
+    right = model.right["reserve_requirement"][t][product]
+    return provided + model.reserve_short[t, product] >= right
+
+
+def headroom(model: Model, t: int, position: int) -> Any:
+    """2.7: output + Σ upward reserve ≤ available·on.
+
+    It has no term for the start or the stop ramp: 2.7 holds a unit's reserve against its maximum only,
+    so a tighter row would cut off plans. Blocks keep theirs (`block_width`), and with output split at
+    the minimum this row is Σ blocks + Σ reserve ≤ (available − minimum)·on.
+    """
+    offers = model.inputs.reserve
+    unit = int(offers.up_units[position])
+    used = model.output[t, unit] + _provided(model, t, unit, upward=True)
+    if model.data.committed:
+        used += MOVING * model.on[t, unit]
+    return used <= model.right["headroom"][t][position]
+
+
+def footroom(model: Model, t: int, position: int) -> Any:
+    """2.7: output − Σ downward reserve ≥ minimum·on."""
+    offers = model.inputs.reserve
+    unit = int(offers.down_units[position])
+    left = model.output[t, unit] - _provided(model, t, unit, upward=False)
+    if model.data.committed:
+        left += MOVING * model.on[t, unit]
+    return left >= model.right["footroom"][t][position]
+
+
+def reserve_response(model: Model, t: int, position: int) -> Any:
+    """2.7: reserve ≤ ramp × response time × on, where that is less than a unit's whole range."""
+    offers = model.inputs.reserve
+    offer = int(offers.limited[position])
+    most = float(offers.limit[offer]) * model.on[t, int(offers.unit[offer])]
+    return model.reserve[t, offer] - most <= 0.0
+
+
+def _provided(model: Model, t: int, unit: int, *, upward: bool) -> Any:
+    offers = model.inputs.reserve
+    own = (offers.unit == unit) & (offers.upward[offers.product] == upward)
+    return sum(model.reserve[t, offer] for offer in np.flatnonzero(own).tolist())
+
+
 _OPEN = 1e30
 
 GIVEN_ROWS = {
@@ -275,3 +323,16 @@ OPTIMAL_ROWS = {
     "reverse_way": reverse_way,
 }
 ROWS = {"given": GIVEN_ROWS, "relaxed": RELAXED_ROWS, "optimal": OPTIMAL_ROWS}
+
+GIVEN_RESERVE_ROWS = {
+    "reserve_requirement": reserve_requirement,
+    "headroom": headroom,
+    "footroom": footroom,
+}
+DECIDED_RESERVE_ROWS = GIVEN_RESERVE_ROWS | {"reserve_response": reserve_response}
+RESERVE_ROWS = {
+    "given": GIVEN_RESERVE_ROWS,
+    "relaxed": DECIDED_RESERVE_ROWS,
+    "optimal": DECIDED_RESERVE_ROWS,
+}
+"""The rows that a case with reserve products has besides."""

@@ -1,6 +1,6 @@
 """What one window needs to know, as whole arrays: cut out of arrays made once for a run.
 
-Public names: `RunInputs`, `WindowInputs`, `UnitData`, `StoreData`, `run_inputs`.
+Public names: `ReserveData`, `RunInputs`, `StoreData`, `UnitData`, `WindowInputs`, `run_inputs`.
 
 Arrays over time have periods first. Powers are MW, prices currency/MWh, Δ is `period_hours`.
 """
@@ -18,7 +18,7 @@ from simulator.dispatch.limits import NetworkLimits
 from simulator.dispatch.reach import reachable_ceiling, reachable_floor, reachable_minimum
 from simulator.grid import Cells, Contingencies, LineLosses, Network, TopologySchedule, common_cells
 
-__all__ = ["RunInputs", "StoreData", "UnitData", "WindowInputs", "run_inputs"]
+__all__ = ["ReserveData", "RunInputs", "StoreData", "UnitData", "WindowInputs", "run_inputs"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -87,6 +87,31 @@ class StoreData:
     end_value: Floats
 
 
+@dataclass(frozen=True)
+class ReserveData:
+    """Reserve products, and the offers of units to provide them (formulation.md 2.7).
+
+    unit, product : arrays (offer,), positions; limit : array (offer,), MW, ramp × response time
+    limited : array, positions of the offers that this can limit to less than a unit's whole range
+    upward : array (product,), bool; shortage_cost : array (product,), currency/MWh
+    up_units, down_units : positions of the units that offer a product of that direction
+    """
+
+    unit: Integers
+    product: Integers
+    limit: Floats
+    limited: Integers
+    upward: Booleans
+    shortage_cost: Floats
+    up_units: Integers
+    down_units: Integers
+
+    @property
+    def there(self) -> bool:
+        """Whether there is any product."""
+        return bool(len(self.upward))
+
+
 @dataclass(frozen=True, eq=False)
 class WindowInputs:
     """Everything of one window but the state it starts from.
@@ -111,6 +136,7 @@ class WindowInputs:
     tie_forward, tie_reverse (period, tie), MW entering; tie_delivered : share that arrives
     tie_lossy : positions of the ties that lose something; tie_widest : array (direction, tie), MW, the
         most either way with nothing out
+    reserve_requirement : array (period, product), MW
     demand (period, load); unserved_cost (load,); surplus_cost, short_cost : currency/MWh
     limits : what lines and corridors may carry; losses : what lines lose, None if nothing counts
     topology : which topology holds when
@@ -148,6 +174,8 @@ class WindowInputs:
     store_share: Floats
     store_floor: Floats
     ends_run: bool
+    reserve: ReserveData
+    reserve_requirement: Floats
     tie_from: Integers
     tie_to: Integers
     tie_delivered: Floats
@@ -182,7 +210,8 @@ _BY_PERIOD = (
     "unit_min", "unit_available", "unit_out", "unit_falling", "unit_given", "unit_ceiling",
     "minimum_cost", "minimum_emissions", "block_width", "block_cost",
     "block_not_at_start", "block_not_at_stop", "renewable_available",
-    "store_share", "store_floor", "tie_forward", "tie_reverse", "demand", "limits", "topology", "joined",
+    "store_share", "store_floor", "reserve_requirement", "tie_forward", "tie_reverse",
+    "demand", "limits", "topology", "joined",
 )  # fmt: skip
 
 
@@ -218,7 +247,7 @@ def run_inputs(case: Case, span: slice, run_periods: int, mode: str, limits: str
     """
     network = Network.of(case)
     topology = network.schedule(series.in_service(case, span))
-    cells = common_cells(topology.topologies)
+    cells, units = common_cells(topology.topologies), _unit_inputs(case, span)
     whole = WindowInputs(
         number=0, first=0, mode=mode, gap=case.settings.commitment.mip_gap,
         seconds=case.settings.commitment.seconds, limited=limits != "none",
@@ -227,7 +256,8 @@ def run_inputs(case: Case, span: slice, run_periods: int, mode: str, limits: str
         limits=_limits(case, span, network, secure=limits == "secure"), topology=topology, cells=cells,
         losses=LineLosses.of(case, network) if case.settings.network.losses else None,
         joined=cells.joined[topology.index], buses=len(case.buses), ends_run=True,
-        **_unit_inputs(case, span), **_renewable_inputs(case, span),
+        reserve_requirement=series.reserve_requirement(case, span), **units,
+        reserve=_reserve_data(case, units["unit"]), **_renewable_inputs(case, span),
         **_store_inputs(case, span, run_periods), **_tie_inputs(case, span), **_load_inputs(case, span),
     )  # fmt: skip
     return RunInputs(whole, run_periods)
@@ -368,6 +398,26 @@ def _store_inputs(case: Case, span: slice, run_periods: int) -> dict[str, Any]:
         "store": data, "charge": charge, "discharge": stores["discharge_mw"].to_numpy(float),
         "store_share": share, "store_floor": floor,
     }  # fmt: skip
+
+
+def _reserve_data(case: Case, unit: UnitData) -> ReserveData:
+    """Pair every product with the units of its zone that can move at all."""
+    products = case.reserves
+    upward = products["direction"].to_numpy(dtype=object) == "up"
+    ramps = [case.units[f"ramp_{way}_mw_per_h"].to_numpy(float)[:, None] for way in ("up", "down")]
+    hours = products["response_minutes"].to_numpy(float) / 60
+    with np.errstate(invalid="ignore"):  # a ramp of nothing over a response time without limit
+        limit = np.nan_to_num(np.where(upward, *ramps) * hours, nan=0.0, posinf=np.inf)
+    can = series.zone_members(case, case.units["bus"]) & (limit > 0) & (unit.maximum > 0)[:, None]
+    offering, product = np.nonzero(can)
+    reach = limit[offering, product]
+    return ReserveData(
+        unit=offering, product=product, limit=reach,
+        limited=np.flatnonzero(reach < (unit.maximum - unit.least)[offering]), upward=upward,
+        shortage_cost=products["shortage_per_mwh"].to_numpy(float),
+        up_units=np.unique(offering[upward[product]]),
+        down_units=np.unique(offering[~upward[product]]),
+    )  # fmt: skip
 
 
 def _tie_inputs(case: Case, span: slice) -> dict[str, Any]:

@@ -1,6 +1,6 @@
 """Where flows and losses are linearised.
 
-Public names: `Point`.
+Public names: `Point`, `loss_factors`.
 """
 
 from dataclasses import dataclass
@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from simulator.dispatch.inputs import WindowInputs
 from simulator.grid import TopologySchedule
 
-__all__ = ["Point"]
+__all__ = ["Point", "loss_factors"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -36,7 +36,7 @@ class Point:
     def at(cls, inputs: WindowInputs, injection: Floats) -> "Point":
         """Return the point of some injections."""
         losses = inputs.losses
-        flow = flows(inputs, injection)
+        flow = _flows(inputs, injection)
         return cls(injection, flow, None if losses is None else losses.slope(flow))
 
     def factors(self, inputs: WindowInputs, period: Integers, weight: Floats) -> Floats:
@@ -50,8 +50,16 @@ class Point:
         return inputs.losses.factors(rows, self.slope[period], weight)
 
 
-def flows(inputs: WindowInputs, injection: Floats) -> Floats:
+def _flows(inputs: WindowInputs, injection: Floats) -> Floats:
     """Return flows, array (period, line), MW; losses, if they count, are drawn at the lines' ends."""
     if inputs.losses is None:
         return inputs.topology.flows(injection)
     return inputs.losses.flows(inputs.topology, injection)
+
+
+def loss_factors(inputs: WindowInputs, flow: Floats) -> Floats:
+    """Return what one more MW injected at each bus adds to losses at some flows, array (period, bus)."""
+    if inputs.losses is None:
+        return np.zeros((len(flow), inputs.buses))
+    slope = inputs.losses.slope(flow)
+    return inputs.losses.factors(inputs.topology, slope, slope)

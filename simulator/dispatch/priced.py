@@ -39,6 +39,7 @@ class Priced:
 
     price : array (period, bus) (5.1); congestion, loss : its parts from limits and from losses, with
         respect to some reference of each island
+    reserve : array (period, product) (2.7)
     line (period, line), corridor (period, corridor) : duals of limits as things are
     pairs : duals of limits after contingencies
     """
@@ -46,6 +47,7 @@ class Priced:
     price: Floats
     congestion: Floats
     loss: Floats
+    reserve: Floats
     line: Floats
     corridor: Floats
     pairs: Pairs
@@ -55,7 +57,7 @@ class Priced:
         """Join the first periods of some windows, given how many of each."""
         arrays = {
             name: np.concatenate([getattr(priced, name)[:kept] for kept, priced in parts])
-            for name in ("price", "congestion", "loss", "line", "corridor")
+            for name in ("price", "congestion", "loss", "reserve", "line", "corridor")
         }
         begins = np.cumsum([0, *(kept for kept, _ in parts)])
         pairs = [priced.pairs.first(kept) for kept, priced in parts]

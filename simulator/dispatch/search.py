@@ -50,6 +50,14 @@ class Decided:
     out_of_time: bool
 
 
+@dataclass(frozen=True, eq=False)
+class Relaxed:
+    """Cost of the relaxation, and reduced costs (column,) of its optimum."""
+
+    cost: float
+    reduced: Floats
+
+
 class Search:
     """The search of one window, on the model that its relaxation was solved with."""
 
@@ -63,41 +71,48 @@ class Search:
         """Decide, then solve with the decisions fixed, for prices; `attempt` holds that solve.
 
         settle : solves what stands in the solver, adds the line rows it asks for, turns ties
-        Line rows found on the relaxation stand already. Where the fixed solve needs more, the bound of
+        A first plan that is within the gap of the relaxation needs no search. Line rows found on the
+        relaxation stand already. Where the fixed solve needs more, the bound of
         the search still holds, so its plan is good if it is within the gap even so; if not, the search
-        goes on from that plan. What is still missing to the gap then lies in the solver's tolerances,
-        and the search goes on with a tighter one.
+        goes on from that plan. Where no row was missing and the gap is missed even so, what is missing
+        lies in the solver's tolerances, and the search goes on with a tighter gap.
         """
         self._deadline = time.perf_counter() + inputs.seconds
         basis, bound = self._solver.basis(), self._solver.objective
-        plan = self._first_plan(inputs, attempt, start)
+        relaxed = Relaxed(bound, self._solver.reduced_costs())
+        best, plan = self._first_plan(inputs, attempt, start)
         asked, tries = inputs.gap, 0
         while True:
             standing = self._solver.rows
-            decision = self._searched(asked, plan)
-            bound = max(bound, decision.bound)
+            if _gap(best, bound) > asked or plan is None:
+                self._narrow(relaxed, best, attempt)
+                decision = self._searched(asked, plan)
+                bound = max(bound, min(decision.bound, best))
+                plan = decision.values
             self._solver.set_basis(*self._extended(basis))
-            on = self._fix(state, decision.values)
-            self._fix_ways(inputs, decision.values)
+            on = self._fix(state, plan)
+            self._fix_ways(inputs, plan)
             settle(inputs, attempt)
-            gap, late = _gap(self._solver.objective, bound), time.perf_counter() > self._deadline
+            best, late = self._solver.objective, time.perf_counter() > self._deadline
+            gap = _gap(best, bound)
             if self._solver.rows == standing:
                 asked, tries = asked * _TIGHTER, tries + 1
             if gap <= max(inputs.gap, _ROUNDING) or late or tries == _TRIES:
                 break
-            plan = self._decisions_of(decision.values)
+            plan = self._whole(plan)
             self._free(inputs, attempt)
         return Decided(on, self._extended(basis), gap, late and gap > inputs.gap)
 
     def _searched(self, gap: float, start: Floats | None) -> Decision:
         """Search until the gap or the deadline; a whole plan to start from is itself a result."""
         seconds = max(self._deadline - time.perf_counter(), 0.1)
+        decisions = None if start is None else self._whole(start)
         try:
-            return self._run(gap, start, seconds)
+            return self._run(gap, decisions, seconds)
         except SolverError:
             if start is None or np.isnan(start[self._binary]).any():
                 raise
-            return Decision(start, -np.inf)
+            return Decision(start, -np.inf, np.inf)
 
     def _run(self, gap: float, start: Floats | None, seconds: float) -> Decision:
         with self._counts.timed("solve"):
@@ -107,25 +122,50 @@ class Search:
 
     def _first_plan(
         self, inputs: WindowInputs, attempt: Attempt, start: Start | None
-    ) -> Floats | None:
-        """Return a plan to start the search from: the best with what the relaxation is sure of fixed.
+    ) -> tuple[float, Floats | None]:
+        """Return a first plan and its cost: the best with the units fixed that the relaxation is sure of.
 
-        Few decisions are left open then, so it is found at once; it starts from the last window's plan
-        for the hours seen before, and if it has none that plan is the start itself.
+        It is sure of a unit that it has wholly on or off in every hour. What is left is small and soon
+        solved, from the last window's plan for the hours seen before; if no plan is found, these
+        decisions are where the search starts, at no known cost.
         """
-        on, last = self._fleet.columns["on"].ravel(), self._last_plan(inputs, start)
-        lower, upper = (bound.ravel() for bound in attempt.data.columns["on"])
+        on, last = self._fleet.columns["on"], self._last_plan(inputs, start)
+        lower, upper = attempt.data.columns["on"]
         relaxed = attempt.solution[on]
-        sure_on, sure_off = relaxed >= 1 - SURE, relaxed <= SURE
-        self._solver.set_column_bounds(
-            on, np.where(sure_on, upper, lower), np.where(sure_off, lower, upper)
-        )
+        sure = (np.abs(relaxed - np.round(relaxed)) <= SURE).all(axis=0)
+        fixed = np.clip(np.round(relaxed), lower, upper)
+        self._bound("on", np.where(sure, fixed, lower), np.where(sure, fixed, upper))
         try:
-            return self._decisions_of(self._run(inputs.gap, last, inputs.seconds / 2).values)
+            decision = self._run(inputs.gap / 2, last, inputs.seconds / 2)
         except SolverError:
-            return last
+            return np.inf, last
+        else:
+            return decision.cost, decision.values
         finally:
-            self._solver.set_column_bounds(on, lower, upper)
+            self._bound("on", lower, upper)
+
+    def _narrow(self, relaxed: "Relaxed", best: float, attempt: Attempt) -> None:
+        """Fix what no plan cheaper than the best known one can change, by reduced costs.
+
+        A decision away from its bound in the relaxation costs its reduced cost more than the
+        relaxation at least; where that is more than the best plan, it stays. Starts and stops are
+        whole in any plan, so that they are decisions too.
+        """
+        if not np.isfinite(best):
+            return
+        room = best - relaxed.cost + _ROUNDING * abs(best)
+        for family in ("on", "start", "stop"):
+            lower, upper = attempt.data.columns[family]
+            reduced = relaxed.reduced[self._fleet.columns[family]]
+            self._bound(
+                family,
+                np.where(reduced < -room, upper, lower),
+                np.where(reduced > room, lower, upper),
+            )
+
+    def _bound(self, family: str, lower: Floats, upper: Floats) -> None:
+        places = self._fleet.columns[family].ravel()
+        self._solver.set_column_bounds(places, lower.ravel(), upper.ravel())
 
     def _last_plan(self, inputs: WindowInputs, start: Start | None) -> Floats | None:
         """Return the decisions an earlier window left for the hours of this one; NaN for all else."""
@@ -139,7 +179,7 @@ class Search:
         plan[places[: inputs.periods - shift]] = start.on[shift:]
         return plan
 
-    def _decisions_of(self, plan: Floats) -> Floats:
+    def _whole(self, plan: Floats) -> Floats:
         """Return a plan's decisions, whole; NaN for all else."""
         decisions = np.full(len(plan), np.nan)
         decisions[self._binary] = np.round(plan[self._binary])
@@ -157,8 +197,7 @@ class Search:
         change = np.diff(on, axis=0, prepend=before[None])
         decided = {"on": on, "start": np.maximum(change, 0.0), "stop": np.maximum(-change, 0.0)}
         for family, values in decided.items():
-            places, fixed = self._fleet.columns[family].ravel(), values.ravel()
-            self._solver.set_column_bounds(places, fixed, fixed)
+            self._bound(family, values, values)
         return on.astype(np.int8)
 
     def _fix_ways(self, inputs: WindowInputs, plan: Floats) -> None:
@@ -167,15 +206,13 @@ class Search:
         flow = [plan[columns[family][:, lossy]] for family in ("tie_forward", "tie_reverse")]
         used, way = np.maximum(*flow) > _CARRIES, np.round(plan[columns["tie_way"]])
         lower, upper = np.where(used, way, 0.0), np.where(used, way, 1.0)
-        self._solver.set_column_bounds(columns["tie_way"].ravel(), lower.ravel(), upper.ravel())
+        self._bound("tie_way", lower, upper)
 
     def _free(self, inputs: WindowInputs, attempt: Attempt) -> None:
         """Open again what the fixed solve closed."""
         attempt.ties = TieDirections(inputs, self._fleet.columns)
         for family in ("on", "start", "stop", "tie_way", "tie_forward", "tie_reverse"):
-            lower, upper = attempt.data.columns[family]
-            places = self._fleet.columns[family].ravel()
-            self._solver.set_column_bounds(places, lower.ravel(), upper.ravel())
+            self._bound(family, *attempt.data.columns[family])
 
 
 def _gap(cost: float, bound: float) -> float:

@@ -29,9 +29,10 @@ OPTIONS: Mapping[str, Any] = {
     "random_seed": 0,
     "presolve": "off",  # the last basis is worth more than presolve, which would discard it
     "solver": "simplex",
+    "mip_heuristic_run_root_reduced_cost": False,  # half the time of a search, for no better plan
 }
 
-INTEGER_OPTIONS: Mapping[str, Any] = {"presolve": "on"}
+INTEGER_OPTIONS: Mapping[str, Any] = {"presolve": "on", "solver": "choose"}
 """What differs from `OPTIONS` in an integer solve."""
 
 STATUS: Mapping[str, str] = {
@@ -71,10 +72,11 @@ class SolverError(Exception):
 
 @dataclass(frozen=True, eq=False)
 class Decision:
-    """The best plan found: values of all columns, and the bound no plan's objective is below."""
+    """The best plan found: values of all columns, the bound no plan's objective is below, its cost."""
 
     values: Floats
     bound: float
+    cost: float
 
 
 class _Quiet(highspy.Highs):
@@ -211,7 +213,8 @@ class LinearSolver:
             raise SolverError(STATUS[status.name])
         if status not in {highspy.HighsModelStatus.kOptimal, highspy.HighsModelStatus.kTimeLimit}:
             raise SolverError(STATUS[status.name])
-        return Decision(np.asarray(self._highs.getSolution().col_value), float(info.mip_dual_bound))
+        values = np.asarray(self._highs.getSolution().col_value)
+        return Decision(values, float(info.mip_dual_bound), float(info.objective_function_value))
 
     @property
     def iterations(self) -> int:

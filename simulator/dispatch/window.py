@@ -52,6 +52,7 @@ class WindowSolution:
     on, start, stop, cold_start : (period, unit), 0..1
     output (unit), block (block), renewable (plant), charge, discharge (store), tie_forward, tie_reverse
     (tie), unserved (load), surplus (bus), flow (line) : MW; stored (store) : MWh at the end of a period
+    reserve (offer), reserve_short (product) : MW (2.7)
     priced : prices, and what limits cost; relaxed : the same from the relaxation, in which any decision
         may be partly taken; they differ in mode `optimal` only
     objective : currency; left : what the next window may start from
@@ -71,6 +72,8 @@ class WindowSolution:
     tie_reverse: Floats
     unserved: Floats
     surplus: Floats
+    reserve: Floats
+    reserve_short: Floats
     flow: Floats
     priced: Priced
     relaxed: Priced
@@ -319,6 +322,8 @@ class WindowModel:
             decided = {name: values.pop(name) for name in ("on", "start", "stop")}
             cold = np.zeros_like(decided["start"])
             cold[:, inputs.unit.cold_rows] = values.pop("cold_start")
+        if not inputs.reserve.there:
+            values["reserve"] = values["reserve_short"] = np.zeros((inputs.periods, 0))
         return WindowSolution(
             **decided, **values, cold_start=cold, flow=attempt.flow, priced=priced[0],
             relaxed=priced[1], objective=self._solver.objective, left=left,
@@ -334,8 +339,17 @@ class WindowModel:
         every = np.arange(inputs.periods)
         congestion = attempt.point.factors(inputs, every, duals.flow)
         loss = self.losses.price_part(attempt.row_dual, inputs) / inputs.period_hours
-        price = energy / inputs.period_hours + congestion + loss
-        return Priced(price, congestion, loss, duals.line, duals.corridor, duals.pairs)
+        return Priced(
+            price=energy / inputs.period_hours + congestion + loss, congestion=congestion, loss=loss,
+            reserve=self._reserve_prices(inputs, attempt), line=duals.line, corridor=duals.corridor,
+            pairs=duals.pairs,
+        )  # fmt: skip
+
+    def _reserve_prices(self, inputs: WindowInputs, attempt: Attempt) -> Floats:
+        """Return (dual of a product's requirement)/Δ, array (period, product), at least 0 (2.7)."""
+        if not inputs.reserve.there:
+            return np.zeros((inputs.periods, 0))
+        return attempt.row_dual[self.fleet.rows["reserve_requirement"]] / inputs.period_hours
 
 
 def _first_point(inputs: WindowInputs, start: Start | None) -> Point:
@@ -359,6 +373,9 @@ def shape_of(inputs: WindowInputs) -> tuple[object, ...]:
         inputs.periods,
         len(inputs.unit.bus),
         len(inputs.unit.block_unit),
+        len(inputs.reserve.upward),
+        len(inputs.reserve.unit),
+        len(inputs.reserve.limited),
         inputs.buses,
         inputs.cells.cell.tobytes(),
         inputs.cells.pair_from.tobytes(),

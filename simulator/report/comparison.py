@@ -37,6 +37,8 @@ TOTALS = {
     "emissions_t": ("Emissions", "t CO\N{SUBSCRIPT TWO}"),
     "congestion_rent": ("Congestion rent", "currency"),
     "congestion_hours": ("Hours priced, all lines", "h"),
+    "starts": ("Starts", "1"),
+    "make_whole": ("Make-whole amounts", "currency"),
     "mean_price_per_mwh": ("Mean price, weighted by load", "currency/MWh"),
 }
 """Label and unit of each measure of a whole run, named as in run.json where that has it."""
@@ -178,6 +180,8 @@ def _sums(view: View, hourly: Hourly) -> dict[str, float]:
         "emissions_t": float(view.values("emissions").sum()),
         "congestion_rent": float(view.values("congestion_rent").sum()),
         "congestion_hours": float(view.values("congestion_hours").sum()),
+        "starts": float(view.values("unit_start").sum()),
+        "make_whole": float(view.values("make_whole").sum()) if view.has("make_whole") else np.nan,
         "mean_price_per_mwh": hourly.mean(),
     }
 

@@ -16,6 +16,7 @@ from rich.markup import escape
 from rich.table import Table as TerminalTable
 
 from simulator.errors import OptionError
+from simulator.files import replace_file
 from simulator.report.comparison import (
     FEWER,
     GONE,
@@ -43,7 +44,6 @@ from simulator.report.tables import (
 )
 from simulator.report.view import View
 from simulator.report.wording import LARGE, amount, count, listed, number, percent
-from simulator.results import replace_file
 
 __all__ = ["comparison_html", "print_comparison", "write_comparison"]
 

@@ -10,9 +10,11 @@ import math
 import re
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
+from itertools import product
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import pandas as pd
 import xarray as xr
 from openpyxl import Workbook
@@ -24,16 +26,17 @@ from pandas.api.types import is_object_dtype
 
 from simulator.case.wording import listed, quoted
 from simulator.errors import OptionError
+from simulator.files import made_whole
 from simulator.report.geojson import LAYERS, feature_collections
 from simulator.report.moments import read_clock
 from simulator.report.page import CAUTION
 from simulator.report.view import View
-from simulator.results import VARIABLES, made_whole
+from simulator.results import VARIABLES
 
 __all__ = ["FORMATS", "Export", "Sheet", "export_run", "refuse_folder", "sheets"]
 
 BOOK = "results.xlsx"
-DIMENSIONS = ("bus", "line", "unit", "plant", "store", "tie", "load")
+DIMENSIONS = ("bus", "line", "unit", "plant", "store", "tie", "load", "product")
 """The dimensions whose elements have a table of their own, with what the dataset says of them."""
 
 RISKY = ("=", "+", "-", "@", "\t", "\r", "\n", "\uff1d", "\uff0b", "\uff0d", "\uff20")
@@ -132,6 +135,7 @@ def _about(view: View) -> Sheet:
         ("audit", _audited(run.get("audit"))),
         *_prefixed("setting", run.get("settings")),
         *_prefixed("total", run.get("totals")),
+        *_windows(run),
         *((str(name), _described(view, str(name))) for name in dataset.data_vars),
         ("blank number", "unlimited, or not known"),
         *_prefixed("made with", run.get("versions")),
@@ -151,6 +155,15 @@ def _prefixed(prefix: str, values: Mapping[str, Any] | None) -> list[tuple[str, 
         return []
     flat = pd.json_normalize(dict(values)).to_dict("records")[0]
     return [(f"{prefix} {name}", value) for name, value in flat.items()]
+
+
+def _windows(run: Mapping[str, Any]) -> list[tuple[str, Any]]:
+    """Return how each window was solved, as far as the run's record has it."""
+    return [
+        (f"window {each.get('window')} {name.replace('_', ' ')}", each[name])
+        for each in run.get("windows") or ()
+        for name in ("seconds", "gap", "time_limit") if each.get(name) is not None
+    ]  # fmt: skip
 
 
 def _described(view: View, name: str) -> str:
@@ -178,19 +191,39 @@ def _elements(dataset: xr.Dataset, dimension: str) -> Sheet:
 
 
 def _values(view: View, name: str) -> Sheet:
-    """Return a variable as a table: a row a period, or a row an element if it has no time."""
+    """Return a variable as a table: a row a period, or a row an element if it has no time.
+
+    Where it has two kinds of element, as reserve by unit and product, a column is a pair of them.
+    """
     variable, unit = view.dataset[name], _unit(view, name)
-    values = variable.to_numpy() + 0  # no minus before a zero
+    values = _in_words(variable) if "flag_meanings" in variable.attrs else variable.to_numpy() + 0
+    if variable.dims[0] == "day":
+        return Sheet(name, _by_day(view, name, values))
     if "time" not in variable.dims:
         dimension = str(variable.dims[0])
         return Sheet(
             name, pd.DataFrame({dimension: view.names(dimension), f"{name} [{unit}]": values})
         )
-    elements = view.names(str(variable.dims[1])) if variable.ndim > 1 else [name]
-    headings = [f"{element} [{unit}]" for element in elements]
+    unit = "in words" if "flag_meanings" in variable.attrs else unit
+    parts = product(*(view.names(str(dimension)) for dimension in variable.dims[1:]))
+    headings = [f"{', '.join(each) or name} [{unit}]" for each in parts]
     frame = pd.DataFrame(values.reshape(len(values), -1), columns=headings)
     frame.insert(0, "time", read_clock(view.dataset).edges[:-1])
     return Sheet(name, frame)
+
+
+def _in_words(variable: xr.DataArray) -> Any:
+    """Return codes as the words they stand for."""
+    words = [word.replace("_", " ") for word in variable.attrs["flag_meanings"].split()]
+    return np.array(words)[variable.to_numpy()]
+
+
+def _by_day(view: View, name: str, values: Any) -> pd.DataFrame:
+    """Return values (day, element), days as ISO 8601 text, a row a day."""
+    elements = view.names(str(view.dataset[name].dims[1]))
+    frame = pd.DataFrame(values, columns=[f"{each} [{_unit(view, name)}]" for each in elements])
+    frame.insert(0, "day", view.names("day"))
+    return frame
 
 
 def _write_csv(view: View, folder: Path) -> Export:

@@ -1,8 +1,8 @@
 """The page's charts as plain plotly figures: traces and layouts without theme or time labels.
 
 Public names: `Figure`, `daily_spread`, `dispatch`, `duration_curves`, `energy_groups`, `line_strokes`,
-`lost_groups`, `network_map`, `on_off`, `price_picture`, `spread_by_day`, `stored_energy`, `tie_flows`,
-`unit_order`.
+`lost_groups`, `network_map`, `on_off`, `price_picture`, `reserve_prices`, `spread_by_day`, `stored_energy`,
+`tie_flows`, `unit_order`.
 
 The page's script completes them. It puts the labels of the steps on the time axis of a figure with
 `"steps": True`, turns the step numbers of a trace's `at` into labels, and resolves `var(--name)` to the
@@ -17,7 +17,8 @@ from numpy.typing import NDArray
 from plotly.colors import sequential
 
 from simulator.report.layout import place_buses
-from simulator.report.tables import HALF, ranked
+from simulator.report.plans import HELD, PAYS, reason_rows
+from simulator.report.tables import HALF, NEGLIGIBLE, ranked
 from simulator.report.view import View, plotly_text, rounded
 
 __all__ = [
@@ -31,6 +32,7 @@ __all__ = [
     "network_map",
     "on_off",
     "price_picture",
+    "reserve_prices",
     "spread_by_day",
     "stored_energy",
     "tie_flows",
@@ -406,6 +408,37 @@ def _bars(name: str, power: Floats, colour: str) -> Figure:
             {"color": colour, "line": {"width": 0}}, "hovertemplate": "%{y:,.1f} MW"}  # fmt: skip
 
 
+def reserve_prices(view: View) -> Figure:
+    """Price of each reserve product, and below it what is short of it."""
+    price, short, names = (
+        view.values("reserve_price"), view.values("reserve_shortage"), view.names("product")
+    )  # fmt: skip
+    unit = plotly_text(view.price_unit)
+    lines = [
+        _outline(view, name, price[:, place], _stroke(place)) for place, name in enumerate(names)
+    ]
+    for line in lines:
+        line["hovertemplate"] = f"%{{y:,.2f}} {unit}"
+    bars = [
+        _bars(
+            f"{plotly_text(name)}, short", view.steps.mean(short[:, place]), _stroke(place)["color"]
+        )
+        for place, name in enumerate(names)
+        if short[:, place].max(initial=0.0) > NEGLIGIBLE
+    ]
+    layout: Figure = {
+        "yaxis": {"title": {"text": unit}, "rangemode": "tozero", "domain": [0.4 if bars else 0, 1]},
+        "hovermode": "x unified", "showlegend": True,
+    }  # fmt: skip
+    if bars:
+        layout |= {
+            "xaxis": {"anchor": "y2"}, "barmode": "stack", "bargap": 0,
+            "yaxis2": {"title": {"text": "MW short"}, "domain": [0, 0.3], "anchor": "x",
+                       "rangemode": "tozero"},
+        }  # fmt: skip
+    return {"steps": True, "height": 380 if bars else 280, "traces": lines + bars, "layout": layout}
+
+
 def unit_order(view: View) -> list[int]:
     """Order units by technology, the one with the most energy first, then by hours on."""
     on, energy = view.values("unit_on").sum(axis=0), view.energy("unit_output")
@@ -418,20 +451,37 @@ def unit_order(view: View) -> list[int]:
 
 
 def on_off(view: View, order: Sequence[int]) -> Figure:
-    """When each unit was on, as a picture of units by steps, with its starts."""
+    """When each unit was on, as a picture of units by steps, with its starts and why it was on.
+
+    The script lifts what is on though it does not pay from 0..1 to 2..3, where it has its own colour.
+    """
     names = [plotly_text(view.names("unit")[unit]) for unit in order]
     on = view.steps.mean(view.values("unit_on"))[:, order]
     output = view.steps.mean(view.values("unit_output"))[:, order]
     picture = {
         "type": "heatmap", "y": names, "z": rounded(on.T, 2), "customdata": rounded(output.T),
-        "zmin": 0, "zmax": 1, "colorscale": [[0, "var(--off)"], [1, "var(--on)"]], "showscale": False,
+        "zmin": 0, "zmax": 3, "colorscale": ON_OFF, "showscale": False,
         "hovertemplate": "%{y}<br>%{x}<br>on %{z:.0%}, %{customdata:,.1f} MW<extra></extra>",
         "ygap": 1,
     }  # fmt: skip
     layout = {"yaxis": _rows_axis(names), "hovermode": "closest", "showlegend": True}
     height = int(np.clip(120 + 15 * len(names), 180, 1500))
-    traces = [picture, _starts(view, names, order)]
-    return {"steps": True, "height": height, "traces": traces, "layout": layout}
+    why = reason_rows(view, order)
+    key = [_square(PAYS, "var(--on)"), _square(HELD, "var(--held)")] if why else []
+    traces = [picture, *key, _starts(view, names, order)]
+    return {"steps": True, "height": height, "traces": traces, "layout": layout, **why}
+
+
+ON_OFF = [
+    [0, "var(--off)"], [0.3333, "var(--on)"], [0.6667, "var(--off)"], [1, "var(--held)"],
+]  # fmt: skip
+
+
+def _square(name: str, colour: str) -> Figure:
+    """Return an entry of the key without a point."""
+    marker = {"symbol": "square", "size": 11, "color": colour}
+    return {"type": "scatter", "mode": "markers", "name": name, "at": [0], "y": [None],
+            "marker": marker, "hoverinfo": "skip"}  # fmt: skip
 
 
 def _starts(view: View, names: Sequence[str], order: Sequence[int]) -> Figure:

@@ -9,11 +9,19 @@ from typing import Any
 
 import numpy as np
 
-from simulator.report import figures, tables
+from simulator.report import figures, plans, tables
 from simulator.report.figures import Figure
 from simulator.report.tables import NEGLIGIBLE, Table
 from simulator.report.view import View
-from simulator.report.wording import amount, count, listed, money, number, span_of_hours
+from simulator.report.wording import (
+    amount,
+    count,
+    listed,
+    money,
+    number,
+    percent,
+    span_of_hours,
+)
 
 __all__ = ["Chart", "Section", "sections", "unserved_notice"]
 
@@ -112,7 +120,7 @@ def _about(view: View) -> Section:
         facts=[*_hours(view), *_settings(view), *_sizes(view), ("Audit", verdict)],
         warning=verdict if failing else "",
         tables=[failing] if failing else [],
-        folded=[checks] if checks else [],
+        folded=[table for table in (checks, plans.windows(view.run)) if table],
     )
 
 
@@ -150,10 +158,17 @@ def _settings(view: View) -> list[tuple[str, str]]:
         facts.append(("Losses", "modelled" if network["losses"] else "not modelled"))
     if {"window_hours", "keep_hours"} <= set(horizon):
         facts.append(("Windows", _windows(view, horizon)))
+    if gap := plans.largest_gap(view.run):
+        facts.append(("Gap", _gap(*gap)))
     carbon = (settings.get("emissions") or {}).get("carbon_price_per_t")
     if carbon:
         facts.append(("Carbon price", f"{money(float(carbon))} {view.currency}/t"))
     return facts
+
+
+def _gap(gap: float, window: int, late: int) -> str:
+    ended = f"; time ran out in {count(late, 'window')}" if late else ""
+    return f"at most {percent(gap, 3)}, in window {window}{ended}"
 
 
 def _setting(view: View, section: str, name: str, attribute: str = "") -> Any:
@@ -202,6 +217,8 @@ def _totals(view: View) -> Section:
         ("Emissions", amount(emitted), "t CO\N{SUBSCRIPT TWO}"),
         ("Congestion rent", money(rent), view.currency),
     ]
+    if view.has("make_whole"):
+        shown.append(("Make-whole", money(float(view.values("make_whole").sum())), view.currency))
     avoidable = view.run.get("totals", {}).get("congestion_cost")
     if avoidable is not None:
         shown.append(("Congestion cost", money(avoidable), f"{view.currency} against no limits"))
@@ -381,7 +398,15 @@ def _stores(view: View) -> Section:
 def _reserves(view: View) -> Section | None:
     if not view.size("product"):
         return None
-    return Section("reserves", "Reserves", tables=[tables.reserves(view)])
+    text = [
+        "Price of a product: what one more MW asked for would cost in an hour.",
+        "A unit that provides some gives up output for it, or runs above its minimum.",
+        "Reserve is not checked against line limits.",
+    ]
+    label = f"Price of each product by {view.steps.unit}, {view.price_unit}, and what is short, MW"
+    chart = Chart("reserves", label, figures.reserve_prices(view), [tables.reserves(view)])
+    providers = tables.reserve_providers(view)
+    return Section("reserves", "Reserves", text, charts=[chart], folded=[providers])
 
 
 def _ramps(view: View) -> Section | None:
@@ -400,7 +425,14 @@ def _ramps(view: View) -> Section | None:
 def _units(view: View) -> Section:
     if not view.size("unit"):
         return Section("units", "Units", ["The case has no dispatchable units."])
-    return Section("units", "Units", tables=[tables.units(view)])
+    by_day = plans.make_whole_days(view)
+    text = [
+        "A make-whole amount is what a unit earns less in a day than it spends, running and starting."
+    ]  # fmt: skip
+    return Section(
+        "units", "Units", text if by_day else (), tables=[tables.units(view)],
+        folded=[by_day] if by_day else [],
+    )  # fmt: skip
 
 
 def _fleet(view: View) -> Section | None:
@@ -419,7 +451,14 @@ def _fleet(view: View) -> Section | None:
     if not running:
         return Section("fleet", FLEET, ["No unit was on in any hour."])
     label = f"Which units were on in every {view.steps.unit}, with their starts"
-    chart = Chart("fleet", label, figures.on_off(view, running), [tables.on_off(view, order)])
+    found = [plans.hours_by_reason(view, order), tables.on_off(view, order)]
+    if found[0]:
+        text.append(
+            "The colours tell hours that pay at the unit's bus from those in which something else "
+            "holds it on; point at an hour to read what."
+        )
+    shown = [table for table in found if table]
+    chart = Chart("fleet", label, figures.on_off(view, running), shown)
     return Section("fleet", FLEET, [*text, *_thinned(view)], charts=[chart])
 
 

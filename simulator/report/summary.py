@@ -13,6 +13,8 @@ from rich.console import Console
 from rich.markup import escape
 from rich.table import Table
 
+from simulator.report.plans import largest_gap
+
 __all__ = ["print_summary"]
 
 SHOWN = 5
@@ -21,15 +23,17 @@ NEGLIGIBLE = 1e-3
 
 
 def print_summary(dataset: xr.Dataset, record: Mapping[str, Any], console: Console) -> None:
-    """Print cost, energy, prices, congestion, curtailment and unserved load of a run."""
+    """Print cost, energy, starts, prices, congestion, curtailment and unserved load of a run."""
     _heading(dataset, record, console)
     for table in (
         _cost(dataset),
         _energy(dataset),
+        _starts(dataset),
         _buses(dataset),
         _hours(dataset),
         _lines(dataset),
         _curtailment(dataset),
+        _reserves(dataset),
     ):
         if table.row_count:
             console.print(table)
@@ -57,10 +61,24 @@ def _heading(dataset: xr.Dataset, record: Mapping[str, Any], console: Console) -
             f"congestion cost {totals['congestion_cost']:,.0f} {escape(dataset.attrs['currency'])}: "
             "total cost less that of the same run without line limits"
         )
+    if "make_whole" in totals:
+        console.print(
+            f"starts {totals['starts']:,.4g}, make-whole {totals['make_whole']:,.0f} "
+            f"{escape(dataset.attrs['currency'])}{_left_open(record)}"
+        )
     console.print(
         f"{counts['windows']} windows, {counts['lp_solves']} solves, {counts['line_rows']} line rows, "
         f"{counts['rebuilds']} rebuilds, {_audited(record)}"
     )
+
+
+def _left_open(record: Mapping[str, Any]) -> str:
+    """Say the largest gap to the best plan there may be, where on and off were searched for."""
+    if not (found := largest_gap(record)):
+        return ""
+    gap, window, late = found
+    ended = f"; [bold]time ran out in {late} of them[/bold]" if late else ""
+    return f", largest gap {gap:.3%} in window {window}{ended}"
 
 
 def _audited(record: Mapping[str, Any]) -> str:
@@ -114,6 +132,28 @@ def _energy(dataset: xr.Dataset) -> Table:
     sums = sums.groupby(level=0).sum().sort_values(ascending=False) * length
     for name, value in sums[sums > 0].items():
         table.add_row(escape(str(name)) or "(none)", f"{value:,.0f}", f"{value / sums.sum():.1%}")
+    return table
+
+
+def _starts(dataset: xr.Dataset) -> Table:
+    """Units with the largest make-whole amounts, then with the most starts."""
+    currency = dataset.attrs["currency"]
+    table = _table("Starts and make-whole amounts", "unit", "hours on", "starts", f"start {currency}",
+                   f"make-whole {currency}")  # fmt: skip
+    if "make_whole" not in dataset:
+        return table
+    frame = pd.DataFrame({
+        "hours": dataset["unit_on"].sum("time").to_series() * dataset.attrs["period_hours"],
+        "starts": dataset["unit_start"].sum("time").to_series(),
+        "cost": dataset["unit_start_cost"].sum("time").to_series(),
+        "short": dataset["make_whole"].sum("day").to_series(),
+    })  # fmt: skip
+    some = frame[(frame["starts"] > NEGLIGIBLE) | (frame["short"] > NEGLIGIBLE)]
+    for unit in some.sort_values(["short", "starts"], ascending=False)[: 2 * SHOWN].itertuples():
+        table.add_row(
+            escape(str(unit.Index)), f"{unit.hours:,.4g}", f"{unit.starts:.3g}", f"{unit.cost:,.0f}",
+            f"{unit.short:,.0f}",
+        )  # fmt: skip
     return table
 
 
@@ -188,4 +228,24 @@ def _curtailment(dataset: xr.Dataset) -> Table:
     could = dataset["renewable_available"].sum("time").to_series() * length
     for name, value in lost[lost > NEGLIGIBLE].sort_values(ascending=False)[: 2 * SHOWN].items():
         table.add_row(escape(str(name)), f"{value:,.0f}", f"{value / could[name]:.1%}")
+    return table
+
+
+def _reserves(dataset: xr.Dataset) -> Table:
+    currency, length = dataset.attrs["currency"], dataset.attrs["period_hours"]
+    table = _table(
+        "Reserves", "product", f"mean {currency}/MWh", "most", "hours short", "MWh short"
+    )
+    for name in dataset["product"].to_numpy():
+        price, short = (
+            dataset[variable].sel(product=name).to_numpy()
+            for variable in ("reserve_price", "reserve_shortage")
+        )
+        table.add_row(
+            escape(str(name)),
+            f"{price.mean():,.2f}",
+            f"{price.max():,.2f}",
+            f"{(short > NEGLIGIBLE).sum() * length:g}",
+            f"{short.sum() * length:,.1f}",
+        )
     return table

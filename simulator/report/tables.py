@@ -29,6 +29,7 @@ __all__ = [
     "line_loading",
     "on_off",
     "ramp_limited",
+    "reserve_providers",
     "reserves",
     "spread_by_bus",
     "stores",
@@ -410,6 +411,27 @@ def reserves(view: View) -> Table:
     return Table("Reserves", columns, rows)
 
 
+def reserve_providers(view: View) -> Table:
+    """Who provides each reserve product, the most first."""
+    provided = view.values("unit_reserve")
+    units, products = view.names("unit"), view.names("product")
+    mean, most = provided.mean(axis=0), provided.max(axis=0, initial=0.0)
+    hours = (provided > NEGLIGIBLE).sum(axis=0) * view.period_hours
+    share = 100 * mean / np.maximum(mean.sum(axis=0), NEGLIGIBLE)
+    rows = [
+        [
+            word(products[product]), word(units[unit]), figure(mean[unit, product], 1),
+            figure(most[unit, product], 1), figure(hours[unit, product], _hour_decimals(view)),
+            figure(share[unit, product], 1, share[unit, product]),
+        ]
+        for product in range(len(products))
+        for unit in ranked(mean[:, product])
+        if most[unit, product] > NEGLIGIBLE
+    ]  # fmt: skip
+    columns = words("Product", "Unit") + numbers("Mean MW", "Most MW", "Hours", "Share %")
+    return Table("Who provides reserve", columns, rows, sortable=True)
+
+
 def ramp_limited(view: View) -> Table:
     """Units that moved as fast as they can, the most hours first."""
     hours, names = view.values("ramp_limited_hours"), view.names("unit")
@@ -435,20 +457,27 @@ def units(view: View) -> Table:
     starts = view.values("unit_start").sum(axis=0)
     running, starting = (view.values(name).sum(axis=0) for name in ("unit_cost", "unit_start_cost"))
     emitted = view.values("emissions").sum(axis=0)
+    paid = _make_whole(view)
     digits = 0 if _whole(on) and _whole(starts) else 2
     rows = [
         [
             word(names[unit]), *(word(label[unit]) for label in labels), figure(energy[unit]),
             figure(on[unit], digits), figure(starts[unit], digits), cash(running[unit], running),
-            cash(starting[unit], starting), figure(emitted[unit]),
+            cash(starting[unit], starting), *(cash(each[unit], each) for each in paid),
+            figure(emitted[unit]),
         ]
         for unit in ranked(energy, on)
     ]  # fmt: skip
     columns = words("Unit", "Technology", "Fuel", "Bus") + numbers(
         "MWh", "Hours on", "Starts", f"Running cost {view.currency}", f"Start cost {view.currency}",
-        "t CO\N{SUBSCRIPT TWO}",
+        *(f"Make-whole {view.currency}" for _ in paid), "t CO\N{SUBSCRIPT TWO}",
     )  # fmt: skip
     return Table("Units", columns, rows, sortable=True)
+
+
+def _make_whole(view: View) -> list[Floats]:
+    """Return make-whole amounts by unit, as a list of one array, or of none if they are not known."""
+    return [view.values("make_whole").sum(axis=0)] if view.has("make_whole") else []
 
 
 def _whole(values: Floats) -> bool:

@@ -22,6 +22,8 @@ class Fault:
     check : the check that is there to find it; where : what its text must begin with
     also : the checks that cannot but find it too
     plant : does it to a dataset; changes : cells of the case; mode : commitment mode it is audited as
+    reserves, guarded : whether it is planted in the run with reserves, or in the one with a corridor,
+        contingencies and losses
     """
 
     check: str
@@ -30,6 +32,8 @@ class Fault:
     also: frozenset[str] = frozenset()
     changes: Changes = field(default_factory=dict)
     mode: str = "given"
+    reserves: bool = False
+    guarded: bool = False
 
 
 def add(dataset: xr.Dataset, variable: str, hour: int, amounts: Mapping[str, float]) -> None:
@@ -47,6 +51,8 @@ def taken_as(dataset: xr.Dataset, mode: str) -> None:
     if mode == "optimal":
         dataset["price_fixed"] = dataset["price"].copy(deep=True)
         dataset["price_relaxed"] = dataset["price"] + 1.0
+        dataset["reserve_price_fixed"] = dataset["reserve_price"].copy(deep=True)
+        dataset["reserve_price_relaxed"] = dataset["reserve_price"] + 1.0
         dataset["line_limit_side"] = np.sign(dataset["line_flow"]).astype(int)
 
 
@@ -155,7 +161,72 @@ def moved(giver: str, taker: str) -> Callable[[xr.Dataset], None]:
     return plant
 
 
+def provide(hour: int, product: str, **amounts: float) -> Callable[[xr.Dataset], None]:
+    """Return a plant that has units provide more of a product; "_" in a name stands for a blank."""
+
+    def plant(dataset: xr.Dataset) -> None:
+        for name, amount in amounts.items():
+            place = {"unit": name.replace("_", " "), "product": product}
+            dataset["unit_reserve"][hour].loc[place] += amount
+
+    return plant
+
+
+def less_short(dataset: xr.Dataset) -> None:
+    """Call less short than is, and pay for that only."""
+    add(dataset, "reserve_shortage", 12, {"spinning": -1.0})
+    add(dataset, "cost", 12, {"reserve_shortage": -60.0})
+
+
+def lower_corridor(dataset: xr.Dataset) -> None:
+    """Write down the limit that the changed case has."""
+    dataset["corridor_forward_limit"] *= 117.5 / 118
+
+
+def of_first_pair(variable: str, amount: float) -> Callable[[xr.Dataset], None]:
+    """Return a plant that changes a number of the first pair."""
+
+    def plant(dataset: xr.Dataset) -> None:
+        dataset[variable].to_numpy()[0] += amount
+
+    return plant
+
+
+def lower_emergency(dataset: xr.Dataset) -> None:
+    """Write down the emergency rating that the changed case has."""
+    dataset["pair_rating"] -= 0.5
+
+
 FAULTS: dict[str, Fault] = {
+    "loss": Fault(
+        "losses", f'line "H-M" {at(3)}', adding("line_loss", 3, H__M=0.1), guarded=True
+    ),
+    "losses booked as congestion": Fault(
+        "loss price", f'bus "Hill" {at(3)}', moved("price_loss", "price_congestion"),
+        also=frozenset({"congestion price"}),
+    ),
+    "limit of a corridor": Fault(
+        "corridor inputs", 'corridor "to town" (forward limit) ' + at(3),
+        adding("corridor_forward_limit", 3, to_town=9.0), guarded=True,
+    ),
+    "flow of a corridor": Fault(
+        "corridor flows", f'corridor "to town" {at(3)}', adding("corridor_flow", 3, to_town=1.0),
+        guarded=True,
+    ),
+    "flow beyond a corridor's lower limit": Fault(
+        "corridor limits", 'corridor "to town" (forward) at', lower_corridor,
+        also=frozenset({"shadow prices"}), changes={("corridors", "to town", "forward_mw"): 117.5},
+        guarded=True,
+    ),
+    "flow after a contingency": Fault(
+        "pairs", 'line "H-T after loss of storm" (flow)', of_first_pair("pair_flow", 1.0),
+        also=frozenset({"shadow prices", "congestion rent"}), guarded=True,
+    ),
+    "flow beyond a lower emergency rating": Fault(
+        "security", 'line "H-T" (after loss of storm) at', lower_emergency,
+        also=frozenset({"shadow prices"}), changes={("lines", "H-T", "emergency_rating_mw"): 109.5},
+        guarded=True,
+    ),
     "flow": Fault("flows", f'line "H-T" {at(3)}', adding("line_flow", 3, H__T=1.0)),
     "flow on a line out": Fault("flows", f'line "old" {at(11)}', adding("line_flow", 11, old=1.0)),
     "output": Fault(
@@ -218,7 +289,9 @@ FAULTS: dict[str, Fault] = {
     "half on": Fault(
         "switching", f'unit "spare" (on or off) {at(5)}', half_on, mode="optimal"
     ),
-    "on while out": Fault("outages", f'unit "spare" {at(10)}', on_while_out, mode="optimal"),
+    "on while out": Fault(
+        "outages", f'unit "spare" {at(10)}', on_while_out, mode="optimal", also=frozenset({"reasons"}),
+    ),
     "off schedule": Fault(
         "schedule", f'unit "gas twin" {at(0)}',
         changes={("units", "gas twin", "on_profile"): "peaker on"},
@@ -273,15 +346,15 @@ FAULTS: dict[str, Fault] = {
         moved("price_energy", "price_congestion"), also=frozenset({"congestion price"}),
     ),
     "congestion booked as losses": Fault(
-        "congestion price", f'bus "Hill" {at(3)}', moved("price_congestion", "price_loss")
+        "congestion price", f'bus "Hill" {at(3)}', moved("price_congestion", "price_loss"),
+        also=frozenset({"loss price"}),
     ),
     "price on a slack line": Fault(
         "shadow prices", f'line "H-T" (off its limit) {at(12)}', slack_shadow_price,
         also=frozenset({"congestion price", "rent identity"}),
     ),
     "rent": Fault(
-        "congestion rent", f'line "H-M" {at(3)}', adding("congestion_rent", 3, H__M=1.0),
-        also=frozenset({"rent identity"}),
+        "congestion rent", f'line "H-M" {at(3)}', adding("congestion_rent", 3, H__M=1.0)
     ),
     "congestion hours": Fault(
         "congestion hours", 'line "H-M" (congestion hours)', counting("congestion_hours", "H-M", 1.0)
@@ -301,7 +374,7 @@ FAULTS: dict[str, Fault] = {
     ),
     "price below what spilling costs": Fault(
         "surplus prices", f'bus "Port" {at(12)}', shifted_price(12, ("Port",), -333.0),
-        also=frozenset({"unit prices", "tie prices"}),
+        also=frozenset({"unit prices", "tie prices", "reasons"}),
     ),
     "prices apart across a tie": Fault(
         "tie prices", f'tie "cable" (forward) {at(9)}', shifted_price(9, ("Port",), -0.01)
@@ -314,10 +387,102 @@ FAULTS: dict[str, Fault] = {
         "running cost", f'unit "engine" {at(12)}', adding("unit_cost", 12, engine=1.0)
     ),
     "a hot start booked as cold": Fault(
-        "start cost", f'unit "peaker" {at(21)}', adding("unit_start_cost", 21, peaker=250.0)
+        "start cost", f'unit "peaker" {at(21)}', adding("unit_start_cost", 21, peaker=250.0),
+        also=frozenset({"make-whole"}),
     ),
     "cost that does not add up": Fault(
         "cost", 'component "unserved" ' + at(12), adding("cost", 12, unserved=1.0)
+    ),
+    "make-whole amount": Fault(
+        "make-whole", f'unit "peaker" {at(0)}', adding("make_whole", 0, peaker=1.0)
+    ),
+    "paid by congestion, told as paid without": Fault(
+        "reasons", f'unit "gas" {at(2)}', adding("unit_reason", 2, gas=-1)
+    ),
+    "paid without congestion, told as paid by it": Fault(
+        "reasons", f'unit "gas" {at(9)}', adding("unit_reason", 9, gas=1)
+    ),
+    "out of the money, told as in it": Fault(
+        "reasons", f'unit "coal" {at(2)}', adding("unit_reason", 2, coal=-3)
+    ),
+    "in the money, told as on schedule": Fault(
+        "reasons", f'unit "engine" {at(16)}', adding("unit_reason", 16, engine=3)
+    ),
+    "on, told as off": Fault("reasons", f'unit "gas" {at(9)}', adding("unit_reason", 9, gas=-2)),
+    "idle, told as in the money": Fault(
+        "reasons", f'unit "spare" {at(2)}', adding("unit_reason", 2, spare=1)
+    ),
+    "must run that need not": Fault(
+        "reasons", f'unit "coal" {at(2)}', adding("unit_reason", 2, coal=1)
+    ),
+    "reserve that is not": Fault(
+        "reasons", f'unit "coal" {at(2)}', adding("unit_reason", 2, coal=-1)
+    ),
+    "minimum up time long past": Fault(
+        "reasons", f'unit "coal" {at(2)}', adding("unit_reason", 2, coal=2)
+    ),
+    "ramp that does not bind": Fault(
+        "reasons", f'unit "peaker" {at(15)}', adding("unit_reason", 15, peaker=3)
+    ),
+    "kept on for nothing": Fault(
+        "reasons", f'unit "peaker" {at(15)}', adding("unit_reason", 15, peaker=4)
+    ),
+    "no reason where one holds": Fault(
+        "reasons", f'unit "coal" {at(2)}', adding("unit_reason", 2, coal=5),
+        changes={("units", "coal", "must_run"): "true"},
+    ),
+    "reserve asked for": Fault(
+        "inputs", 'product "lowering" (reserve requirement) ' + at(3), reserves=True,
+        plant=adding("reserve_requirement", 3, lowering=-1.0),
+    ),
+    "less short than is": Fault(
+        "reserve requirement", 'product "spinning" (provided and short) ' + at(12), less_short,
+        reserves=True,
+    ),
+    "short of nothing": Fault(
+        "reserve requirement", 'product "lowering" (short) ' + at(3), reserves=True,
+        plant=adding("reserve_shortage", 3, lowering=1.0),
+        also=frozenset({"cost", "reserve prices"}),
+    ),
+    "reserve above what is available": Fault(
+        "reserve room", f'unit "gas" (headroom) {at(12)}', provide(12, "spinning", gas=1.0),
+        reserves=True, also=frozenset({"reserve requirement"}),
+    ),
+    "downward reserve at minimum output": Fault(
+        "reserve room", f'unit "engine" (footroom) {at(3)}', provide(3, "lowering", engine=1.0),
+        reserves=True,
+    ),
+    "reserve from another zone": Fault(
+        "reserve response", 'unit "engine" (of "spinning") ' + at(3),
+        provide(3, "spinning", engine=1.0), reserves=True,
+    ),
+    "reserve slower than its response time": Fault(
+        "reserve response", 'unit "coal" (of "spinning") at', reserves=True,
+        changes={("reserves", "spinning", "response_minutes"): 29},
+    ),
+    "reserve cheaper than its shortage": Fault(
+        "reserve prices", 'product "spinning" (while short) ' + at(12), reserves=True,
+        plant=adding("reserve_price", 12, spinning=-1.0), also=frozenset({"unit prices"}),
+    ),
+    "reserve dearer than its shortage": Fault(
+        "reserve prices", 'product "spinning" (shortage price) ' + at(12), reserves=True,
+        also=frozenset({"cost"}), changes={("reserves", "spinning", "shortage_per_mwh"): 59},
+    ),
+    "a price of reserve of which there is more": Fault(
+        "reserve prices", 'unit "', reserves=True, plant=adding("reserve_price", 3, spinning=0.01),
+        also=frozenset({"unit prices"}),
+    ),
+    "a negative price of reserve": Fault(
+        "reserve prices", 'product "lowering" (sign) ' + at(3), reserves=True,
+        plant=adding("reserve_price", 3, lowering=-0.01),
+    ),
+    "price beside cost and reserve price": Fault(
+        "unit prices", f'unit "gas" {at(12)}', shifted_price(12, WEST, 0.01), reserves=True,
+        also=frozenset({"tie prices"}),
+    ),
+    "shortage that costs more": Fault(
+        "cost", 'component "reserve_shortage" ' + at(12), reserves=True,
+        plant=lambda dataset: add(dataset, "cost", 12, {"reserve_shortage": 1.0}),
     ),
     "emissions": Fault("emissions", f'unit "gas" {at(9)}', adding("emissions", 9, gas=0.1)),
 }  # fmt: skip

@@ -1,7 +1,7 @@
 """The case whose good runs faults are planted in: two islands that a tie joins, a day of hours.
 
-`town_case(folder, changes)` writes it, with cells changed: {("units", "peaker", "min_up_h"): 4}. So a
-good dataset can also be audited against a case that asks for something else.
+`town_case(folder, changes)` writes it, with cells changed: {("units", "peaker", "min_up_h"): 4}, and with
+reserves if asked. So a good dataset can also be audited against a case that asks for something else.
 """
 
 from collections.abc import Mapping
@@ -20,12 +20,14 @@ HOURS = 24
 OUT = "2027-03-01T10:00", "2027-03-01T13:00"
 
 KEYS = {
+    "corridors": "corridor",
     "lines": "line", "dc_ties": "tie", "units": "unit", "renewables": "plant", "storage": "store",
-    "loads": "load", "outages": "name",
+    "reserves": "product", "loads": "load", "outages": "name",
 }  # fmt: skip
 
 TABLES: dict[str, list[dict[str, Any]]] = {
-    "buses": [{"bus": bus} for bus in ("Hill", "Mill", "Town", "Port")],
+    "buses": [{"bus": bus, "zone": "port" if bus == "Port" else "west"}
+              for bus in ("Hill", "Mill", "Town", "Port")],
     "lines": [
         {"line": "H-M", "from_bus": "Hill", "to_bus": "Mill", "reactance_pu": 0.1, "rating_mw": 55},
         {"line": "H-T", "from_bus": "Hill", "to_bus": "Town", "reactance_pu": 0.2, "rating_mw": 200,
@@ -88,6 +90,28 @@ TABLES: dict[str, list[dict[str, Any]]] = {
 }  # fmt: skip
 
 
+RESERVES: list[dict[str, Any]] = [
+    {"product": "spinning", "direction": "up", "zone": "west", "percent_of_load": 12,
+     "response_minutes": 30, "shortage_per_mwh": 60},
+    {"product": "lowering", "direction": "down", "requirement_mw": 14,
+     "requirement_profile": "demand", "response_minutes": 15},
+]  # fmt: skip
+"""Products that are short at noon, when the spare is out, and cost something in the hours before."""
+
+
+GUARDED: dict[str, list[dict[str, Any]]] = {
+    "corridors": [{"corridor": "to town", "forward_mw": 118, "reverse_mw": 200, "limit_profile": "room"}],
+    "corridor_lines": [
+        {"corridor": "to town", "line": line} for line in ("H-T", "M-T", "old")
+    ],
+    "contingencies": [
+        {"contingency": "storm", "line": "M-T"}, {"contingency": "storm", "line": "old"},
+        {"contingency": "old", "line": "old"}, {"contingency": "H-M", "line": "H-M"},
+    ],
+}  # fmt: skip
+"""A corridor and contingencies that cost something in some hours; `old` is out in others."""
+
+
 def profiles() -> dict[str, list[float]]:
     hour = np.arange(HOURS)
     found = {
@@ -95,18 +119,28 @@ def profiles() -> dict[str, list[float]]:
         "port": 0.6 + 0.4 * np.sin((hour - 10) * np.pi / 12),
         "wind": 0.45 + 0.4 * np.cos((hour - 3) * np.pi / 9),
         "gas price": 1 + 0.02 * np.cos(hour),
+        "room": 1 + 0.4 * np.cos((hour - 6) * np.pi / 12),
         "coal on": np.ones(HOURS),
         "peaker on": ((hour > 12) & (hour < 19)) | (hour > 20),
     }
     return {name: np.asarray(values, float).round(4).tolist() for name, values in found.items()}
 
 
-def town_case(folder: Path, changes: Changes | None = None) -> Case:
-    """Write the case with some cells changed, and read it."""
-    tables = deepcopy(TABLES)
+def town_case(
+    folder: Path, changes: Changes | None = None, *, reserves: bool = False, guarded: bool = False
+) -> Case:
+    """Write the case with some cells changed, and read it.
+
+    reserves : with reserve products; guarded : with a corridor, contingencies and losses
+    """
+    tables = deepcopy(TABLES | ({"reserves": RESERVES} if reserves else {}))
+    if guarded:
+        tables |= deepcopy(GUARDED)
+        for row in tables["lines"]:
+            row |= {"resistance_pu": row["reactance_pu"] / 10, "emergency_rating_mw": 110}
     for (table, name, column), value in (changes or {}).items():
         row = next(row for row in tables[table] if row[KEYS[table]] == name)
         row[column] = value
     settings = {"penalties": {"unserved": 900.0, "surplus": 200.0}, "time_zone": "Europe/Dublin",
-                "emissions": {"carbon_price_per_t": 20.0}}  # fmt: skip
+                "network": {"losses": guarded}, "emissions": {"carbon_price_per_t": 20.0}}  # fmt: skip
     return case_of(folder, settings, periods=HOURS, profiles=profiles(), **tables)

@@ -15,10 +15,20 @@ def failed(checks):
     return {check.name: check.where for check in checks if not check.passed}
 
 
+def fixtures_of(fault):
+    if fault.guarded:
+        return "guarded_town", "guarded"
+    return ("ready_town", "ready") if fault.reserves else ("town", "dataset")
+
+
 @pytest.mark.parametrize("name", FAULTS)
-def test_a_fault_is_found(name, town, dataset, tmp_path):
+def test_a_fault_is_found(name, request, tmp_path):
     fault = FAULTS[name]
-    case = town_case(tmp_path / "case", fault.changes) if fault.changes else town
+    case, dataset = (request.getfixturevalue(each) for each in fixtures_of(fault))
+    if fault.changes:
+        case = town_case(
+            tmp_path / "case", fault.changes, reserves=fault.reserves, guarded=fault.guarded
+        )
     taken_as(dataset, fault.mode)
     fault.plant(dataset)
     found = failed(audit(case, dataset))
@@ -26,24 +36,34 @@ def test_a_fault_is_found(name, town, dataset, tmp_path):
     assert found[fault.check].startswith(fault.where)
 
 
-def test_the_run_is_good_before_a_fault_is_planted(town, dataset):
+def test_the_runs_are_good_before_a_fault_is_planted(
+    town, dataset, ready_town, ready, guarded_town, guarded
+):
     for mode in ("given", "optimal", "relaxed"):
-        taken_as(dataset, mode)
-        assert not failed(audit(town, dataset))
+        for case, results in ((town, dataset), (ready_town, ready), (guarded_town, guarded)):
+            taken_as(results, mode)
+            assert not failed(audit(case, results))
 
 
-def test_no_check_is_without_a_fault(town, dataset):
+def test_no_check_is_without_a_fault(ready_town, ready, guarded_town, guarded):
     named = {fault.check for fault in FAULTS.values()} | {"numbers"}
-    checks = audit(town, dataset)
-    taken_as(dataset, "optimal")
-    assert {check.name for check in checks + audit(town, dataset)} == named
+    checks = audit(ready_town, ready) + audit(guarded_town, guarded)
+    taken_as(ready, "optimal")
+    assert {check.name for check in checks + audit(ready_town, ready)} == named
+
+
+def test_without_products_nothing_is_said_of_reserves(town, dataset):
+    assert not [check.name for check in audit(town, dataset) if "reserve" in check.name]
 
 
 @pytest.mark.parametrize("variable", [name for name in DIMENSIONS if name != "window"])
-def test_a_missing_number_is_found(variable, town, dataset):
+def test_a_missing_number_is_found(variable, ready_town, ready, guarded_town, guarded):
+    case, dataset = (ready_town, ready) if ready[variable].size else (guarded_town, guarded)
+    if dataset[variable].dtype.kind == "i":
+        dataset[variable] = dataset[variable].astype(float)
     values = dataset[variable].to_numpy()
     values[(-1,) * values.ndim] = np.nan
-    checks = audit(town, dataset)
+    checks = audit(case, dataset)
     found = failed(checks)
     assert variable.replace("_", " ") in found["numbers"]
     assert len(found) > 1

@@ -25,16 +25,14 @@ REFUSED = {
     "no periods": (lambda d: d.isel(time=[]), "dimension time"),
     "another length of period": (lambda d: d.assign_attrs(period_hours=0.5), "period_hours"),
     "another mode": (lambda d: d.assign_attrs(commitment="guessed"), "commitment"),
-    "limits after contingencies": (lambda d: d.assign_attrs(limits="secure"), "limits"),
-    "reserves": (lambda d: d.drop_vars("product").assign_coords(product=["spin"]), "product"),
+    "limits of another kind": (lambda d: d.assign_attrs(limits="after contingencies"), "limits"),
+    "another product": (lambda d: d.drop_dims("product").assign_coords(product=["spin"]), "spin"),
 }  # fmt: skip
 
 
 @pytest.mark.parametrize("name", REFUSED)
 def test_what_does_not_fit_the_case_is_refused(name, town, dataset):
     change, subject = REFUSED[name]
-    if name == "reserves":
-        dataset = dataset.drop_vars(["reserve_price", "reserve_shortage"])
     with pytest.raises(AuditError, match=subject):
         audit(town, change(dataset))
 

@@ -7,6 +7,7 @@ from tests.support import case_texts, problems_of, write_case
 
 UNITS, OFFERS, HEAT_RATES = "fleet/units.csv", "fleet/offers.csv", "fleet/heat_rates.csv"
 FUELS, OUTAGES, BUSES = "fleet/fuels.csv", "calendar/outages.csv", "network/buses.csv"
+RESERVES = "fleet/reserves.csv"
 
 
 def only(folder, files=None, cells=None):
@@ -114,6 +115,14 @@ def test_an_outage_names_an_element_of_its_kind(tmp_path, kind, name):
     assert problem.remedy == f'did you mean "{name}"?'
 
 
+def test_a_zone_called_all_leaves_it_open_what_all_means(tmp_path):
+    cells = {(BUSES, 2, "zone"): "all"}
+    problem = only(tmp_path / "a", cells=cells)
+    assert (problem.path, problem.row, problem.column) == (RESERVES, 2, "zone")
+    assert "as it means every bus" in problem.rule
+    assert problems_of(write_case(tmp_path / "b", {RESERVES: None}, cells)) == ()
+
+
 def autumn_outage(folder, start, until):
     text = f"kind,name,from,until\nunit,gas 2,{start},{until}\n"
     return write_case(folder, {OUTAGES: text}, start="2026-10-24T00:00", hours=72)
@@ -194,6 +203,19 @@ def test_operation_cost_beside_offers_is_odd(tmp_path):
     (warning,) = warnings_of(tmp_path, cells={(UNITS, 3, "variable_om_per_mwh"): "3"})
     assert (warning.path, warning.row, warning.column) == (UNITS, 3, "variable_om_per_mwh")
     assert "offers are complete costs" in warning.rule
+
+
+def test_a_reserve_that_asks_for_nothing_is_odd(tmp_path):
+    (warning,) = warnings_of(tmp_path, cells={(RESERVES, 3, "requirement_mw"): "0"})
+    assert (warning.path, warning.row, warning.column) == (RESERVES, 3, "requirement_mw")
+    assert "asks for nothing" in warning.rule
+
+
+def test_a_reserve_in_a_zone_without_units_is_odd(tmp_path):
+    buses = case_texts()[BUSES] + "Eastfen,east,,,\n"
+    warnings = warnings_of(tmp_path, {BUSES: buses}, {(RESERVES, 3, "zone"): "east"})
+    assert [(w.path, w.row, w.column) for w in warnings] == [(RESERVES, 3, "zone")]
+    assert "has no unit" in warnings[0].rule
 
 
 @pytest.mark.parametrize(

@@ -18,6 +18,7 @@ BARE = {
     "fleet/fuels.csv": "fuel,price_per_gj,co2_t_per_gj\nf,4,0.05\n",
     "fleet/renewables.csv": "plant,bus,capacity_mw,profile\np,a,10,wind\n",
     "fleet/storage.csv": "store,bus,charge_mw,energy_mwh\ns,a,10,40\n",
+    "fleet/reserves.csv": "product,direction\nr,up\n",
     "demand/loads.csv": "load,bus,profile\nd,b,demand\n",
     "calendar/outages.csv": "kind,name,from,until\nline,l,2027-01-11,2027-01-12\n",
 }
@@ -52,6 +53,10 @@ EXPECTED = {
         "discharge_efficiency": 1.0, "loss_percent_per_h": 0.0, "initial_mwh": 20.0, "final_mwh": 20.0,
         "throughput_cost_per_mwh": 0.0, "end_value_per_mwh": 0.0,
     },
+    "reserves": {
+        "direction": "up", "zone": "all", "requirement_mw": 0.0, "requirement_profile": "",
+        "percent_of_load": 0.0, "response_minutes": np.inf, "shortage_per_mwh": 3500.0,
+    },
     "loads": {"bus": "b", "profile": "demand", "scale_mw": 1.0, "unserved_per_mwh": 7000.0},
 }  # fmt: skip
 
@@ -71,7 +76,8 @@ def test_tables_are_indexed_by_name(bare):
     assert names == {
         "buses": "bus", "lines": "line", "dc_ties": "tie", "corridors": "corridor",
         "corridor_lines": None, "contingencies": None, "units": "unit", "blocks": None, "fuels": "fuel",
-        "renewables": "plant", "storage": "store", "loads": "load", "outages": None,
+        "renewables": "plant", "storage": "store", "reserves": "product", "loads": "load",
+        "outages": None,
     }  # fmt: skip
 
 
@@ -86,6 +92,7 @@ def test_defaults_that_follow_other_cells(tmp_path):
     assert case.storage.at["cells", "discharge_mw"] == 15.0
     assert case.storage.at["cells", "final_mwh"] == 30.0
     assert case.loads["unserved_per_mwh"].tolist() == [5000.0, 8000.0]
+    assert case.reserves["shortage_per_mwh"].tolist() == [2500.0, 400.0]
 
 
 def test_a_slow_unit_starts_at_its_minimum(tmp_path):
@@ -125,7 +132,7 @@ def test_outages_are_instants_in_utc(bare):
 def test_profiles_stand_on_the_time_axis(tmp_path):
     case = small_case(tmp_path)
     assert (case.profiles.index == case.time.periods).all()
-    assert set(case.profiles) == {"demand", "wind", "warmth", "gas 2 on", "gas price"}
+    assert set(case.profiles) == {"demand", "wind", "warmth", "watch", "gas 2 on", "gas price"}
     assert (case.profiles.dtypes == "float64").all()
     text = case_texts()["hourly/demand.csv"].splitlines()[17]
     assert case.profiles["demand"].iloc[16] == float(text.split(",")[1])

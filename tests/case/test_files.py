@@ -40,7 +40,8 @@ def test_an_empty_folder_misses_every_required_file(tmp_path):
 
 
 OPTIONAL = [
-    "network/dc_ties.csv", "fleet/renewables.csv", "fleet/storage.csv", "calendar/outages.csv",
+    "network/dc_ties.csv", "fleet/renewables.csv", "fleet/storage.csv", "fleet/reserves.csv",
+    "calendar/outages.csv",
 ]  # fmt: skip
 
 
@@ -216,18 +217,6 @@ def test_an_unknown_file_gets_a_suggestion(tmp_path, path, remedy):
 def test_plain_text_scripts_and_hidden_files_are_let_be(tmp_path):
     names = ["NOTICE.md", "notes.txt", "LICENSE", "make.py", ".hidden", "network/.~lock.lines.csv#"]
     assert problems_of(write_case(tmp_path, dict.fromkeys(names, "x"))) == ()
-
-
-UNREAD = {
-    "fleet/reserves.csv": "reserves",
-}
-
-
-@pytest.mark.parametrize("path", UNREAD)
-def test_a_file_that_this_version_does_not_read_is_refused(tmp_path, path):
-    (problem,) = problems_of(write_case(tmp_path, {path: "x\n"}))
-    assert problem.path == path
-    assert f"leaves out {UNREAD[path]}, its numbers would be wrong" in problem.rule
 
 
 def test_a_file_that_cannot_be_read_is_told(tmp_path, monkeypatch):

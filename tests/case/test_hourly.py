@@ -70,6 +70,7 @@ def test_a_column_without_any_number_is_told_in_six_lines(tmp_path):
         (WEATHER, "gas 2 on", "0.5", 'unit "gas 2"'),
         (WEATHER, "warmth", "-1", 'line "N-M"'),
         (WEATHER, "gas price", "-1", 'fuel "gas"'),
+        (WEATHER, "watch", "-1", 'product "spinning"'),
     ],
 )
 def test_a_value_that_its_use_does_not_allow_is_told(tmp_path, path, column, value, user):

@@ -78,8 +78,8 @@ def case(tmp_path_factory):
         "hourly/load.csv": profile.to_csv(index=False),
     }
     unused = ["network/dc_ties.csv", "fleet/offers.csv", "fleet/heat_rates.csv", "fleet/fuels.csv"]
-    unused += ["fleet/renewables.csv", "fleet/storage.csv", "calendar/outages.csv"]
-    unused += ["hourly/demand.csv", "hourly/weather.csv"]
+    unused += ["fleet/renewables.csv", "fleet/storage.csv", "fleet/reserves.csv"]
+    unused += ["calendar/outages.csv", "hourly/demand.csv", "hourly/weather.csv"]
     return read_case(write_case(tmp_path_factory.mktemp("rts"), {**dict.fromkeys(unused), **files}))
 
 

@@ -10,7 +10,7 @@ UNITS, OFFERS, HEAT_RATES = "fleet/units.csv", "fleet/offers.csv", "fleet/heat_r
 FUELS, PLANTS, STORES = "fleet/fuels.csv", "fleet/renewables.csv", "fleet/storage.csv"
 CORRIDORS, MEMBERS = "network/corridors.csv", "network/corridor_lines.csv"
 CONTINGENCIES = "network/contingencies.csv"
-LOADS, OUTAGES = "demand/loads.csv", "calendar/outages.csv"
+RESERVES, LOADS, OUTAGES = "fleet/reserves.csv", "demand/loads.csv", "calendar/outages.csv"
 
 NUMBER = "must be a number"
 SIGN = "must be at least 0"
@@ -107,6 +107,16 @@ VALUES = [
     (STORES, 2, "initial_mwh", "-1", 'store "cells"', SIGN),
     (STORES, 2, "final_mwh", "60.5", 'store "cells"', "must be at most energy_mwh"),
     (STORES, 2, "throughput_cost_per_mwh", "-1", 'store "cells"', SIGN),
+    (RESERVES, 2, "direction", "upward", 'product "spinning"', "must be up or down"),
+    (RESERVES, 3, "direction", "", 'product "lowering"', "must be filled in"),
+    (RESERVES, 3, "zone", "sought", 'product "lowering"', 'did you mean "south"?'),
+    (RESERVES, 3, "zone", "Midfen", 'product "lowering"', "must be all, or name a zone"),
+    (RESERVES, 2, "requirement_mw", "-1", 'product "spinning"', SIGN),
+    (RESERVES, 2, "requirement_profile", "wacht", 'product "spinning"', 'did you mean "watch"?'),
+    (RESERVES, 2, "percent_of_load", "-3", 'product "spinning"', "must be from 0 to 100"),
+    (RESERVES, 2, "percent_of_load", "101", 'product "spinning"', "must be from 0 to 100"),
+    (RESERVES, 2, "response_minutes", "0", 'product "spinning"', "must be greater than 0"),
+    (RESERVES, 3, "shortage_per_mwh", "-1", 'product "lowering"', SIGN),
     (LOADS, 3, "bus", "Southfens", 'load "works"', 'did you mean "Southfen"?'),
     (LOADS, 3, "profile", "demnd", 'load "works"', 'did you mean "demand"?'),
     (LOADS, 3, "unserved_per_mwh", "-1", 'load "works"', SIGN),
@@ -131,7 +141,7 @@ def test_one_broken_cell_is_one_problem(tmp_path, path, row, column, value, subj
 KEYS = [
     (CORRIDORS, "corridor"),
     (BUSES, "bus"), (LINES, "line"), (TIES, "tie"), (UNITS, "unit"), (FUELS, "fuel"),
-    (PLANTS, "plant"), (STORES, "store"), (LOADS, "load"),
+    (PLANTS, "plant"), (STORES, "store"), (RESERVES, "product"), (LOADS, "load"),
 ]  # fmt: skip
 
 
@@ -160,6 +170,8 @@ ALLOWED = [
     (STORES, 2, "initial_mwh", "0"),
     (PLANTS, 2, "offer_per_mwh", "12"),
     (TIES, 2, "reverse_mw", "0"),
+    (RESERVES, 2, "zone", "all"),
+    (RESERVES, 2, "requirement_profile", "gas 2 on"),
 ]
 
 
@@ -169,7 +181,7 @@ def test_what_the_format_allows_is_read(tmp_path, path, row, column, value):
 
 
 @pytest.mark.parametrize(
-    "path", [BUSES, LINES, TIES, CORRIDORS, UNITS, FUELS, PLANTS, STORES, LOADS]
+    "path", [BUSES, LINES, TIES, CORRIDORS, UNITS, FUELS, PLANTS, STORES, RESERVES, LOADS]
 )
 def test_a_repeated_name_names_both_rows(tmp_path, path):
     files = case_texts() | NETWORK_LIMITS

@@ -30,6 +30,7 @@ PATHS = {
     "fuels": "fleet/fuels.csv",
     "renewables": "fleet/renewables.csv",
     "storage": "fleet/storage.csv",
+    "reserves": "fleet/reserves.csv",
     "loads": "demand/loads.csv",
     "outages": "calendar/outages.csv",
 }

@@ -63,6 +63,7 @@ def drawn(seed: int) -> dict[str, Any]:
     }
     loads = _loads(draw, capacity)
     outages = _outages(draw, units, elements)
+    reserves = [_reserve(draw, f"product {n}", capacity) for n in range(draw.random.integers(0, 4))]
     return {
         "settings": {
             "penalties": {"unserved": draw.between(500, 10000), "surplus": draw.between(50, 1000)},
@@ -70,7 +71,10 @@ def drawn(seed: int) -> dict[str, Any]:
         },
         "minutes": draw.minutes,
         "periods": draw.periods,
-        "buses": [{"bus": bus} for bus in draw.buses],
+        "buses": [
+            {"bus": bus, "zone": "odd" if place % 2 else "even"}
+            for place, bus in enumerate(draw.buses)
+        ],
         "units": units,
         "offers": [row for _, rows in curves for row in rows if "cost_per_mwh" in row],
         "heat_rates": [row for _, rows in curves for row in rows if "cost_per_mwh" not in row],
@@ -80,6 +84,7 @@ def drawn(seed: int) -> dict[str, Any]:
             {"fuel": "coal", "price_per_gj": 2.5, "co2_t_per_gj": 0.094},
         ],
         "loads": loads,
+        "reserves": reserves,
         "outages": outages,
         "profiles": draw.profiles,
         **elements,
@@ -258,6 +263,18 @@ def _loads(draw: Draw, capacity: float) -> list[Row]:
         profile = draw.profile("given shape", 0, 1)
         rows.append({"load": "given", "bus": draw.some_bus(), "scale_mw": -15, "profile": profile})
     return rows
+
+
+def _reserve(draw: Draw, name: str, capacity: float) -> Row:
+    """A product that asks for up to a fifth of all capacity and a little of the load."""
+    return {
+        "product": name, "direction": str(draw.random.choice(["up", "down"])),
+        "zone": str(draw.random.choice(["all", "odd", "even"])),
+        "requirement_mw": draw.maybe(0.7, 0, capacity / 5),
+        "requirement_profile": draw.profile(f"{name} times", 0, 1.5) if draw.chance(0.5) else None,
+        "percent_of_load": draw.maybe(0.6, 0, 15), "response_minutes": draw.maybe(0.6, 5, 60),
+        "shortage_per_mwh": draw.maybe(0.7, 5, 2000),
+    }  # fmt: skip
 
 
 def _outages(draw: Draw, units: list[Row], elements: dict[str, list[Row]]) -> list[Row]:

@@ -12,8 +12,8 @@ def small(folder, unit, *, periods=4, load=20.0, **more):
     return case_of(
         folder, periods=periods,
         buses=[{"bus": "b"}],
-        units=[{"unit": "slow", "bus": "b", "max_output_mw": 400, **unit},
-               {"unit": "quick", "bus": "b", "max_output_mw": 500}],
+        units=[{"unit": "quick", "bus": "b", "max_output_mw": 500},
+               {"unit": "slow", "bus": "b", "max_output_mw": 400, **unit}],
         offers=[{"unit": "slow", "up_to_mw": 400, "cost_per_mwh": 30},
                 {"unit": "quick", "up_to_mw": 500, "cost_per_mwh": 50}],
         loads=[{"load": "l", "bus": "b", "mw": load}],

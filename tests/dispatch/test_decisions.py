@@ -1,5 +1,6 @@
 """On/off decisions against brute force over all plans, across seams of windows, and out of time."""
 
+import dataclasses
 from itertools import product
 
 import numpy as np
@@ -7,7 +8,6 @@ import pytest
 
 from simulator.case import Case
 from simulator.dispatch import search
-from simulator.dispatch.solver import Decision
 from simulator.horizon import plan_run, run
 from simulator.results import run_record, to_dataset
 from tests.dispatch.building import Row, case_of
@@ -159,7 +159,7 @@ def test_out_of_time_the_best_plan_is_used_and_its_gap_is_told(tmp_path, monkeyp
     searched, clock = search.Search._run, iter(range(0, 10**6, 1000))
 
     def poor_bound(self, gap, start, seconds):
-        return Decision(searched(self, gap, start, seconds).values, 0.9 * best)
+        return dataclasses.replace(searched(self, gap, start, seconds), bound=0.9 * best)
 
     monkeypatch.setattr(search.Search, "_run", poor_bound)
     monkeypatch.setattr(search.time, "perf_counter", lambda: float(next(clock)))

@@ -15,6 +15,7 @@ MONEY = {
     "offers": ["cost_per_mwh"], "fuels": ["price_per_gj"], "renewables": ["offer_per_mwh"],
     "units": ["no_load_cost_per_h", "variable_om_per_mwh", "start_cost", "cold_start_cost"],
     "storage": ["throughput_cost_per_mwh", "end_value_per_mwh"], "loads": ["unserved_per_mwh"],
+    "reserves": ["shortage_per_mwh"],
 }  # fmt: skip
 NAMED = {
     "buses": "bus", "lines": "line", "dc_ties": "tie", "units": "unit", "offers": "unit",

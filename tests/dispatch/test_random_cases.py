@@ -9,7 +9,7 @@ from simulator.errors import SolveError
 from simulator.horizon import Run
 from simulator.results import to_dataset
 from tests.dispatch import power_flow
-from tests.dispatch.program import Optimum, Program
+from tests.dispatch.program import Name, Optimum, Program
 from tests.dispatch.running import cost, finished, solved
 from tests.dispatch.written_out import written_out
 
@@ -18,7 +18,7 @@ COST_TOLERANCE = 1e-7  # of the total
 PRICE_TOLERANCE = 1e-5  # currency/MWh
 STEP = 1e-3  # MW
 WAYS = ("forward", "reverse")
-PLACES = 5  # buses and hours a case at which prices are compared
+RESERVED = ("reserved", "priced", "missed")
 
 
 @pytest.mark.parametrize("mode", ["given", "relaxed"])
@@ -89,24 +89,25 @@ def test_the_best_on_off_decisions_cost_what_an_integer_program_finds(random_cas
 
 
 def check_prices(case: Case, results: xr.Dataset, program: Program, random) -> None:
-    """A price is what a little more and a little less withdrawn cost; where both agree, just that.
+    """A price is what a little more and a little less asked for cost; where both agree, just that.
 
-    Cost is convex in what is withdrawn at a bus, so that its slopes a step before and a step after
-    enclose every price that is right; where the two agree there is only one.
+    Cost is convex in what is withdrawn at a bus, and in what is required of a reserve: its slopes a step
+    before and a step after enclose every price that is right; where the two agree there is only one.
     """
-    price = results["price"].to_pandas()
-    for _ in range(PLACES):
-        t, bus = int(random.integers(len(price))), str(random.choice(price.columns))
-        low, high = (
-            slope(program, bus, t, step) / case.time.period_hours for step in (-STEP, STEP)
-        )
-        found = price[bus].iloc[t]
-        assert low - PRICE_TOLERANCE <= found <= high + PRICE_TOLERANCE, (bus, t)
+    for row, variable, places in (("balance", "price", 5), ("reserves", "reserve_price", 2)):
+        price = results[variable].to_pandas()
+        for _ in range(places if price.size else 0):
+            t, name = int(random.integers(len(price))), str(random.choice(price.columns))
+            low, high = (
+                slope(program, (row, name, t), step) / case.time.period_hours
+                for step in (-STEP, STEP)
+            )
+            found = price[name].iloc[t]
+            assert low - PRICE_TOLERANCE <= found <= high + PRICE_TOLERANCE, (row, name, t)
 
 
-def slope(program: Program, bus: str, t: int, step: float) -> float:
-    """What one more MW withdrawn costs when `step` is withdrawn; ±inf where that cannot be."""
-    name = ("balance", bus, t)
+def slope(program: Program, name: Name, step: float) -> float:
+    """What one more MW asked for costs when `step` is; ±inf where that cannot be."""
     optimum = program.solve({name: step})
     return float(np.copysign(np.inf, step)) if optimum is None else optimum.dual[name]
 
@@ -128,7 +129,9 @@ def check_network(run: Run) -> None:
 
 def test_the_random_cases_meet_what_they_are_meant_to_meet(random_case):
     """Of ten cases, some are short, some congested, some split, some full to overflowing."""
-    met = dict.fromkeys(["short", "congested", "split", "spilled", "stored", "tied", "started"], 0)
+    met = dict.fromkeys(
+        ["short", "congested", "split", "spilled", "stored", "tied", "started", *RESERVED], 0
+    )
     for seed in range(10):
         case = random_case(seed)
         try:
@@ -139,7 +142,8 @@ def test_the_random_cases_meet_what_they_are_meant_to_meet(random_case):
             "short": results["load_unserved"], "congested": results["line_shadow_price"],
             "spilled": results["surplus"], "stored": results["storage_charge"],
             "tied": abs(results["tie_flow"]), "started": results["unit_start"],
-            "split": power_flow.lines_out(case),
+            "split": power_flow.lines_out(case), "reserved": results["unit_reserve"],
+            "priced": results["reserve_price"], "missed": results["reserve_shortage"],
         }  # fmt: skip
         for name, values in seen.items():
             met[name] += bool((np.asarray(values) > 1e-3).any())

@@ -23,11 +23,10 @@ MODES = ["given", "relaxed", "optimal"]
 def assert_same(first, second):
     for item in dataclasses.fields(first):
         values = getattr(first, item.name), getattr(second, item.name)
-        if item.name != "left":
+        if dataclasses.is_dataclass(values[0]):
+            assert_same(*values)
+        else:
             np.testing.assert_array_equal(*values, err_msg=item.name)
-    for item in dataclasses.fields(first.left):
-        values = getattr(first.left, item.name), getattr(second.left, item.name)
-        np.testing.assert_array_equal(*values, err_msg=item.name)
 
 
 @pytest.mark.parametrize("mode", MODES)

@@ -36,6 +36,7 @@ class Model:
     """A case, and the program that grows from it.
 
     injected : (bus, period) → terms of what enters there, withdrawals negative
+    holders : (unit, period, direction) → reserve that it provides
     """
 
     case: Case
@@ -43,6 +44,7 @@ class Model:
     limits: bool
     program: Program = field(default_factory=Program)
     injected: dict[tuple[str, int], list] = field(default_factory=dict)
+    holders: dict[tuple[str, int, str], list] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         self.length = self.case.time.period_hours
@@ -86,6 +88,9 @@ def written_out(
     if one_way:
         _ways(model)
     _loads_and_surplus(model)
+    for name, product in _rows(case.reserves):
+        _reserve(model, name, product)
+    _rooms(model)
     _lines(model)
     if case.settings.network.losses:
         _losses(model)
@@ -342,6 +347,58 @@ def _loads_and_surplus(model: Model) -> None:
     for bus, t in model.injected:
         model.program.column(("surplus", bus, t), cost=penalty)
         model.injected[bus, t].append((-1, ("surplus", bus, t)))
+
+
+# 2.7: reserves
+
+
+def _providers(model: Model, product: Row) -> list[tuple[str, float]]:
+    """The units that may provide a product, and the most each may: ramp × response time."""
+    zone = model.case.buses["zone"]
+    ramp = f"ramp_{product['direction']}_mw_per_h"
+    return [
+        (g, unit[ramp] * product["response_minutes"] / 60 if unit[ramp] > 0 else 0.0)
+        for g, unit in _rows(model.case.units)
+        if product["zone"] in ("all", zone[unit["bus"]])
+    ]
+
+
+def _reserve(model: Model, p: str, product: Row) -> None:
+    """2.7: Σ reserve + shortage − surplus of reserve = requirement; reserve ≤ ramp × response time × on.
+
+    The requirement is requirement_mw × profile and a share of the loads of the zone that are loads.
+    """
+    asked = product["requirement_mw"] * np.array(model.profile(product["requirement_profile"]))
+    for _, load in _rows(model.case.loads):
+        if product["zone"] in ("all", model.case.buses["zone"][load["bus"]]):
+            demand = load["scale_mw"] * np.array(model.profile(load["profile"]))
+            asked = asked + product["percent_of_load"] / 100 * np.maximum(demand, 0)
+    for t in model.periods:
+        short, beyond = ("reserve short", p, t), ("reserve beyond", p, t)
+        model.program.column(short, cost=product["shortage_per_mwh"] * model.length)
+        model.program.column(beyond)
+        terms = [(1, short), (-1, beyond)]
+        for g, most in _providers(model, product):
+            held = ("reserve", g, p, t)
+            model.program.column(held, 0, most)
+            if most < inf:
+                model.program.row(("respond", g, p, t), [(1, held), (-most, ("on", g, t))], "<=", 0)
+            terms.append((1, held))
+            model.holders.setdefault((g, t, product["direction"]), []).append(held)
+        model.program.row(("reserves", p, t), terms, "=", asked[t])
+
+
+def _rooms(model: Model) -> None:
+    """2.7: output + Σ up ≤ on·maximum·available; output − Σ down ≥ on·minimum."""
+    for (g, t, direction), held in model.holders.items():
+        unit, now, on = model.case.units.loc[g], ("output", g, t), ("on", g, t)
+        available = unit["max_output_mw"] * model.share("unit", g)[t]
+        minimum = min(unit["min_output_mw"], available)
+        if direction == "up":
+            terms = [(1, now), (-available, on), *((1, name) for name in held)]
+        else:
+            terms = [(-1, now), (minimum, on), *((1, name) for name in held)]
+        model.program.row(("room", g, t, direction), terms, "<=", 0)
 
 
 def _lines(model: Model) -> None:

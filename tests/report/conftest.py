@@ -125,8 +125,27 @@ def costs(found: dict[str, np.ndarray]) -> dict[str, np.ndarray]:
         "emissions": found["unit_output"] * [0.9, 0.4, 0.6], "cost": cost,
         "ramp_limited_hours": np.array([0.0, 5.0, 2.0]),
         "reserve_price": np.zeros((len(on), 0)), "reserve_shortage": np.zeros((len(on), 0)),
+        "unit_reason": reasons(on), "reserve_requirement": np.zeros((len(on), 0)),
+        "unit_reserve": np.zeros((len(on), 3, 0)),
         "window": np.arange(len(on)) // 24,
     }  # fmt: skip
+
+
+MEANINGS = "off in_the_money line kept_on other"
+
+
+def reasons(on: np.ndarray) -> np.ndarray:
+    """Return why each unit is on: the first pays in most hours, the second is kept on."""
+    code = on * [1, 3, 1]
+    code[2::5, 0] *= 4
+    return code.astype(np.int8)
+
+
+def make_whole(found: dict[str, np.ndarray], days: np.ndarray) -> np.ndarray:
+    """Return what each day falls short of at the price of the unit's bus, array (day, unit)."""
+    price = found["price"][:, UNIT_BUS]
+    short = found["unit_cost"] + found["unit_start_cost"] - price * found["unit_output"]
+    return np.stack([short[days == day].sum(axis=0).clip(0) for day in np.unique(days)])
 
 
 def coordinates(start: str, hours: int, period_hours: float) -> dict[str, Any]:
@@ -167,6 +186,9 @@ def results(
     """Return the dataset; the first hour is local midnight of the day before summer time ends."""
     found = powers(hours)
     found |= network(found) | costs(found)
+    local = pd.date_range(start, periods=hours, freq=pd.Timedelta(hours=period_hours), tz="UTC")
+    days = local.tz_convert("Europe/Dublin").strftime("%Y-%m-%d").to_numpy(dtype=str)
+    found["make_whole"] = make_whole(found, days)
     variables = {
         name: (dims, found[name], {"units": unit, "long_name": label})
         for name, (dims, unit, label) in VARIABLES.items()
@@ -176,7 +198,11 @@ def results(
         "time_zone": "Europe/Dublin", "period_hours": period_hours, "commitment": "optimal",
         "limits": "lines", "base_mva": 100.0,
     }  # fmt: skip
-    return xr.Dataset(variables, coordinates(start, hours, period_hours), described | attributes)
+    made = xr.Dataset(variables, coordinates(start, hours, period_hours), described | attributes)
+    made["unit_reason"].attrs |= {
+        "flag_meanings": MEANINGS, "flag_values": np.arange(5, dtype=np.int8)
+    }  # fmt: skip
+    return made.assign_coords(day=("day", np.unique(days), {"long_name": "local date"}))
 
 
 def record(*, passed: bool = True) -> dict[str, Any]:
@@ -194,6 +220,12 @@ def record(*, passed: bool = True) -> dict[str, Any]:
             "commitment": {"mode": "optimal"}, "network": {"limits": "lines", "losses": False},
             "horizon": {"window_hours": 48.0, "keep_hours": 24.0},
         },
+        "windows": [
+            {"window": 0, "from": "2027-10-30T00:00:00+01:00", "seconds": 1.25, "gap": 0.0004,
+             "time_limit": False},
+            {"window": 1, "from": "2027-10-31T00:00:00+01:00", "seconds": 120.0, "gap": 0.0123,
+             "time_limit": True},
+        ],
         "counts": {"windows": 2}, "versions": {"rampline": "0.1.0", "xarray": "2026.1"},
         "audit": {"passed": passed, "checks": checks},
     }  # fmt: skip

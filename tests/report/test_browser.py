@@ -8,6 +8,7 @@ import time
 from collections.abc import Iterator
 from dataclasses import dataclass
 
+import numpy as np
 import pytest
 from playwright.sync_api import Browser, Page, sync_playwright
 
@@ -102,6 +103,25 @@ def test_every_chart_is_drawn(page):
     assert len(names) == 8
     for name in names:
         assert page.locator(f"#{name} .main-svg").count(), name
+
+
+def test_pointing_at_a_unit_says_why_it_is_on(page):
+    plot = page.locator("#plot-fleet")
+    plot.scroll_into_view_if_needed()
+    area = page.locator("#plot-fleet .nsewdrag").bounding_box()
+    codes = results()["unit_reason"].to_numpy()
+    for unit, code, said in [(0, 1, "in the money"), (1, 3, "start, kept on to save a start")]:
+        hour = np.flatnonzero(codes[:, unit] == code)[0]
+        across, down = (hour + 0.7) / len(codes), (unit + 0.5) / 2  # of two that were ever on
+        page.mouse.move(area["x"] + area["width"] * across, area["y"] + area["height"] * down)
+        eventually(
+            page,
+            f"document.querySelector('#plot-fleet .hoverlayer').textContent.includes('{said}')",
+        )
+    lifted = page.evaluate(
+        "[...new Set(document.getElementById('plot-fleet').data[0].z[1])].sort()"
+    )
+    assert lifted == [0, 3]
 
 
 def test_the_slider_moves_the_map_by_keyboard(page):

@@ -20,7 +20,7 @@ from tests.report.conftest import BUSES, HOSTILE, record, results
 
 NAMES = ["=1+1", "@x", HOSTILE, "-2 east", "+3"]
 ZONES = ["=cmd|' /C calc'!A0", "", "\tsouth", "north", "north"]
-EMPTY = ("reserve_price", "reserve_shortage")
+EMPTY = ("reserve_price", "reserve_shortage", "reserve_requirement", "unit_reserve")
 
 
 def renamed(dataset: xr.Dataset, names: list[str]) -> xr.Dataset:
@@ -69,6 +69,10 @@ def finite(values) -> np.ndarray:
 
 def filled(dataset: xr.Dataset) -> list[str]:
     return [str(name) for name in dataset.data_vars if name not in EMPTY]
+
+
+def numbered(dataset: xr.Dataset) -> list[str]:
+    return [name for name in filled(dataset) if name != "unit_reason"]
 
 
 def local_times(dataset: xr.Dataset) -> pd.DatetimeIndex:
@@ -130,8 +134,27 @@ def read_csv(folder: Path, name: str) -> pd.DataFrame:
     return pd.read_csv(folder / f"{name}.csv")
 
 
+def test_codes_are_exported_in_words(hostile, folders, book):
+    words = {0: "off", 1: "in the money", 2: "line", 3: "kept on", 4: "other"}
+    expected = [[words[code] for code in row] for row in hostile["unit_reason"].to_numpy().tolist()]
+    frame = pd.read_parquet(folders["parquet"] / "unit_reason.parquet")
+    assert frame.iloc[:, 1:].to_numpy().tolist() == expected
+    assert frame.columns[1] == "Peatworks 1 [in words]"
+    assert read_csv(folders["csv"], "unit_reason").iloc[:, 1:].to_numpy().tolist() == expected
+    assert [row[2:] for row in rows_of(book["unit_reason"])[1:]] == expected
+
+
+def test_amounts_by_day_have_a_row_a_day(hostile, book):
+    heading, *rows = rows_of(book["make_whole"])
+    assert heading[:2] == ["day", "Peatworks 1 [EUR]"]
+    assert [row[0] for row in rows] == ["2027-10-30", "2027-10-31"]
+    found = np.array([row[1:] for row in rows])
+    np.testing.assert_allclose(found, hostile["make_whole"], rtol=1e-14)
+    assert found.max() > 0
+
+
 def test_csv_holds_the_numbers_of_the_dataset(hostile, folders):
-    for name in filled(hostile):
+    for name in numbered(hostile):
         frame = read_csv(folders["csv"], name)
         values = hostile[name].to_numpy().reshape(len(frame), -1)
         found = finite(frame.iloc[:, 1:])
@@ -177,7 +200,7 @@ def test_a_rating_without_limit_is_blank_in_csv_and_infinite_in_parquet(folders)
 
 
 def test_parquet_holds_the_dataset_with_zoned_times(hostile, folders):
-    for name in filled(hostile):
+    for name in numbered(hostile):
         frame = pd.read_parquet(folders["parquet"] / f"{name}.parquet")
         values = hostile[name].to_numpy().reshape(len(frame), -1)
         np.testing.assert_array_equal(frame.iloc[:, 1:].to_numpy(), values, err_msg=name)
@@ -204,6 +227,8 @@ def test_every_table_format_says_what_it_is_about(folders, book, kind):
     assert about["price"] == "locational price, EUR/MWh, by time and bus"
     assert "left out" in about["reserve_price"]
     assert about["audit"] == "passed"
+    assert about["window 1 gap"] == "0.0123"
+    assert about["window 1 time limit"] == "True"
 
 
 def test_a_bare_record_is_enough(dataset):

@@ -159,7 +159,7 @@ def test_every_chart_has_words_and_a_table(document):
     plots = [found for _, found in document.elements if found.get("class") == "plot"]
     assert {found["data-chart"] for found in plots} == set(json.loads(document.data())["figures"])
     assert all(found["role"] == "img" and found["aria-label"] for found in plots)
-    assert document.text.count("As a table:") == len(plots) + 1  # the map has two
+    assert document.text.count("As a table:") == len(plots) + 2  # the map and the fleet have two
 
 
 def test_identifiers_are_unique_and_links_lead_somewhere(document):

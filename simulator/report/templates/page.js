@@ -159,7 +159,7 @@
   // Charts by name: most are figures as they come; prices and the map are put together here.
 
   const choices = {};
-  const makers = { prices: pricePicture, map: networkMap };
+  const makers = { prices: pricePicture, map: networkMap, fleet: fleetPicture };
 
   // Long names of rows are cut where they would leave no room for the picture.
   function shortened(name, plot) {
@@ -226,6 +226,28 @@
   }
 
   const drawAll = () => plots.forEach(draw);
+
+  // On and off: why a unit is on comes as a letter a step, whose meaning is looked up here.
+
+  function fleetPicture(given) {
+    if (!given.reasons) return given;
+    const [picture, ...rest] = given.traces;
+    const starts = rest.pop();
+    const begins = new Set(starts.at.map((step, place) => `${starts.y[place]}\n${step}`));
+    const letter = (unit, i) => given.reasons[unit][i];
+    const lifted = (share, held) => (share > 0 && held ? share + 2 : share);
+    const share = (on) => (on > 0 && on < 1 ? `${Math.round(100 * on)} &#37; on, ` : "");
+    const start = (unit, i) => (begins.has(`${picture.y[unit]}\n${i}`) ? "start, " : "");
+    const text = (on, unit, i) => start(unit, i) + share(on) + given.phrases[letter(unit, i).charCodeAt(0) - 97];
+    const shown = {
+      ...picture,
+      z: picture.z.map((row, unit) => row.map((on, i) => lifted(on, given.held.includes(letter(unit, i))))),
+      text: picture.z.map((row, unit) => row.map((on, i) => text(on, unit, i))),
+      hovertemplate: "%{y}<br>%{x}<br>%{text}<br>%{customdata:,.1f} MW<extra></extra>",
+    };
+    const marked = { ...starts, hoverinfo: "skip", hovertemplate: null };
+    return { ...given, traces: [shown, ...rest, marked] };
+  }
 
   // Prices
 
