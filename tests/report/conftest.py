@@ -125,7 +125,8 @@ def costs(found: dict[str, np.ndarray]) -> dict[str, np.ndarray]:
         "emissions": found["unit_output"] * [0.9, 0.4, 0.6], "cost": cost,
         "ramp_limited_hours": np.array([0.0, 5.0, 2.0]),
         "reserve_price": np.zeros((len(on), 0)), "reserve_shortage": np.zeros((len(on), 0)),
-        "unit_reason": reasons(on), "reserve_requirement": np.zeros((len(on), 0)), "unit_reserve": np.zeros((len(on), 3, 0)),
+        "unit_reason": reasons(on), "reserve_requirement": np.zeros((len(on), 0)),
+        "unit_reserve": np.zeros((len(on), 3, 0)),
         "window": np.arange(len(on)) // 24,
     }  # fmt: skip
 
