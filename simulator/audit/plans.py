@@ -128,8 +128,8 @@ def _holds(
         "ramp": climbing | ((units.on_before > SOME) & (down < 2 * AT_LIMIT)),
         "kept_on": (age > 0) & _worth_keeping(units) & _needed_later(on, pays | reserve | held),
     }
-    none = ~np.any([found[name] for name in ("reserve", "must_run", "minimum_up_time")], axis=0)
-    return found | {"other": none}
+    priced = _reserve_worth(evidence) > 2 * SOME
+    return found | {"other": ~(priced | held | found["minimum_up_time"])}
 
 
 def _hours_since_start(evidence: Evidence, units: Units, on: Booleans) -> Floats:
