@@ -67,7 +67,8 @@ class Circumstances:
     reserve : currency that the reserve held is worth
     must_run, restart_costs : bool (unit,), whether a start costs something or has to wait
     up_periods : (unit,), minimum up time; on_before : (unit,), periods on before the run, 0 if none
-    ramp_up, ramp_down : (unit,), MW a period; falling : bool, where an outage overrides ramp_down
+    ramp_up, ramp_down, start_ramp, stop_ramp : (unit,), MW a period
+    falling : bool, where an outage overrides ramp_down
     """
 
     given: bool
@@ -87,6 +88,8 @@ class Circumstances:
     on_before: Floats
     ramp_up: Floats
     ramp_down: Floats
+    start_ramp: Floats
+    stop_ramp: Floats
     falling: Booleans
 
 
@@ -107,7 +110,8 @@ def circumstances(run: Run, dataset: xr.Dataset, last_cost: Floats) -> Circumsta
         reserve=prices.reserve_revenue(dataset), must_run=unit.must_run,
         restart_costs=(unit.hot_start > 0) | (unit.down_periods > 1), up_periods=unit.up_periods,
         on_before=np.maximum(hours, 0.0) / inputs.period_hours,
-        ramp_up=unit.ramp_up, ramp_down=unit.ramp_down,
+        ramp_up=unit.ramp_up, ramp_down=unit.ramp_down, start_ramp=unit.start_ramp,
+        stop_ramp=unit.stop_ramp,
         falling=inputs.unit_falling,
     )  # fmt: skip
 
@@ -158,12 +162,25 @@ def _recently_started(at: Circumstances) -> Booleans:
 
 
 def _ramping(at: Circumstances, on: Booleans) -> Booleans:
-    """Tell where a unit that stays on comes down, or will go up, by its whole ramp."""
-    move, stays = np.diff(at.output, axis=0), on[1:] & on[:-1]
+    """Tell where a unit that stays on comes down, or will go up, by all that 2.2 lets it.
+
+    Down by ramp·on_t + stop_ramp·stop_t, up by ramp·on_{t−1} + start_ramp·start_t: the second terms
+    count where a unit is partly on.
+    """
+    move, stays, start = np.diff(at.output, axis=0), on[1:] & on[:-1], at.start[1:]
+    stop = start - np.diff(at.on, axis=0)
+    down = _times(at.ramp_down, at.on[1:]) + _times(at.stop_ramp, stop)
+    up = _times(at.ramp_up, at.on[:-1]) + _times(at.start_ramp, start)
     found = np.zeros(on.shape, dtype=bool)
-    found[1:] |= stays & ~at.falling[1:] & (-move >= at.ramp_down - POWER)
-    found[:-1] |= stays & (move >= at.ramp_up - POWER)
+    found[1:] |= stays & ~at.falling[1:] & (-move >= down - POWER)
+    found[:-1] |= stays & (start <= ON) & (move >= up - POWER)
     return found
+
+
+def _times(limit: Floats, share: Floats) -> Floats:
+    """Return limit (unit,) × share (period, unit), nothing where there is no share."""
+    with np.errstate(invalid="ignore"):
+        return np.where(share <= 0, 0.0, limit * share)
 
 
 def _before(at: Circumstances, on: Booleans) -> Booleans:

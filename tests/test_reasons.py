@@ -26,6 +26,7 @@ def hours(output: Sequence[float], price: Sequence[float], **changes: object) ->
         last_cost=np.where(power > MINIMUM, COST, -np.inf), reserve=none,
         must_run=np.array([False]), restart_costs=np.array([False]), up_periods=np.array([1]),
         on_before=np.array([0.0]), ramp_up=np.array([np.inf]), ramp_down=np.array([np.inf]),
+        start_ramp=np.array([np.inf]), stop_ramp=np.array([np.inf]),
         falling=none > 0,
     )  # fmt: skip
     return replace(at, **changes)
@@ -104,6 +105,14 @@ def test_ramps_down_from_the_hour_before_and_up_to_the_hour_after():
         [100, 60, 20, 10, 30, 60], prices, ramp_down=np.array([40.0]), ramp_up=np.array([30.0])
     )
     assert found == ["in_the_money", "ramp", "ramp", "other", "ramp", "in_the_money"]
+
+
+def test_a_unit_that_stops_in_part_has_more_room_to_come_down():
+    """From 34 to 20.5 MW with a ramp of 13: a seventh of the unit stops, from up to 24 MW."""
+    share = column(1, 0.85, 0.85)
+    at = hours([34, 20.5, 8], [60, 20, 20], on=share, cost=column(0, 9e9, 9e9),
+               ramp_down=np.array([13.0]), stop_ramp=np.array([24.0]))  # fmt: skip
+    assert [REASONS[code] for code in unit_reasons(at)[:, 0]] == ["in_the_money", "other", "ramp"]
 
 
 def test_a_derate_overrides_the_ramp_down():

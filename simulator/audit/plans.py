@@ -118,18 +118,18 @@ def _holds(
     age, least = _hours_since_start(evidence, units, on), units.numbers("min_up_h")
     up, down = units.ramp_room()
     climbing = np.zeros(on.shape, dtype=bool)
-    climbing[:-1] = on[1:] & (units.start[1:] <= SOME) & (up[1:] < AT_LIMIT)
+    climbing[:-1] = on[1:] & (units.start[1:] <= SOME) & (up[1:] < 2 * AT_LIMIT)
     held = np.broadcast_to(units.table["must_run"].to_numpy(bool), on.shape)
     reserve = _reserve_worth(evidence) > 0
     found = {
         "reserve": reserve,
         "must_run": held,
         "minimum_up_time": on & (age < least - _WHOLE) & (least > evidence.length + _WHOLE),
-        "ramp": climbing | ((units.on_before > SOME) & (down < AT_LIMIT)),
+        "ramp": climbing | ((units.on_before > SOME) & (down < 2 * AT_LIMIT)),
         "kept_on": (age > 0) & _worth_keeping(units) & _needed_later(on, pays | reserve | held),
     }
-    none = ~np.any([found[name] for name in ("reserve", "must_run", "minimum_up_time")], axis=0)
-    return found | {"other": none}
+    priced = _reserve_worth(evidence) > 2 * SOME
+    return found | {"other": ~(priced | held | found["minimum_up_time"])}
 
 
 def _hours_since_start(evidence: Evidence, units: Units, on: Booleans) -> Floats:

@@ -462,7 +462,8 @@ FAULTS: dict[str, Fault] = {
     ),
     "reserve cheaper than its shortage": Fault(
         "reserve prices", 'product "spinning" (while short) ' + at(12), reserves=True,
-        plant=adding("reserve_price", 12, spinning=-1.0), also=frozenset({"unit prices"}),
+        plant=adding("reserve_price", 12, spinning=-1.0),
+        also=frozenset({"unit prices", "make-whole"}),
     ),
     "reserve dearer than its shortage": Fault(
         "reserve prices", 'product "spinning" (shortage price) ' + at(12), reserves=True,
@@ -478,7 +479,7 @@ FAULTS: dict[str, Fault] = {
     ),
     "price beside cost and reserve price": Fault(
         "unit prices", f'unit "gas" {at(12)}', shifted_price(12, WEST, 0.01), reserves=True,
-        also=frozenset({"tie prices"}),
+        also=frozenset({"tie prices", "make-whole"}),
     ),
     "shortage that costs more": Fault(
         "cost", 'component "reserve_shortage" ' + at(12), reserves=True,

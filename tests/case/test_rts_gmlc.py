@@ -1,7 +1,6 @@
 """A real-size case: RTS-GMLC, when its folder stands beside the checkout."""
 
 import csv
-import time
 from pathlib import Path
 
 import numpy as np
@@ -63,13 +62,3 @@ def test_profiles_match_the_files(case):
 
 def test_there_is_nothing_to_warn_of(case):
     assert case.warnings == ()
-
-
-def test_it_reads_fast(case):
-    assert len(case.time)  # read once before, so that imports do not count
-    seconds = []
-    for _ in range(3):
-        start = time.perf_counter()
-        read_case(FOLDER)
-        seconds.append(time.perf_counter() - start)
-    assert min(seconds) < 1.0
