@@ -10,8 +10,8 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from simulator.case import Case, read_case
+    from simulator.causes import price_cause
     from simulator.horizon import plan_run, run
-    from simulator.prices import price_cause
     from simulator.results import open_run, to_dataset
 
 __all__ = ["Case", "open_run", "plan_run", "price_cause", "read_case", "run", "to_dataset"]
@@ -21,7 +21,7 @@ _HOMES = {
     "open_run": "results",
     "plan_run": "horizon",
     "read_case": "case",
-    "price_cause": "prices",
+    "price_cause": "causes",
     "run": "horizon",
     "to_dataset": "results",
 }

@@ -1,7 +1,7 @@
 """Prices taken apart and congestion accounted for (formulation.md 5): pure functions.
 
-Public names: `congestion_rent`, `delivered_share`, `energy_and_congestion`, `local_days`, `make_whole`,
-`pair_name`, `price_cause`, `reference_weights`, `reserve_revenue`.
+Public names: `congestion_rent`, `delivered_share`, `energy_and_congestion`, `island_sums`, `local_days`,
+`make_whole`, `pair_name`, `reference_weights`, `reserve_revenue`.
 
 Arrays have periods first; prices are currency/MWh, powers MW, Δ is the length of a period in h.
 """
@@ -11,13 +11,9 @@ import pandas as pd
 import xarray as xr
 from numpy.typing import NDArray
 
-from simulator.case import Case, series
-from simulator.errors import OptionError
-from simulator.grid import Network, Topology
-
 __all__ = [
-    "congestion_rent", "delivered_share", "energy_and_congestion", "local_days", "make_whole", "pair_name",
-    "price_cause", "reference_weights", "reserve_revenue",
+    "congestion_rent", "delivered_share", "energy_and_congestion", "island_sums", "local_days",
+    "make_whole", "pair_name", "reference_weights", "reserve_revenue",
 ]  # fmt: skip
 
 Floats = NDArray[np.float64]
@@ -35,12 +31,12 @@ def reference_weights(demand: Floats, island: Integers) -> Floats:
     Weights follow demand; an island without any gives all its buses the same weight.
     """
     positive = np.maximum(demand, 0.0)
-    total = _island_sums(positive, island)
-    size = _island_sums(np.ones_like(positive), island)
+    total = island_sums(positive, island)
+    size = island_sums(np.ones_like(positive), island)
     return np.where(total > _NO_LOAD, positive / np.where(total > _NO_LOAD, total, 1.0), 1.0 / size)
 
 
-def _island_sums(values: Floats, island: Integers) -> Floats:
+def island_sums(values: Floats, island: Integers) -> Floats:
     """Sum values over the island each bus is in, array (period, bus)."""
     key = island + (np.arange(len(island)) * (island.max(initial=0) + 1))[:, None]
     return np.bincount(key.ravel(), weights=values.ravel())[key]
@@ -59,7 +55,7 @@ def energy_and_congestion(
     >>> energy_and_congestion(price, np.array([[0.25, 0.75]]), one)
     (array([[35., 35.]]), array([[-15.,   5.]]))
     """
-    energy = _island_sums(weights * price, island)
+    energy = island_sums(weights * price, island)
     return energy, price - energy
 
 
@@ -73,8 +69,8 @@ def delivered_share(own: Floats, factor: Floats, weights: Floats, island: Intege
     With that share the loss part of a price is energy·(share − 1): minus the energy price times the loss
     factor with respect to the load-weighted reference (5.1).
     """
-    at_reference = _island_sums(weights * own, island)
-    by_flows = (1.0 - factor) / _island_sums(weights * (1.0 - factor), island)
+    at_reference = island_sums(weights * own, island)
+    by_flows = (1.0 - factor) / island_sums(weights * (1.0 - factor), island)
     priced = np.abs(at_reference) > _NO_PRICE
     return np.where(priced, own / np.where(priced, at_reference, 1.0), by_flows)
 
@@ -124,60 +120,3 @@ def reserve_revenue(dataset: xr.Dataset) -> Floats:
         return np.zeros(dataset["unit_output"].shape)
     worth = (dataset["unit_reserve"] * dataset["reserve_price"]).sum("product")
     return worth.transpose("time", "unit").to_numpy() * float(dataset.attrs["period_hours"])
-
-
-PRICED = 1e-6
-
-
-def price_cause(
-    case: Case, dataset: xr.Dataset, bus: str, hours: slice | str | None = None
-) -> pd.DataFrame:
-    """Say which line causes how much of a bus's congestion part, hour by hour (5.1).
-
-    hours : what `dataset.sel(time=…)` takes, UTC; by default the whole run
-    Frame indexed by (time, line), one row a priced line and hour: `ptdf` (of the load-weighted
-    reference, dimensionless), `shadow_price` and `contribution` (currency/MWh). The contributions of
-    an hour sum to `price_congestion` at the bus. Raises `OptionError` for an unknown bus.
-    """
-    if bus not in dataset.indexes["bus"]:
-        raise OptionError(
-            f'the bus, must be one of the run, found "{bus}", choose one of its {dataset.sizes["bus"]} buses'
-        )
-    chosen = dataset if hours is None else dataset.sel(time=hours)
-    chosen = chosen.expand_dims("time") if "time" not in chosen.dims else chosen
-    times = chosen.indexes["time"]
-    places = case.time.periods.get_indexer(times.tz_localize("UTC"))
-    factors = _bus_factors(case, chosen, bus, slice(int(places[0]), int(places[-1]) + 1))
-    shadow = chosen["line_shadow_price"].to_numpy()
-    period, line = np.nonzero(shadow > PRICED)
-    priced, ptdf = shadow[period, line], factors[period, line]
-    flow = chosen["line_flow"].to_numpy()[period, line]
-    index = pd.MultiIndex.from_arrays(
-        [times[period], chosen.indexes["line"][line]], names=["time", "line"]
-    )
-    return pd.DataFrame(
-        {"ptdf": ptdf, "shadow_price": priced, "contribution": -np.sign(flow) * priced * ptdf},
-        index,
-    )
-
-
-def _bus_factors(case: Case, dataset: xr.Dataset, bus: str, span: slice) -> Floats:
-    """Return the PTDF of one bus less that of its island's reference, array (period, line)."""
-    schedule = Network.of(case).schedule(series.in_service(case, span))
-    place = dataset.indexes["bus"].get_loc(bus)
-    owner = dataset.indexes["bus"].get_indexer(pd.Index(dataset["load_bus"].to_numpy()))
-    demand = series.sum_by(dataset["load_demand"].to_numpy(), owner, dataset.sizes["bus"])
-    factors = np.zeros((len(demand), dataset.sizes["line"]))
-    for number in np.unique(schedule.index):
-        here = schedule.index == number
-        factors[here] = _against_reference(schedule.topologies[number], place, demand[here])
-    return factors
-
-
-def _against_reference(topology: Topology, place: int, demand: Floats) -> Floats:
-    """Return PTDF_ln − Σ_m weight_m·PTDF_lm, array (period, line), of bus n at `place`."""
-    island = np.broadcast_to(topology.island, demand.shape)
-    weights = reference_weights(demand, island) * (topology.island == topology.island[place])
-    injected = -weights
-    injected[:, place] += 1.0
-    return topology.flows(injected) - topology.shift_flow

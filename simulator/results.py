@@ -20,11 +20,21 @@ from numpy.typing import NDArray
 
 from simulator import prices
 from simulator.case import series
-from simulator.dispatch import Priced, loss_factors
+from simulator.causes import main_causes
 from simulator.dispatch.counts import WindowRecord
 from simulator.errors import OptionError
 from simulator.files import made_whole
 from simulator.horizon import Run
+from simulator.network_results import (
+    AT_LIMIT,
+    PRICED,
+    corridors,
+    lines_and_prices,
+    network_record,
+    pair_names,
+    pairs,
+    priced_of,
+)  # fmt: skip
 from simulator.reasons import REASONS, circumstances, unit_reasons
 
 __all__ = [
@@ -41,11 +51,6 @@ Floats = NDArray[np.float64]
 Entry = tuple[tuple[str, ...], str, str]
 
 FORMAT = 1
-PRICED = 1e-6
-"""A shadow price above this, currency/MWh, makes an hour a congestion hour (formulation.md 5.3)."""
-AT_LIMIT = 1e-4
-"""A flow within this of its rating, MW, is at its limit (formulation.md 5.3)."""
-
 COMPONENTS = (
     "unit_running", "unit_start", "renewable", "storage", "unserved", "surplus", "reserve_shortage",
 )  # fmt: skip
@@ -100,8 +105,14 @@ VARIABLES: Mapping[str, Entry] = {
     "pair_rent": (("pair",), MONEY, "shadow price times flow after the contingency"),
     "price": (("time", "bus"), PRICE, "locational price"),
     "price_energy": (("time", "bus"), PRICE, "price at the island's load-weighted reference"),
-    "price_congestion": (("time", "bus"), PRICE, "price part caused by lines at their limit"),
+    "price_congestion": (("time", "bus"), PRICE, "price part caused by limits of the network"),
     "price_loss": (("time", "bus"), PRICE, "price part caused by losses"),
+    "main_cause": (
+        ("time", "bus"),
+        "1",
+        "place of the limit among causes that most of the congestion part is of, or -1",
+    ),
+    "main_cause_part": (("time", "bus"), PRICE, "what that limit adds to the price"),
     "reserve_price": (("time", "product"), PRICE, "reserve price"),
     "reserve_shortage": (("time", "product"), "MW", "reserve not provided"),
     "reserve_requirement": (("time", "product"), "MW", "reserve asked for"),
@@ -118,7 +129,7 @@ VARIABLES: Mapping[str, Entry] = {
     "window": (("time",), "1", "number of the window the period was kept from"),
 }
 
-DERIVED = ("make_whole", "unit_reason")
+DERIVED = ("make_whole", "unit_reason", "main_cause", "main_cause_part")
 """The variables that follow from others."""
 
 
@@ -138,8 +149,8 @@ OF_DECISIONS: Mapping[str, Entry] = {
 
 def to_dataset(run: Run) -> xr.Dataset:
     """Return the results of a run as one labelled dataset (results-format.md)."""
-    values = _powers(run) | _lines_and_prices(run) | _reserves(run) | _costs(run) | _summaries(run)
-    values |= _corridors(run) | _pairs(run)
+    values = _powers(run) | lines_and_prices(run) | _reserves(run) | _costs(run) | _summaries(run)
+    values |= corridors(run) | pairs(run)
     written = {**VARIABLES, **(OF_DECISIONS if run.plan.mode == "optimal" else {})}
     variables = {
         name: (dims, values[name], {"units": unit, "long_name": label})
@@ -159,7 +170,11 @@ def to_dataset(run: Run) -> xr.Dataset:
 def _with_derived(run: Run, dataset: xr.Dataset) -> xr.Dataset:
     """Add what follows from the other results."""
     given = circumstances(run, dataset, _last_cost(run))
-    values = {"make_whole": prices.make_whole(dataset), "unit_reason": unit_reasons(given)}
+    causes, which, part = main_causes(run.case, dataset)
+    values = {
+        "make_whole": prices.make_whole(dataset), "unit_reason": unit_reasons(given),
+        "main_cause": which, "main_cause_part": part,
+    }  # fmt: skip
     flags = {
         "flag_values": np.arange(len(REASONS), dtype=np.int8), "flag_meanings": " ".join(REASONS)
     }  # fmt: skip
@@ -168,7 +183,14 @@ def _with_derived(run: Run, dataset: xr.Dataset) -> xr.Dataset:
         more = flags if name == "unit_reason" else {}
         dataset[name] = (dims, values[name], {"units": unit, "long_name": label, **more})
     days = np.unique(prices.local_days(dataset))
-    return dataset.assign_coords(day=("day", days, {"long_name": "local date"}))
+    return dataset.assign_coords(
+        day=("day", days, {"long_name": "local date"}),
+        cause=(
+            "cause",
+            np.array(causes, dtype=str),
+            {"long_name": "limit that is priced in some hour"},
+        ),
+    )
 
 
 def _coordinates(run: Run) -> dict[str, Any]:
@@ -191,26 +213,12 @@ def _coordinates(run: Run) -> dict[str, Any]:
         }),
         "component": ("component", np.array(COMPONENTS)),
     }  # fmt: skip
-    found |= _pair_names(run)
+    found |= pair_names(run)
     for dimension, (table, columns) in tables.items():
         found[dimension] = (dimension, table.index.to_numpy(dtype=str))
         for column, unit in columns.items():
             found[f"{dimension}_{column}"] = _coordinate(dimension, table[column], unit)
     return found
-
-
-def _pair_names(run: Run) -> dict[str, Any]:
-    """Name the priced pairs: what is lost, the line that would be overloaded, and when."""
-    pairs = _priced(run).pairs
-    lost = np.asarray(run.inputs.whole.limits.contingencies.names, dtype=str)[pairs.contingency]
-    line = run.case.lines.index.to_numpy(dtype=str)[pairs.line]
-    names = [prices.pair_name(*pair) for pair in zip(line, lost, strict=True)]
-    return {
-        "pair": ("pair", np.array(names, dtype=str)),
-        "pair_contingency": ("pair", lost),
-        "pair_line": ("pair", line),
-        "pair_time": ("pair", run.times.tz_localize(None)[pairs.period], {"long_name": "period, UTC"}),
-    }  # fmt: skip
 
 
 def _coordinate(dimension: str, values: pd.Series, unit: str) -> tuple[str, Any, dict[str, str]]:
@@ -244,34 +252,6 @@ def _powers(run: Run) -> dict[str, Floats]:
     }
 
 
-def _lines_and_prices(run: Run) -> dict[str, Floats]:
-    kept, inputs = run.kept, run.kept_inputs
-    priced = _priced(run)
-    price, line_dual = priced.price, priced.line
-    island = np.stack([topology.island for topology in inputs.topology.topologies])
-    island = island[inputs.topology.index]
-    weights = prices.reference_weights(inputs.demand_at_bus, island)
-    energy, congestion = prices.energy_and_congestion(price, weights, island)
-    loss = np.zeros_like(price)
-    if inputs.losses is not None:
-        delivered = prices.delivered_share(
-            priced.price - priced.congestion, loss_factors(inputs, kept.flow), weights, island
-        )
-        loss = energy * (delivered - 1.0)
-        congestion = congestion - loss
-    return {
-        "line_shadow_price": np.abs(line_dual),
-        "line_limit_side": -np.sign(line_dual).astype(np.int8),
-        "congestion_rent": prices.congestion_rent(line_dual, kept.flow, inputs.period_hours),
-        "price": price,
-        "price_fixed": kept.priced.price,
-        "price_relaxed": kept.relaxed.price,
-        "price_energy": energy,
-        "price_congestion": congestion,
-        "price_loss": loss,
-    }
-
-
 def _reserves(run: Run) -> dict[str, Floats]:
     """Return price, shortage, requirement and provision of reserves.
 
@@ -285,54 +265,12 @@ def _reserves(run: Run) -> dict[str, Floats]:
     total = provided.sum(axis=1)
     share = np.divide(asked, total, out=np.ones_like(total), where=total > asked)
     return {
-        "reserve_price": _priced(run).reserve,
+        "reserve_price": priced_of(run).reserve,
         "reserve_price_fixed": kept.priced.reserve,
         "reserve_price_relaxed": kept.relaxed.reserve,
         "reserve_shortage": kept.reserve_short,
         "reserve_requirement": asked,
         "unit_reserve": provided * share[:, None, :],
-    }
-
-
-def _priced(run: Run) -> Priced:
-    """Return prices, and what limits cost, as the plan asks for them."""
-    return run.kept.relaxed if run.plan.pricing == "relaxed" else run.kept.priced
-
-
-def _corridors(run: Run) -> dict[str, Any]:
-    limits, dual, length = run.kept_inputs.limits, _priced(run).corridor, run.case.time.period_hours
-    flow = limits.corridor_flow(run.kept.flow)
-    at_limit = (flow >= limits.forward - AT_LIMIT) | (flow <= AT_LIMIT - limits.reverse)
-    return {
-        "corridor_flow": flow,
-        "corridor_forward_limit": limits.forward,
-        "corridor_reverse_limit": limits.reverse,
-        "corridor_shadow_price": np.abs(dual),
-        "corridor_limit_side": -np.sign(dual).astype(np.int8),
-        "corridor_rent": prices.congestion_rent(dual, flow, length),
-        "corridor_congestion_hours": (np.abs(dual) > PRICED).sum(axis=0) * length,
-        "corridor_hours_at_limit": at_limit.sum(axis=0) * length,
-    }
-
-
-def _pairs(run: Run) -> dict[str, Any]:
-    """Account for the limits that are priced after a contingency, a row a contingency, line and period."""
-    pairs, inputs, length = _priced(run).pairs, run.kept_inputs, run.case.time.period_hours
-    after = np.zeros(len(pairs.dual))
-    for number in np.unique(inputs.topology.index[pairs.period]):
-        here = np.flatnonzero(inputs.topology.index[pairs.period] == number)
-        loss = inputs.limits.contingencies.after(inputs.topology.topologies[number])
-        weights = loss.weights(pairs.contingency[here], pairs.line[here])
-        after[here] = weights.multiply(run.kept.flow[pairs.period[here]]).sum(axis=1)
-    hit = np.zeros(run.kept.flow.shape, dtype=bool)
-    hit[pairs.period, pairs.line] = np.abs(pairs.dual) > PRICED
-    return {
-        "pair_flow": after,
-        "pair_rating": inputs.limits.emergency[pairs.period, pairs.line],
-        "pair_shadow_price": np.abs(pairs.dual),
-        "pair_limit_side": -np.sign(pairs.dual).astype(np.int8),
-        "pair_rent": prices.congestion_rent(pairs.dual, after, length),
-        "security_hours": hit.sum(axis=0) * length,
     }
 
 
@@ -391,7 +329,7 @@ def _summaries(run: Run) -> dict[str, Any]:
     length = inputs.period_hours
     at_limit = np.abs(kept.flow) >= inputs.limits.rating - AT_LIMIT
     return {
-        "congestion_hours": (np.abs(_priced(run).line) > PRICED).sum(axis=0) * length,
+        "congestion_hours": (np.abs(priced_of(run).line) > PRICED).sum(axis=0) * length,
         "hours_at_limit": at_limit.sum(axis=0) * length,
         "ramp_limited_hours": _ramp_limited(run).sum(axis=0) * length,
         "window": run.window,
@@ -432,7 +370,7 @@ def run_record(
             "rebuilds": max(counts.builds - 1, 0), "simplex_iterations": counts.iterations,
         },
         "windows": [_window_record(run, record) for record in counts.windows],
-        "network": _network(run),
+        "network": network_record(run),
         "seconds": {name: round(value, 4) for name, value in spent.items()},
         "versions": {name: version(name) for name in PACKAGES},
     }  # fmt: skip
@@ -448,36 +386,6 @@ def _window_record(run: Run, record: WindowRecord) -> dict[str, Any]:
         "gap": record.gap,
         "time_limit": record.time_limit,
     }
-
-
-def _network(run: Run) -> dict[str, Any]:
-    """Return how many contingencies held, which did not and why, and how exact losses are."""
-    schedule, held = run.kept_inputs.topology, run.kept_inputs.limits.contingencies
-    length, count = run.case.time.period_hours, np.bincount(schedule.index)
-    left_out: list[dict[str, Any]] = []
-    for reason in ("splits", "idle"):
-        hours = np.zeros(len(held))
-        for number in np.unique(schedule.index):
-            marked = getattr(held.after(schedule.topologies[number]), reason)
-            hours += marked * count[number] * length
-        left_out += [
-            {
-                "contingency": str(held.names[place]),
-                "reason": _LEFT_OUT[reason],
-                "hours": float(hours[place]),
-            }
-            for place in np.flatnonzero(hours)
-        ]
-    found: dict[str, Any] = {"contingencies": len(held), "left_out": left_out}
-    if run.kept_inputs.losses is not None:
-        found |= {
-            "loss_accuracy_mw": run.counts.loss_gap, "loss_step_mw": run.counts.loss_step,
-            "linearisations": run.counts.linearisations,
-        }  # fmt: skip
-    return found
-
-
-_LEFT_OUT = {"splits": "its loss splits the network", "idle": "its lines are out already"}
 
 
 def _congestion_cost(dataset: xr.Dataset, unlimited: Run | None) -> dict[str, float]:

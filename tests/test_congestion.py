@@ -3,11 +3,14 @@
 import numpy as np
 import pytest
 
-from simulator.errors import OptionError
+from simulator.causes import price_cause
+from simulator.errors import OptionError, SolveError
 from simulator.horizon import plan_run, run, without_limits
-from simulator.prices import price_cause
 from simulator.results import run_record, to_dataset
 from tests.dispatch.building import case_of
+from tests.dispatch.drawing import secured
+from tests.dispatch.running import finished
+from tests.dispatch.test_network_limits import ring
 
 
 def three_buses(folder, rating=40.0):
@@ -91,6 +94,44 @@ def test_the_cause_is_the_line_with_the_factor_by_hand(tmp_path):
     assert price_cause(case, dataset, "b", first).iloc[0].tolist() == pytest.approx(
         [1 / 3, 120, -40]
     )
+
+
+@pytest.mark.parametrize("limits", ["lines", "secure"])
+@pytest.mark.parametrize("seed", range(300, 312))
+def test_causes_of_every_kind_add_up_and_the_main_one_is_the_largest(tmp_path, seed, limits):
+    case = case_of(tmp_path / "case", **secured(seed))
+    try:
+        dataset = to_dataset(finished(case, limits=limits))
+    except SolveError:
+        pytest.skip("the case contradicts itself")
+    for bus in dataset["bus"].values[::2]:
+        causes = price_cause(case, dataset, bus)["contribution"]
+        total = causes.groupby("time").sum()
+        expected = dataset["price_congestion"].sel(bus=bus).to_series()
+        np.testing.assert_allclose(
+            total.reindex(expected.index, fill_value=0.0), expected, atol=1e-6
+        )
+        largest = causes.abs().groupby("time").max().reindex(expected.index, fill_value=0.0)
+        np.testing.assert_allclose(abs(dataset["main_cause_part"].sel(bus=bus)), largest, atol=1e-9)
+        named = dataset["main_cause"].sel(bus=bus).values
+        for time, name in zip(dataset["time"].values, named, strict=True):
+            if name >= 0:
+                share = causes[time, str(dataset["cause"].values[name])]
+                part = dataset["main_cause_part"].sel(bus=bus, time=time).item()
+                assert np.atleast_1d(share) == pytest.approx(part)
+
+
+def test_the_cause_may_be_a_line_after_a_loss(tmp_path):
+    """The ring of three after the loss of ac, by hand: what a sends goes by ab and bc."""
+    case = ring(tmp_path / "case")
+    dataset = to_dataset(finished(case, "given", limits="secure"))
+    cause = price_cause(case, dataset, "a", dataset["time"].values[0])
+    assert cause["contribution"].sum() == pytest.approx(-40)
+    assert set(cause.index.get_level_values("cause")) <= {
+        f"{line} after loss of {lost}" for line in ("ab", "bc", "ac") for lost in ("ab", "bc", "ac")
+    }
+    name = dataset["cause"].values[dataset["main_cause"].sel(bus="a").values[0]]
+    assert " after loss of " in name
 
 
 def test_an_unknown_bus_is_refused(solved):

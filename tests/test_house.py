@@ -11,8 +11,8 @@ import pytest
 ROOT = Path(__file__).parents[1]
 PACKAGE = ROOT / "simulator"
 ROOMS = (
-    "errors", "files", "case", "grid", "dispatch", "horizon", "prices", "reasons", "results", "audit",
-    "studies", "report", "cli",
+    "errors", "files", "case", "grid", "dispatch", "horizon", "prices", "causes", "reasons",
+    "network_results", "results", "audit", "studies", "report", "cli",
 )  # fmt: skip
 TOP_LEVEL = {
     "README.md", "DEVELOPERS.md", "pyproject.toml", "LICENSE", "simulator", "profiles", "tests",

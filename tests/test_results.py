@@ -33,6 +33,28 @@ def dataset(finished_run) -> xr.Dataset:
     return to_dataset(finished_run)
 
 
+AT_CORRIDORS, AT_PAIRS = ("time", "corridor"), ("pair",)
+NETWORK = {
+    "line_loss": (("time", "line"), "MW"),
+    "security_hours": (("line",), "h"),
+    "corridor_flow": (AT_CORRIDORS, "MW"),
+    "corridor_forward_limit": (AT_CORRIDORS, "MW"),
+    "corridor_reverse_limit": (AT_CORRIDORS, "MW"),
+    "corridor_shadow_price": (AT_CORRIDORS, "currency/MWh"),
+    "corridor_limit_side": (AT_CORRIDORS, "1"),
+    "corridor_rent": (AT_CORRIDORS, "currency"),
+    "corridor_congestion_hours": (("corridor",), "h"),
+    "corridor_hours_at_limit": (("corridor",), "h"),
+    "pair_flow": (AT_PAIRS, "MW"),
+    "pair_rating": (AT_PAIRS, "MW"),
+    "pair_shadow_price": (AT_PAIRS, "currency/MWh"),
+    "pair_limit_side": (AT_PAIRS, "1"),
+    "pair_rent": (AT_PAIRS, "currency"),
+    "main_cause": (("time", "bus"), "1"),
+    "main_cause_part": (("time", "bus"), "currency/MWh"),
+}
+
+
 def promised() -> dict[str, tuple[tuple[str, ...], str]]:
     """Variable → dimensions and unit, from the table of results-format.md."""
     rows = re.findall(r"^\| (`.*?) \| (.*?) \| (.*?) \|$", FORMAT_PAGE.read_text(), re.MULTILINE)
@@ -56,6 +78,7 @@ def test_variables_dimensions_and_units_are_just_those_promised(dataset):
     expected = promised()
     assert len(expected) > 25
     more = {
+        **NETWORK,
         "ramp_limited_hours": (("unit",), "h"),
         "make_whole": (("day", "unit"), "currency"),
         "unit_reason": (("time", "unit"), "1"),
