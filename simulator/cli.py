@@ -29,7 +29,7 @@ class Commands(TyperGroup):
         try:
             return super().invoke(ctx)
         except KeyboardInterrupt as stop:
-            typer.echo(f"interrupted; {stop or 'nothing was written'}", err=True)
+            typer.echo(f"interrupted; {str(stop) or 'nothing was written'}", err=True)
             raise typer.Exit(EXIT_INTERRUPTED) from stop
         except SolveError as error:
             typer.echo(f"error: {error}", err=True)
