@@ -25,9 +25,6 @@ __all__ = ["Causes", "main_causes", "price_cause"]
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
 
-PRICED = 1e-6
-"""Currency/MWh; a dual below it causes nothing."""
-
 
 @dataclass(frozen=True, eq=False)
 class Cause:
@@ -91,7 +88,7 @@ class Causes:
         yield from self._after_contingencies()
 
     def _dense(self, weights: Floats, names: pd.Index, dual: Floats) -> Iterator[Cause]:
-        priced = np.abs(dual) > PRICED
+        priced = np.abs(dual) > prices.PRICED
         for element in np.flatnonzero(priced.any(axis=0)).tolist():
             period = np.flatnonzero(priced[:, element])
             weight = np.tile(weights[element], (len(period), 1))
@@ -102,7 +99,7 @@ class Causes:
         period = data.indexes["time"].get_indexer(pd.DatetimeIndex(data["pair_time"].to_numpy()))
         dual = -(data["pair_limit_side"] * data["pair_shadow_price"]).to_numpy()
         names = data["pair"].to_numpy().astype(str)
-        here = (period >= 0) & (np.abs(dual) > PRICED)
+        here = (period >= 0) & (np.abs(dual) > prices.PRICED)
         held = Contingencies.of(self.case, self.network) if here.any() else Contingencies.none()
         for name in np.unique(names[here]).tolist():
             rows = np.flatnonzero(here & (names == name))

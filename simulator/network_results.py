@@ -1,6 +1,6 @@
 """What a run's network carried and cost: prices in parts, and limits of lines, of corridors, after losses.
 
-Public names: `AT_LIMIT`, `PRICED`, `corridors`, `lines_and_prices`, `network_record`, `pair_names`, `pairs`,
+Public names: `AT_LIMIT`, `corridors`, `lines_and_prices`, `network_record`, `pair_names`, `pairs`,
 `priced_of`.
 
 Each takes a finished run and returns arrays by the names of results-format.md.
@@ -16,14 +16,11 @@ from simulator.dispatch import Priced, loss_factors
 from simulator.horizon import Run
 
 __all__ = [
-    "AT_LIMIT", "PRICED", "corridors", "lines_and_prices", "network_record", "pair_names", "pairs",
-    "priced_of",
+    "AT_LIMIT", "corridors", "lines_and_prices", "network_record", "pair_names", "pairs", "priced_of",
 ]  # fmt: skip
 
 Floats = NDArray[np.float64]
 
-PRICED = 1e-6
-"""A shadow price above this, currency/MWh, makes an hour a congestion hour (formulation.md 5.3)."""
 AT_LIMIT = 1e-4
 """A flow within this of its rating, MW, is at its limit (formulation.md 5.3)."""
 
@@ -78,7 +75,7 @@ def corridors(run: Run) -> dict[str, Any]:
         "corridor_shadow_price": np.abs(dual),
         "corridor_limit_side": -np.sign(dual).astype(np.int8),
         "corridor_rent": prices.congestion_rent(dual, flow, length),
-        "corridor_congestion_hours": (np.abs(dual) > PRICED).sum(axis=0) * length,
+        "corridor_congestion_hours": (np.abs(dual) > prices.PRICED).sum(axis=0) * length,
         "corridor_hours_at_limit": at_limit.sum(axis=0) * length,
     }
 
@@ -93,7 +90,7 @@ def pairs(run: Run) -> dict[str, Any]:
         weights = loss.weights(table.contingency[here], table.line[here])
         after[here] = weights.multiply(run.kept.flow[table.period[here]]).sum(axis=1)
     hit = np.zeros(run.kept.flow.shape, dtype=bool)
-    hit[table.period, table.line] = np.abs(table.dual) > PRICED
+    hit[table.period, table.line] = np.abs(table.dual) > prices.PRICED
     return {
         "pair_flow": after,
         "pair_rating": inputs.limits.emergency[table.period, table.line],

@@ -1,7 +1,7 @@
 """Prices taken apart and congestion accounted for (formulation.md 5): pure functions.
 
-Public names: `congestion_rent`, `delivered_share`, `energy_and_congestion`, `island_sums`, `local_days`,
-`make_whole`, `pair_name`, `reference_weights`, `reserve_revenue`.
+Public names: `congestion_rent`, `delivered_share`, `energy_and_congestion`, `island_sums`, `lines_priced`,
+`local_days`, `make_whole`, `pair_name`, `reference_weights`, `reserve_revenue`, `total_hours`, `total_rent`.
 
 Arrays have periods first; prices are currency/MWh, powers MW, Δ is the length of a period in h.
 """
@@ -12,13 +12,16 @@ import xarray as xr
 from numpy.typing import NDArray
 
 __all__ = [
-    "congestion_rent", "delivered_share", "energy_and_congestion", "island_sums", "local_days",
-    "make_whole", "pair_name", "reference_weights", "reserve_revenue",
+    "PRICED", "congestion_rent", "delivered_share", "energy_and_congestion", "island_sums", "lines_priced",
+    "local_days", "make_whole", "pair_name", "reference_weights", "reserve_revenue", "total_hours",
+    "total_rent",
 ]  # fmt: skip
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
 
+PRICED = 1e-6
+"""A shadow price above this, currency/MWh, makes an hour a congestion hour (5.3)."""
 _NO_LOAD = 1e-9
 _NO_PRICE = 0.1  # currency/MWh; of less, rounding would make the proportion
 
@@ -81,6 +84,32 @@ def congestion_rent(line_dual: Floats, flow: Floats, period_hours: float) -> Flo
     Shadow price × flow × Δ, the flow counted in the direction of the limit: |flow| where it is met.
     """
     return np.where(flow == 0, 0.0, -line_dual * flow) * period_hours
+
+
+def total_rent(dataset: xr.Dataset) -> float:
+    """Return the rent of all limits: lines, corridors, lines after contingencies, currency (5.2)."""
+    names = ("congestion_rent", "corridor_rent", "pair_rent")
+    return float(sum(float(dataset[name].sum()) for name in names))
+
+
+def total_hours(dataset: xr.Dataset) -> float:
+    """Return the hours in which limits are priced, summed over all of them (5.3)."""
+    after = int((dataset["pair_shadow_price"].to_numpy() > PRICED).sum())
+    plain = sum(
+        float(dataset[name].sum()) for name in ("congestion_hours", "corridor_congestion_hours")
+    )
+    return plain + after * float(dataset.attrs["period_hours"])
+
+
+def lines_priced(dataset: xr.Dataset) -> NDArray[np.bool_]:
+    """Tell where a line is priced, as things are or after a contingency, array (period, line)."""
+    priced: NDArray[np.bool_] = dataset["line_shadow_price"].to_numpy() > PRICED
+    pair = dataset["pair_shadow_price"].to_numpy() > PRICED
+    period = dataset.indexes["time"].get_indexer(pd.DatetimeIndex(dataset["pair_time"].to_numpy()))
+    line = dataset.indexes["line"].get_indexer(pd.Index(dataset["pair_line"].to_numpy()))
+    priced = priced.copy()
+    priced[period[pair], line[pair]] = True
+    return priced
 
 
 def pair_name(line: str, contingency: str) -> str:

@@ -27,7 +27,6 @@ from simulator.files import made_whole
 from simulator.horizon import Run
 from simulator.network_results import (
     AT_LIMIT,
-    PRICED,
     corridors,
     lines_and_prices,
     network_record,
@@ -51,6 +50,7 @@ Floats = NDArray[np.float64]
 Entry = tuple[tuple[str, ...], str, str]
 
 FORMAT = 1
+RUN = "run.json"
 COMPONENTS = (
     "unit_running", "unit_start", "renewable", "storage", "unserved", "surplus", "reserve_shortage",
 )  # fmt: skip
@@ -329,7 +329,7 @@ def _summaries(run: Run) -> dict[str, Any]:
     length = inputs.period_hours
     at_limit = np.abs(kept.flow) >= inputs.limits.rating - AT_LIMIT
     return {
-        "congestion_hours": (np.abs(priced_of(run).line) > PRICED).sum(axis=0) * length,
+        "congestion_hours": (np.abs(priced_of(run).line) > prices.PRICED).sum(axis=0) * length,
         "hours_at_limit": at_limit.sum(axis=0) * length,
         "ramp_limited_hours": _ramp_limited(run).sum(axis=0) * length,
         "window": run.window,
@@ -423,10 +423,8 @@ def _totals(dataset: xr.Dataset) -> dict[str, float]:
         "surplus_mwh": energy("surplus"),
         "lost_mwh": energy("line_loss"),
         "emissions_t": float(dataset["emissions"].sum()),
-        "congestion_rent": sum(
-            float(dataset[name].sum()) for name in ("congestion_rent", "corridor_rent", "pair_rent")
-        ),
-        "congestion_hours": float(dataset["congestion_hours"].sum()),
+        "congestion_rent": prices.total_rent(dataset),
+        "congestion_hours": prices.total_hours(dataset),
         "starts": float(dataset["unit_start"].sum()),
         "make_whole": float(dataset["make_whole"].sum()),
     }
@@ -453,18 +451,18 @@ def save(
             page(made / "page.html")
 
 
-def refuse_existing(folder: Path, *, force: bool) -> None:
-    """Refuse a folder that is there, unless forced, or that is not the folder of a run."""
+def refuse_existing(folder: Path, *, force: bool, mark: str = RUN) -> None:
+    """Refuse a folder that is there, unless forced and it holds `mark`, the record of its kind."""
     if not folder.exists():
         return
     if not force:
         raise OptionError(
             f"--out, must not exist yet, found {folder}, choose another folder or pass --force"
         )
-    if not folder.is_dir() or (any(folder.iterdir()) and not (folder / "run.json").exists()):
+    if not folder.is_dir() or (any(folder.iterdir()) and not (folder / mark).exists()):
         raise OptionError(
-            f"--force, replaces only the folder of a run, found {folder} without run.json, "
-            "choose another folder"
+            f"--force, replaces only the folder of a {mark.removesuffix('.json')}, found {folder} "
+            f"without {mark}, choose another folder"
         )
 
 
@@ -474,9 +472,11 @@ def write_dataset(dataset: xr.Dataset, path: Path) -> None:
     encoding: dict[Any, dict[str, Any]] = {
         name: {"_FillValue": None, **(compressed if variable.size else {})}
         for name, variable in dataset.data_vars.items()
+        if variable.dtype.kind != "U" and variable.ndim
     }
     for name in ("time", "pair_time"):
-        encoding[name] = {"units": "minutes since 1970-01-01 00:00:00", "dtype": "int64"}
+        if name in dataset.coords:
+            encoding[name] = {"units": "minutes since 1970-01-01 00:00:00", "dtype": "int64"}
     dataset.to_netcdf(path, engine="netcdf4", encoding=encoding)
 
 

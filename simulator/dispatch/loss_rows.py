@@ -26,7 +26,7 @@ from simulator.dispatch.compiled import CompiledFleet
 from simulator.dispatch.injections import InjectionMap
 from simulator.dispatch.inputs import WindowInputs
 from simulator.dispatch.point import Point
-from simulator.dispatch.solver import AT_LOWER, BASIC, LinearSolver
+from simulator.dispatch.solver import BASIC, LOWER, LinearSolver
 
 __all__ = ["LOSS_ACCURACY", "LossRows"]
 
@@ -133,7 +133,7 @@ class LossRows:
     def first_statuses(self) -> Statuses:
         """The statuses rows begin with: the newest tangent holds, array (row,)."""
         statuses = np.full(self.rows.shape, BASIC, dtype=np.int8)
-        statuses[:1] = AT_LOWER
+        statuses[:1] = LOWER
         return statuses.ravel()
 
     def move(self, inputs: WindowInputs, gap: Floats, point: Point, statuses: Statuses) -> Statuses:

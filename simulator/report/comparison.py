@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 
 from simulator.case.wording import number, quoted
 from simulator.errors import OptionError
+from simulator.prices import total_hours, total_rent
 from simulator.report.figures import energy_groups
 from simulator.report.moments import Clock
 from simulator.report.view import View
@@ -36,7 +37,7 @@ TOTALS = {
     "surplus_mwh": ("Spilled at buses", "MWh"),
     "emissions_t": ("Emissions", "t CO\N{SUBSCRIPT TWO}"),
     "congestion_rent": ("Congestion rent", "currency"),
-    "congestion_hours": ("Hours priced, all lines", "h"),
+    "congestion_hours": ("Hours priced, all limits", "h"),
     "starts": ("Starts", "1"),
     "make_whole": ("Make-whole amounts", "currency"),
     "mean_price_per_mwh": ("Mean price, weighted by load", "currency/MWh"),
@@ -178,8 +179,8 @@ def _sums(view: View, hourly: Hourly) -> dict[str, float]:
         "curtailed_mwh": curtailed,
         "surplus_mwh": surplus,
         "emissions_t": float(view.values("emissions").sum()),
-        "congestion_rent": float(view.values("congestion_rent").sum()),
-        "congestion_hours": float(view.values("congestion_hours").sum()),
+        "congestion_rent": total_rent(view.dataset),
+        "congestion_hours": total_hours(view.dataset),
         "starts": float(view.values("unit_start").sum()),
         "make_whole": float(view.values("make_whole").sum()) if view.has("make_whole") else np.nan,
         "mean_price_per_mwh": hourly.mean(),
