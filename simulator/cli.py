@@ -146,6 +146,12 @@ def week(
     checks = audit(found, dataset)
     clock.lap("audit")
     record = results.run_record(finished, dataset, clock.seconds, twin)
+    for each in record["network"]["left_out"]:
+        typer.echo(
+            f"warning: contingency {each['contingency']} was left out in {each['hours']:g} h: "
+            f"{each['reason']}",
+            err=True,
+        )
     record["audit"] = audit_record(checks)
     results.save(
         dataset, record, folder, force=force, page=lambda path: write_page(dataset, record, path)

@@ -19,6 +19,7 @@ from simulator.case.wording import number, quoted
 from simulator.errors import OptionError
 from simulator.prices import total_hours, total_rent
 from simulator.report.figures import energy_groups
+from simulator.report.limits import pair_totals
 from simulator.report.moments import Clock
 from simulator.report.view import View
 
@@ -226,14 +227,17 @@ def _unserved(view: View) -> Floats:
 
 
 def _lines(views: tuple[View, View]) -> pd.DataFrame:
+    first, second = (_limits(view) for view in views)
+    after = {*first.index, *second.index} - {
+        name for view in views for kind in ("line", "corridor") for name in _limit_names(view, kind)
+    }
+    # A line after a contingency is in the dataset only where it is priced: elsewhere its hours are none.
     first, second = (
-        pd.DataFrame({
-            "hours": view.values("congestion_hours"),
-            "limit": view.values("hours_at_limit"),
-            "rent": view.values("congestion_rent").sum(axis=0),
-        }, index=view.names("line"))
-        for view in views
-    )  # fmt: skip
+        each.reindex([*each.index, *(name for name in sorted(after) if name not in each.index)])
+        for each in (first, second)
+    )
+    for each in (first, second):
+        each.loc[sorted(after)] = each.loc[sorted(after)].fillna(0.0)
     frame = _changes(first["hours"], second["hours"])
     for name in ("limit", "rent"):
         frame[f"first_{name}"] = first[name].reindex(frame.index)
@@ -241,6 +245,28 @@ def _lines(views: tuple[View, View]) -> pd.DataFrame:
     return frame.assign(
         status=[_status(*pair) for pair in zip(frame["first"], frame["second"], strict=True)]
     )
+
+
+def _limit_names(view: View, kind: str) -> list[str]:
+    return [name if kind == "line" else f"corridor {name}" for name in view.names(kind)]
+
+
+def _limits(view: View) -> pd.DataFrame:
+    """Return hours and rent of lines, corridors and lines after contingencies, by name."""
+    parts = [
+        pd.DataFrame({
+            "hours": view.values(f"{prefix}congestion_hours"),
+            "limit": view.values(f"{prefix}hours_at_limit"),
+            "rent": view.values(rent).sum(axis=0),
+        }, index=_limit_names(view, kind))
+        for kind, prefix, rent in (
+            ("line", "", "congestion_rent"), ("corridor", "corridor_", "corridor_rent"),
+        )
+    ]  # fmt: skip
+    pairs = pair_totals(view)
+    if len(pairs):
+        parts.append(pairs[["hours", "rent"]].assign(limit=pairs["hours"]))
+    return pd.concat([part for part in parts if len(part)] or parts[:1]).astype(float)
 
 
 def _status(before: float, after: float) -> str:

@@ -44,7 +44,7 @@ __all__ = [
 ]
 
 BOOK = "results.xlsx"
-DIMENSIONS = ("bus", "line", "unit", "plant", "store", "tie", "load", "product")
+DIMENSIONS = ("bus", "line", "corridor", "unit", "plant", "store", "tie", "load", "product")
 """The dimensions whose elements have a table of their own, with what the dataset says of them."""
 
 STUDY_TABLES = ("answers", "durations", "lines")
@@ -134,7 +134,7 @@ def refuse_folder(folder: Path, *, force: bool) -> None:
 
 
 def _is_ours(path: Path) -> bool:
-    tables = {"about", *DIMENSIONS, *VARIABLES, *STUDY_TABLES}
+    tables = {"about", "pair", *DIMENSIONS, *VARIABLES, *STUDY_TABLES}
     ours = {BOOK} | {f"{name}.{kind}" for name in tables for kind in ("csv", "parquet")}
     ours |= {f"{name}.geojson" for name in LAYERS}
     return path.is_file() and path.name in ours
@@ -143,7 +143,12 @@ def _is_ours(path: Path) -> bool:
 def sheets(view: View) -> list[Sheet]:
     """Return a run's tables: what it is about, its elements, then a table a variable."""
     elements = [_elements(view.dataset, name) for name in DIMENSIONS if view.size(name)]
-    names = [str(name) for name, variable in view.dataset.data_vars.items() if variable.size]
+    elements += [_pairs(view)] if view.size("pair") else []
+    names = [
+        str(name)
+        for name, variable in view.dataset.data_vars.items()
+        if variable.size and variable.dims != ("pair",)
+    ]
     return [_about(view), *elements, *(_values(view, name) for name in names)]
 
 
@@ -220,13 +225,30 @@ def _elements(dataset: xr.Dataset, dimension: str) -> Sheet:
     return Sheet(dimension, pd.DataFrame(columns))
 
 
+def _pairs(view: View) -> Sheet:
+    """Return what is priced after contingencies, a row a contingency, line and period."""
+    dataset = view.dataset
+    times = pd.DatetimeIndex(dataset["pair_time"].to_numpy()).tz_localize("UTC")
+    columns: dict[str, Any] = {
+        "time": times.tz_convert(read_clock(dataset).edges.tz),
+        "line": view.labels("pair_line", "pair"),
+        "contingency": view.labels("pair_contingency", "pair"),
+    }
+    for name, variable in dataset.data_vars.items():
+        if variable.dims == ("pair",):
+            heading = str(name).removeprefix("pair_").replace("_", " ")
+            columns[f"{heading} [{_unit(view, str(name))}]"] = variable.to_numpy() + 0
+    return Sheet("pair", pd.DataFrame(columns))
+
+
 def _values(view: View, name: str) -> Sheet:
     """Return a variable as a table: a row a period, or a row an element if it has no time.
 
     Where it has two kinds of element, as reserve by unit and product, a column is a pair of them.
     """
     variable, unit = view.dataset[name], _unit(view, name)
-    values = _in_words(variable) if "flag_meanings" in variable.attrs else variable.to_numpy() + 0
+    spoken = "flag_meanings" in variable.attrs or name == "main_cause"
+    values = _in_words(view, name) if spoken else variable.to_numpy() + 0
     if variable.dims[0] == "day":
         return Sheet(name, _by_day(view, name, values))
     if "time" not in variable.dims:
@@ -234,7 +256,7 @@ def _values(view: View, name: str) -> Sheet:
         return Sheet(
             name, pd.DataFrame({dimension: view.names(dimension), f"{name} [{unit}]": values})
         )
-    unit = "in words" if "flag_meanings" in variable.attrs else unit
+    unit = "in words" if spoken else unit
     parts = product(*(view.names(str(dimension)) for dimension in variable.dims[1:]))
     headings = [f"{', '.join(each) or name} [{unit}]" for each in parts]
     frame = pd.DataFrame(values.reshape(len(values), -1), columns=headings)
@@ -242,8 +264,11 @@ def _values(view: View, name: str) -> Sheet:
     return Sheet(name, frame)
 
 
-def _in_words(variable: xr.DataArray) -> Any:
-    """Return codes as the words they stand for."""
+def _in_words(view: View, name: str) -> Any:
+    """Return codes as the words they stand for, and a cause by its name."""
+    variable = view.dataset[name]
+    if name == "main_cause":
+        return np.array([*view.names("cause"), ""], dtype=str)[variable.to_numpy()]
     words = [word.replace("_", " ") for word in variable.attrs["flag_meanings"].split()]
     return np.array(words)[variable.to_numpy()]
 

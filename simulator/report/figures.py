@@ -252,10 +252,21 @@ def price_picture(view: View) -> Figure:
     return {
         "buses": [plotly_text(name) for name in view.names("bus")],
         "zones": [plotly_text(name) for name in view.labels("bus_zone", "bus")],
-        "price": rounded(view.steps.mean(price).T, 2), "parts": parts,
+        "price": rounded(view.steps.mean(price).T, 2), "parts": parts, "causes": _causes(view),
         "order": ranked(price.mean(axis=0)), "scale": _scale(view.steps.mean(price)),
         "unit": plotly_text(view.price_unit),
     }  # fmt: skip
+
+
+def _causes(view: View) -> Figure | None:
+    """Return which limit most of each congestion part is of, and how much of it; nothing for means."""
+    if view.steps.averaged or not view.size("cause"):
+        return None
+    return {
+        "names": [plotly_text(name) for name in view.names("cause")],
+        "which": view.values("main_cause").astype(int).T.tolist(),
+        "part": rounded(view.values("main_cause_part").T, 2),
+    }
 
 
 def _compact(values: Floats) -> Figure:

@@ -9,7 +9,8 @@ from typing import Any
 
 import numpy as np
 
-from simulator.report import figures, plans, tables
+from simulator.prices import total_rent
+from simulator.report import figures, limits, plans, tables
 from simulator.report.figures import Figure
 from simulator.report.tables import NEGLIGIBLE, Table
 from simulator.report.view import View
@@ -32,8 +33,8 @@ COMMITMENT = {
 }
 LIMITS = {
     "none": "none: flows are shown but not limited",
-    "lines": "the rating of every line",
-    "secure": "the rating of every line, also after each contingency",
+    "lines": "the rating of every line, and corridors",
+    "secure": "the rating of every line, also after each contingency, and corridors",
 }
 
 FLEET = "The fleet, on and off"
@@ -75,7 +76,7 @@ def sections(view: View) -> list[Section]:
     """Return the sections of a run's page, in their order; those without a subject are left out."""
     made = [
         _about(view), _totals(view), _cost(view), _dispatch(view), _ties(view), _map(view),
-        _prices(view), _congestion(view), _spread(view), _stores(view), _reserves(view),
+        _prices(view), _congestion(view), _losses(view), _spread(view), _stores(view), _reserves(view),
         _ramps(view), _units(view), _fleet(view),
     ]  # fmt: skip
     return [section for section in made if section is not None]
@@ -149,11 +150,12 @@ def _settings(view: View) -> list[tuple[str, str]]:
     settings = view.run.get("settings") or {}
     horizon, network = settings.get("horizon") or {}, settings.get("network") or {}
     mode = str(_setting(view, "commitment", "mode"))
-    limits = str(_setting(view, "network", "limits", attribute="limits"))
+    held = str(_setting(view, "network", "limits", attribute="limits"))
     facts = [
         ("On and off", COMMITMENT.get(mode, mode)),
-        ("Line limits", LIMITS.get(limits, limits)),
+        ("Network limits", LIMITS.get(held, held)),
     ]
+    facts += _contingencies(view)
     if "losses" in network:
         facts.append(("Losses", "modelled" if network["losses"] else "not modelled"))
     if {"window_hours", "keep_hours"} <= set(horizon):
@@ -169,6 +171,19 @@ def _settings(view: View) -> list[tuple[str, str]]:
 def _gap(gap: float, window: int, late: int) -> str:
     ended = f"; time ran out in {count(late, 'window')}" if late else ""
     return f"at most {percent(gap, 3)}, in window {window}{ended}"
+
+
+def _contingencies(view: View) -> list[tuple[str, str]]:
+    """Say how many contingencies the run holds, and which it left out."""
+    held = view.run.get("network") or {}
+    if not held.get("contingencies"):
+        return []
+    text = f"{held['contingencies']:,}"
+    left_out = [
+        f"{each['contingency']} in {span_of_hours(each['hours'])}, {each['reason']}"
+        for each in held.get("left_out", ())
+    ]
+    return [("Contingencies", f"{text}; left out: {listed(left_out)}" if left_out else text)]
 
 
 def _setting(view: View, section: str, name: str, attribute: str = "") -> Any:
@@ -204,7 +219,7 @@ def _totals(view: View) -> Section:
     available = float(view.energy("renewable_available").sum())
     share = f"{number(100 * lost / available, 1)} % of available" if available else ""
     emitted = float(view.values("emissions").sum())
-    rent = float(view.values("congestion_rent").sum())
+    rent = total_rent(view.dataset)
     shown = [
         ("Cost", money(float(view.values("cost").sum())), view.currency),
         ("Served", amount(demand - unserved), "MWh"),
@@ -314,7 +329,10 @@ def _prices(view: View) -> Section | None:
 
 def _parts_in_words(parts: Mapping[str, Any]) -> str:
     if parts:
-        return f"Point at a cell to see its price and its parts: {listed(list(parts))}."
+        return (
+            f"Point at a cell to see its price, its parts ({listed(list(parts))}) and the limit that most of "
+            "the congestion part is of."
+        )
     return "This run does not hold the parts of prices, only the prices."
 
 
@@ -347,7 +365,32 @@ def _congestion(view: View) -> Section | None:
         label = f"{which} lines from their most to their least loaded hour, % of rating"
         charts = [Chart("duration", label, figure, [tables.duration_of_loading(view, shown)])]
     ranking = [tables.congested_lines(view)] if congested else []
+    if view.size("pair"):
+        text.append(_after_losses_in_words(view))
+        ranking.append(limits.after_losses(view))
+    if view.size("corridor"):
+        ranking.append(limits.corridors(view))
     return Section("congestion", "Congested lines", text, tables=ranking, charts=charts)
+
+
+def _after_losses_in_words(view: View) -> str:
+    totals = limits.pair_totals(view)
+    lines = count(totals["line"].nunique(), "line")
+    worst = totals.index[0]
+    return f"{lines} had to make room for a contingency, most often {worst}."
+
+
+def _losses(view: View) -> Section | None:
+    lost = float(view.energy("line_loss").sum())
+    if lost <= NEGLIGIBLE:
+        return None
+    demand = float(view.energy("load_demand").sum())
+    share = f", {number(100 * lost / demand, 1)} % of what loads asked for" if demand else ""
+    accuracy = (view.run.get("network") or {}).get("loss_accuracy_mw")
+    text = [f"Lines lost {amount(lost)} MWh{share}; half of it is drawn at either end of a line."]
+    if accuracy is not None:
+        text.append(f"Losses are those of the flows to within {float(accuracy):.0e} MW an hour.")
+    return Section("losses", "Losses", text, tables=[limits.line_losses(view)])
 
 
 def _most_loaded(view: View) -> list[int]:

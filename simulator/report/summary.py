@@ -13,6 +13,7 @@ from rich.console import Console
 from rich.markup import escape
 from rich.table import Table
 
+from simulator.prices import PRICED
 from simulator.report.plans import largest_gap
 
 __all__ = ["print_summary"]
@@ -32,6 +33,8 @@ def print_summary(dataset: xr.Dataset, record: Mapping[str, Any], console: Conso
         _buses(dataset),
         _hours(dataset),
         _lines(dataset),
+        _corridors(dataset),
+        _after_losses(dataset),
         _curtailment(dataset),
         _reserves(dataset),
     ):
@@ -56,6 +59,9 @@ def _heading(dataset: xr.Dataset, record: Mapping[str, Any], console: Console) -
         f"{totals['served_mwh']:,.0f} MWh, curtailed {totals['curtailed_mwh']:,.0f} MWh, spilled "
         f"{totals['surplus_mwh']:,.1f} MWh, emitted {totals['emissions_t']:,.0f} t"
     )
+    lost = totals.get("lost_mwh", 0.0)
+    if lost > NEGLIGIBLE:
+        console.print(f"lost in lines {lost:,.0f} MWh")
     if "congestion_cost" in totals:
         console.print(
             f"congestion cost {totals['congestion_cost']:,.0f} {escape(dataset.attrs['currency'])}: "
@@ -218,6 +224,35 @@ def _lines(dataset: xr.Dataset) -> Table:
             f"{mean:,.2f}",
             f"{line.rent:,.0f}",
         )
+    return table
+
+
+def _corridors(dataset: xr.Dataset) -> Table:
+    currency = dataset.attrs["currency"]
+    table = _table("Congested corridors", "corridor", "hours", "hours at limit", f"rent {currency}")
+    hours, limit = (
+        dataset[f"corridor_{name}"].to_series() for name in ("congestion_hours", "hours_at_limit")
+    )
+    rent = dataset["corridor_rent"].sum("time").to_series()
+    for name in hours[hours > 0].sort_values(ascending=False)[: 2 * SHOWN].index:
+        table.add_row(
+            escape(str(name)), f"{hours[name]:g}", f"{limit[name]:g}", f"{rent[name]:,.0f}"
+        )
+    return table
+
+
+def _after_losses(dataset: xr.Dataset) -> Table:
+    currency, length = dataset.attrs["currency"], dataset.attrs["period_hours"]
+    table = _table(
+        "Congested after a contingency", "line after loss of", "hours", f"rent {currency}"
+    )
+    frame = pd.DataFrame({
+        "pair": dataset["pair"].to_numpy().astype(str), "rent": dataset["pair_rent"].to_numpy(),
+        "hours": length * (dataset["pair_shadow_price"].to_numpy() > PRICED),
+    })  # fmt: skip
+    totals = frame.groupby("pair").sum().sort_values(["hours", "rent"], ascending=False)
+    for row in totals[: 2 * SHOWN].itertuples():
+        table.add_row(escape(str(row.Index)), f"{row.hours:g}", f"{row.rent:,.0f}")
     return table
 
 

@@ -106,8 +106,42 @@ def network(found: dict[str, np.ndarray]) -> dict[str, np.ndarray]:
         "line_flow": flow, "line_rating": rating, "line_shadow_price": shadow,
         "congestion_rent": shadow * np.abs(flow), "price_energy": energy, "price_congestion": congestion,
         "price_loss": np.zeros_like(energy), "price": energy + congestion,
+        "line_loss": 2e-4 * flow**2, **limits_beyond_lines(flow, congestion),
         "congestion_hours": (shadow > 1e-6).sum(axis=0).astype(float),
         "hours_at_limit": at_limit.sum(axis=0).astype(float),
+    }  # fmt: skip
+
+
+PAIRS = [(1, "L3 d", 9), (1, "L3 d", 10), (5, "storm <i>", 20)]
+"""Line, contingency and hour of what is priced after a loss."""
+
+
+def line_name(line: int) -> str:
+    return f"L{line} {'abcdef'[line]}"
+
+
+def limits_beyond_lines(flow: np.ndarray, congestion: np.ndarray) -> dict[str, np.ndarray]:
+    """Return a corridor of two lines, a few pairs, and which limit most of a price is of."""
+    total = flow[:, 0] + flow[:, 1]
+    limit = np.full((len(flow), 1), np.quantile(np.abs(total), 0.9))
+    shadow = np.where(np.abs(total)[:, None] >= limit, 3.5, 0.0)
+    there = [hour < len(flow) for _, _, hour in PAIRS]
+    rating = np.array([80.0, 80.0, 120.0])[there]
+    price = np.array([12.0, 7.0, 2.5])[there]
+    side = np.array([1.0, 1.0, -1.0])[there]
+    cause = np.where(np.abs(congestion) > 1e-6, 0, -1)
+    cause[20:21] = 1
+    return {
+        "corridor_flow": total[:, None], "corridor_forward_limit": limit, "corridor_reverse_limit": limit,
+        "corridor_shadow_price": shadow, "corridor_limit_side": np.sign(total)[:, None] * (shadow > 0),
+        "corridor_rent": shadow * np.abs(total)[:, None],
+        "corridor_congestion_hours": (shadow > 0).sum(axis=0).astype(float),
+        "corridor_hours_at_limit": (shadow > 0).sum(axis=0).astype(float),
+        "pair_flow": rating * side, "pair_rating": rating,
+        "pair_shadow_price": price, "pair_limit_side": side,
+        "pair_rent": rating * price,
+        "security_hours": np.bincount(np.array([1, 1, 5])[there], minlength=len(LINES)).astype(float),
+        "main_cause": cause, "main_cause_part": np.where(cause >= 0, congestion, 0.0),
     }  # fmt: skip
 
 
@@ -151,7 +185,7 @@ def make_whole(found: dict[str, np.ndarray], days: np.ndarray) -> np.ndarray:
 def coordinates(start: str, hours: int, period_hours: float) -> dict[str, Any]:
     """Return the coordinates of the contract."""
     step = pd.Timedelta(hours=period_hours)
-    text = np.array
+    text, pairs = np.array, [pair for pair in PAIRS if pair[2] < hours]
     return {
         "time": ("time", pd.date_range(start, periods=hours, freq=step)),
         "bus": ("bus", text(BUSES)), "bus_zone": ("bus", text(["north", "north", "", "south", "south"])),
@@ -168,6 +202,12 @@ def coordinates(start: str, hours: int, period_hours: float) -> dict[str, Any]:
         "plant_bus": ("plant", text([BUSES[bus] for bus in PLANT_BUS])),
         "plant_capacity_mw": ("plant", [70.0, 110.0]), "store": ("store", text(["Quarry cells"])),
         "store_bus": ("store", text([BUSES[4]])), "store_energy_mwh": ("store", [80.0]),
+        "corridor": ("corridor", text(["north <b>edge</b>"])),
+        "pair": ("pair", text([f"{line_name(line)} after loss of {lost}" for line, lost, _ in pairs], str)),
+        "pair_line": ("pair", text([line_name(line) for line, _, _ in pairs], str)),
+        "pair_contingency": ("pair", text([lost for _, lost, _ in pairs], str)),
+        "pair_time": ("pair", pd.date_range(start, periods=hours, freq=step)[[at for _, _, at in pairs]]),
+        "cause": ("cause", text(["L1 b", "L5 f after loss of storm <i>"])),
         "tie": ("tie", text(["Sound cable"])), "tie_from_bus": ("tie", text([BUSES[TIE[0]]])),
         "tie_to_bus": ("tie", text([BUSES[TIE[1]]])),
         "load": ("load", text(["Vinna town", "Mill <b>& weir</b>", "Karsholm town", "Tarn works"])),

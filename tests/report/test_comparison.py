@@ -75,7 +75,8 @@ def test_totals_are_sums_of_the_datasets(dataset, other):
     assert totals.loc["served_mwh", "change"] == pytest.approx(-7.5)
     assert totals.loc["emissions_t", "change"] == pytest.approx(float(dataset["emissions"].sum()))
     assert totals.loc["surplus_mwh", "change"] == 4.0
-    rent = float(dataset["congestion_rent"].sum())
+    limits = ("congestion_rent", "corridor_rent", "pair_rent")
+    rent = sum(float(dataset[name].sum()) for name in limits)
     assert totals.loc["congestion_rent", "first"] == pytest.approx(rent)
     assert totals.loc["cost", "unit"] == "EUR"
     assert totals.loc["mean_price_per_mwh", "unit"] == "EUR/MWh"
@@ -123,6 +124,18 @@ def test_a_technology_of_one_run_counts_as_nothing_in_the_other(dataset, other):
     assert found.loc["fuel cell", "second"] == found.loc["steam", "first"] > 0
 
 
+def test_corridors_and_lines_after_losses_are_compared_like_lines(dataset, other):
+    """A pair is in a dataset only where it is priced: in a run without it, its hours are none."""
+    other["corridor_congestion_hours"][:] += 3.0
+    found = compared(dataset, other.isel(pair=slice(1, None))).lines
+    assert found.loc["corridor north <b>edge</b>", "change"] == 3.0
+    twice, once = "L1 b after loss of L3 d", "L5 f after loss of storm <i>"
+    assert found.loc[twice, ["first", "second", "status"]].tolist() == [2.0, 1.0, "fewer hours"]
+    assert found.loc[once, "status"] == "as many hours"
+    gone = compared(dataset, other.isel(pair=slice(0, 0))).lines
+    assert gone.loc[twice, ["second", "status"]].tolist() == [0.0, "no longer congested"]
+
+
 def test_prices_by_bus_show_the_largest_rises_and_falls(dataset, other):
     other["price"][:] = dataset["price"] + np.array([5.0, -3.0, 0.0, 1.5, 0.001])
     found = compared(dataset, other)
@@ -138,11 +151,12 @@ def test_lines_are_told_by_how_their_hours_change(dataset, other):
     for run, name in ((dataset, "first"), (other, "second")):
         run["congestion_hours"] = ("line", np.array(hours[name], dtype=float))
     found = compared(dataset, other)
-    assert found.lines["status"].tolist() == [
+    own = found.lines.loc[dataset["line"].values]
+    assert own["status"].tolist() == [
         "newly congested", "no longer congested", "more hours", "fewer hours", "as many hours",
         "as many hours",
     ]  # fmt: skip
-    assert found.lines["change"].tolist() == [2.0, -9.0, 2.0, -3.0, 0.0, 0.0]
+    assert own["change"].tolist() == [2.0, -9.0, 2.0, -3.0, 0.0, 0.0]
     document = page(found)
     captions = [found.get("aria-label", "") for _, found in document.elements]
     for caption in ("Newly congested", "No longer congested", "Congested in more hours",

@@ -68,11 +68,15 @@ def finite(values) -> np.ndarray:
 
 
 def filled(dataset: xr.Dataset) -> list[str]:
-    return [str(name) for name in dataset.data_vars if name not in EMPTY]
+    return [
+        str(name)
+        for name, variable in dataset.data_vars.items()
+        if name not in EMPTY and variable.dims != ("pair",)
+    ]
 
 
 def numbered(dataset: xr.Dataset) -> list[str]:
-    return [name for name in filled(dataset) if name != "unit_reason"]
+    return [name for name in filled(dataset) if name not in ("unit_reason", "main_cause")]
 
 
 def local_times(dataset: xr.Dataset) -> pd.DatetimeIndex:
@@ -142,6 +146,26 @@ def test_codes_are_exported_in_words(hostile, folders, book):
     assert frame.columns[1] == "Peatworks 1 [in words]"
     assert read_csv(folders["csv"], "unit_reason").iloc[:, 1:].to_numpy().tolist() == expected
     assert [row[2:] for row in rows_of(book["unit_reason"])[1:]] == expected
+
+
+def test_what_is_priced_after_a_loss_is_one_table(hostile, folders, book):
+    frame = pd.read_parquet(folders["parquet"] / "pair.parquet")
+    assert frame.columns.tolist() == [
+        "time", "line", "contingency", "flow [MW]", "rating [MW]", "shadow price [EUR/MWh]",
+        "limit side [1]", "rent [EUR]",
+    ]  # fmt: skip
+    assert str(frame["time"].dt.tz) == "Europe/Dublin"
+    times = pd.DatetimeIndex(hostile["pair_time"].to_numpy()).tz_localize("UTC")
+    assert list(frame["time"]) == list(times.tz_convert("Europe/Dublin"))
+    assert frame["rent [EUR]"].tolist() == hostile["pair_rent"].to_numpy().tolist()
+    assert len(read_csv(folders["csv"], "pair")) == len(rows_of(book["pair"])) - 1 == len(frame)
+
+
+def test_causes_are_exported_by_name(hostile, folders):
+    frame = pd.read_parquet(folders["parquet"] / "main_cause.parquet").iloc[:, 1:].to_numpy()
+    names = [*hostile["cause"].to_numpy().tolist(), ""]
+    expected = [[names[code] for code in row] for row in hostile["main_cause"].to_numpy().tolist()]
+    assert frame.tolist() == expected
 
 
 def test_amounts_by_day_have_a_row_a_day(hostile, book):
@@ -395,6 +419,7 @@ def test_an_unknown_format_is_refused(dataset, run, tmp_path):
 
 def test_what_is_too_large_for_a_sheet_is_refused(dataset, run, tmp_path, monkeypatch):
     monkeypatch.setattr(export, "MOST_COLUMNS", 7)
+    dataset = dataset.isel(pair=slice(0, 0))
     with pytest.raises(OptionError, match="found 49 rows and 8 columns of line_flow"):
         export_run(dataset, run, "xlsx", tmp_path / "out")
     assert list(tmp_path.iterdir()) == []

@@ -14,6 +14,7 @@ import pytest
 import xarray as xr
 
 from simulator.report.page import CAUTION, page_html, write_page
+from simulator.report.wording import amount
 from tests.report.conftest import BUSES, HOSTILE, record, results
 from tests.report.document import Document, read
 
@@ -33,9 +34,25 @@ def headings(document: Document) -> list[str]:
 
 def test_sections_come_in_their_order(document):
     assert headings(document) == [
-        "unserved", "run", "totals", "cost", "dispatch", "ties", "map", "prices", "congestion", "spread",
-        "stores", "ramps", "units", "fleet", "terms",
+        "unserved", "run", "totals", "cost", "dispatch", "ties", "map", "prices", "congestion", "losses",
+        "spread", "stores", "ramps", "units", "fleet", "terms",
     ]  # fmt: skip
+
+
+def test_limits_beyond_lines_and_losses_are_told(dataset, document):
+    """The fixture has a corridor, a line priced twice after one loss and another once."""
+    text = document.text
+    assert "2 lines had to make room for a contingency, most often L1 b after loss of L3 d." in text
+    assert "north <b>edge</b>" in text
+    assert "Lines priced after a contingency" in [
+        each.get("aria-label") for _, each in document.elements
+    ]
+    lost = float(dataset["line_loss"].sum())
+    assert f"Lines lost {amount(lost)} MWh" in text
+    causes = json.loads(document.data())["figures"]["prices"]["causes"]
+    assert causes["names"] == ["L1 b", "L5 f after loss of storm &lt;i&gt;"]
+    assert causes["which"] == dataset["main_cause"].to_numpy().T.tolist()
+    assert np.allclose(causes["part"], dataset["main_cause_part"].to_numpy().T, atol=0.005)
 
 
 def test_unserved_load_comes_first_in_words(document):
@@ -94,7 +111,8 @@ def test_a_bare_record_is_enough(dataset, run):
 
 def test_totals_are_sums_of_the_dataset(dataset, document):
     cost = float(dataset["cost"].sum())
-    rent = float(dataset["congestion_rent"].sum())
+    limits = ("congestion_rent", "corridor_rent", "pair_rent")
+    rent = sum(float(dataset[name].sum()) for name in limits)
     assert f"Cost {cost:,.0f} EUR" in document.text
     assert f"Congestion rent {rent:,.0f} EUR" in document.text
     assert f"Total {cost:,.0f}" in document.text

@@ -256,10 +256,17 @@
 
   function pricePicture(given) {
     const parts = ["energy", "congestion", "loss"].filter((part) => part in given.parts);
+    const cause = (bus, i) => {
+      const which = given.causes ? given.causes.which[bus][i] : -1;
+      if (which < 0) return "";
+      const part = given.causes.part[bus][i].toLocaleString("en-US", { minimumFractionDigits: 2 });
+      return `<br>mostly ${given.causes.names[which]} ${part}`;
+    };
     const custom = given.order.map((bus) =>
-      labels.map((label, i) => parts.map((part) => partAt(given.parts[part], bus)[i])),
+      labels.map((label, i) => [...parts.map((part) => partAt(given.parts[part], bus)[i]), cause(bus, i)]),
     );
-    const detail = parts.map((part, i) => `<br>${part} %{customdata[${i}]:,.2f}`).join("");
+    const shown = parts.map((part, i) => `<br>${part} %{customdata[${i}]:,.2f}`).join("");
+    const detail = parts.length ? `${shown}%{customdata[${parts.length}]}` : "";
     const picture = {
       type: "heatmap",
       x: labels,
