@@ -1,0 +1,49 @@
+"""The benchmarks measure what they say: their cases are drawn from a seed, their optima are the same."""
+
+import numpy as np
+import pandas as pd
+import pytest
+
+from simulator.audit import audit
+from simulator.results import to_dataset
+from tests.benchmarks.by_hand_matrix import programs, solve_by_matrix
+from tests.benchmarks.cases import Subject
+from tests.benchmarks.synthetic import synthetic_tables, write_synthetic
+
+BUSES = 40
+
+
+@pytest.fixture(scope="module")
+def subject(tmp_path_factory):
+    return Subject(write_synthetic(tmp_path_factory.mktemp("synthetic"), BUSES))
+
+
+def test_a_seed_draws_one_case():
+    first, again, other = (synthetic_tables(BUSES, seed) for seed in (1, 1, 2))
+    for path, table in first.items():
+        pd.testing.assert_frame_equal(table, again[path])
+        assert not table.equals(other[path]), path
+
+
+@pytest.mark.parametrize("buses", [BUSES, 300])
+def test_a_synthetic_network_is_as_large_as_asked_and_near_its_limits(buses):
+    tables = synthetic_tables(buses)
+    size = {path.split("/")[1].removesuffix(".csv"): len(table) for path, table in tables.items()}
+    assert size["buses"] == buses
+    assert size["lines"] == pytest.approx(1.5 * buses, abs=1)
+    assert size["units"] == buses // 5
+    assert size["renewables"] == buses // 10
+    assert size["loads"] > buses / 2
+
+
+def test_the_smallest_case_runs_and_its_audit_passes(subject):
+    checks = audit(subject.case, to_dataset(subject.finished))
+    assert [check.name for check in checks if not check.passed] == []
+    assert subject.rolled[2].counts.line_rows > 0
+
+
+@pytest.mark.parametrize("from_basis", [False, True])
+def test_the_matrix_by_hand_has_the_engines_optimum(subject, from_basis):
+    few = programs(subject)[:2]
+    optima = solve_by_matrix(few, 100.0, from_basis=from_basis)
+    np.testing.assert_allclose(optima, subject.optima[:2], rtol=1e-9)
