@@ -1,14 +1,14 @@
 """How long solving by hand may take.
 
-Public names: `Budget`, `OverBudget`.
+Public names: `Budget`, `OverBudgetError`.
 """
 
 import time
 
-__all__ = ["Budget", "OverBudget"]
+__all__ = ["Budget", "OverBudgetError"]
 
 
-class OverBudget(Exception):
+class OverBudgetError(Exception):
     """What was measured would take longer than its budget."""
 
     def __init__(self, seconds: float) -> None:
@@ -23,8 +23,8 @@ class Budget:
         self.seconds, self._end = seconds, time.perf_counter() + seconds
 
     def left(self) -> float:
-        """Return the seconds left; raise `OverBudget` if there are none."""
+        """Return the seconds left; raise `OverBudgetError` if there are none."""
         left = self._end - time.perf_counter()
         if left <= 0:
-            raise OverBudget(self.seconds)
+            raise OverBudgetError(self.seconds)
         return left

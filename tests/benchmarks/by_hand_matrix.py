@@ -21,7 +21,7 @@ from simulator.dispatch.compiled import compile_fleet
 from simulator.dispatch.fleet import fleet_data
 from simulator.dispatch.limits import InjectionMap
 from simulator.grid import Network
-from tests.benchmarks.budget import Budget, OverBudget
+from tests.benchmarks.budget import Budget, OverBudgetError
 from tests.benchmarks.cases import Subject
 
 __all__ = ["AllAngles", "Program", "programs", "solve_by_matrix"]
@@ -134,7 +134,7 @@ class _Solver:
     """One HiGHS object; silent, on one thread, otherwise as it comes."""
 
     def __init__(self) -> None:
-        self.highs: Any = _Quiet()
+        self.highs: Any = _Quiet()  # type: ignore[no-untyped-call]
         self.highs.setOptionValue("output_flag", False)
         self.highs.setOptionValue("threads", 1)
         self._last: Program | None = None
@@ -174,7 +174,7 @@ class _Solver:
         self.highs.run()
         status = self.highs.getModelStatus()
         if status == highspy.HighsModelStatus.kTimeLimit:
-            raise OverBudget(budget.seconds)
+            raise OverBudgetError(budget.seconds)
         if status != highspy.HighsModelStatus.kOptimal:
             raise RuntimeError(f"the matrix by hand ended with status {status.name}")
         return float(self.highs.getInfo().objective_function_value)

@@ -19,7 +19,7 @@ from pyomo.contrib.appsi.solvers import Highs
 from simulator.dispatch import State, WindowInputs
 from simulator.dispatch.fleet import FleetData, fleet_data
 from simulator.grid import Network
-from tests.benchmarks.budget import Budget, OverBudget
+from tests.benchmarks.budget import Budget, OverBudgetError
 from tests.benchmarks.cases import Subject
 
 __all__ = ["solve_by_pyomo", "window_model"]
@@ -223,7 +223,7 @@ def _optimum(model: Model, budget: Budget) -> float:
     solver.highs_options = {"threads": 1}
     result = solver.solve(model)
     if result.termination_condition == TerminationCondition.maxTimeLimit:
-        raise OverBudget(budget.seconds)
+        raise OverBudgetError(budget.seconds)
     if result.termination_condition != TerminationCondition.optimal:
         raise RuntimeError(f"the model by hand ended with {result.termination_condition}")
     return float(result.best_feasible_objective)

@@ -11,7 +11,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
-from tests.benchmarks.budget import OverBudget
+from tests.benchmarks.budget import OverBudgetError
 from tests.benchmarks.cases import Subject
 from tests.benchmarks.phases import BY_HAND, PHASES, SIX_WINDOWS
 
@@ -68,7 +68,7 @@ def _once(subject: Subject, result: Measured) -> None:
     wall, processor = time.perf_counter(), time.process_time()
     try:
         optima = work()
-    except OverBudget as over:
+    except OverBudgetError as over:
         result.over = over.seconds
         return
     result.processor.append(time.process_time() - processor)

@@ -13,6 +13,7 @@ costs, ramps and minimum times are of the usual order (common practice, no sourc
 from collections.abc import Mapping
 from pathlib import Path
 
+import networkx as nx
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
@@ -91,7 +92,7 @@ def synthetic_tables(buses: int, seed: int = 1) -> Mapping[str, pd.DataFrame]:
     flow = _flows(ends, reactance, injection)
     return {
         "network/buses.csv": _buses(points),
-        "network/lines.csv": _lines(ends, reactance, _ratings(random, ends, flow, buses)),
+        "network/lines.csv": _lines(ends, reactance, _ratings(random, ends, flow)),
         "fleet/units.csv": units, "fleet/offers.csv": offers, "fleet/renewables.csv": plants,
         "demand/loads.csv": loads, "hourly/load.csv": _hourly(load_profiles),
         "hourly/weather.csv": _hourly(plant_profiles),
@@ -268,12 +269,12 @@ def _flows(ends: Integers, reactance: Floats, injection: Floats) -> Floats:
     return flow
 
 
-def _ratings(random: Random, ends: Integers, flow: Floats, buses: int) -> Floats:
+def _ratings(random: Random, ends: Integers, flow: Floats) -> Floats:
     """Return ratings, array (line,), MW; lines whose loss splits the network carry their peak."""
     size = np.abs(flow)
     highest = np.maximum(size.max(axis=0), 5.0)
     headroom = random.uniform(0.7, 2.2, len(ends))
-    sole = _bridges(ends, buses)
+    sole = _bridges(ends)
 
     def ratings(factor: float) -> Floats:
         return highest * np.where(sole, 1.5, np.maximum(factor * headroom, 0.5))
@@ -286,24 +287,10 @@ def _ratings(random: Random, ends: Integers, flow: Floats, buses: int) -> Floats
     return ratings(high).round(1)
 
 
-def _bridges(ends: Integers, buses: int) -> NDArray[np.bool_]:
-    """Tell which lines lie on no loop: those whose ends a walk of the graph joins in no other way."""
-    # A random weight on every line outside a spanning tree, summed over the loops through each line of
-    # the tree, is zero (but for luck) only where there is no loop.
-    random = np.random.default_rng(0)
-    graph = sparse.coo_array((np.ones(len(ends)), ends.T), shape=(buses, buses)).tocsr()
-    order, parent = csgraph.breadth_first_order(graph, 0, directed=False)
-    up = np.where(parent >= 0, parent, 0)
-    tree = {(min(bus, up[bus]), max(bus, up[bus])) for bus in order[1:].tolist()}
-    in_tree = np.array([(one, other) in tree for one, other in ends.tolist()])
-    weight = np.zeros(buses)
-    loose = random.random(int((~in_tree).sum())) + 1.0
-    np.add.at(weight, ends[~in_tree, 0], loose)
-    np.subtract.at(weight, ends[~in_tree, 1], loose)
-    for bus in order[:0:-1].tolist():
-        weight[up[bus]] += weight[bus]
-    below = np.where(up[ends[:, 0]] == ends[:, 1], ends[:, 0], ends[:, 1])
-    return in_tree & (np.abs(weight[below]) < 1e-6)
+def _bridges(ends: Integers) -> NDArray[np.bool_]:
+    """Tell which lines lie on no loop, array (line,)."""
+    found = {frozenset(pair) for pair in nx.bridges(nx.Graph(ends.tolist()))}
+    return np.array([frozenset(pair) in found for pair in ends.tolist()])
 
 
 def _lines(ends: Integers, reactance: Floats, rating: Floats) -> pd.DataFrame:

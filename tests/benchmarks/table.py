@@ -28,10 +28,9 @@ def table(record: Mapping[str, Any]) -> Table:
 
 
 def _title(record: Mapping[str, Any]) -> str:
-    return (
-        f"{record['case']}: {record['buses']:,} buses, {record['lines']:,} lines; at most "
-        f"{record['peak_memory_gb']:.1f} GB; {record['processors']} processors, load {record['load_average']:.1f}"
-    )
+    size = f"{record['case']}: {record['buses']:,} buses, {record['lines']:,} lines"
+    machine = f"{record['processors']} processors, load {record['load_average']:.1f}"
+    return f"{size}; {record['peak_memory_gb']:.1f} GB at most; {machine}"
 
 
 def _row(phase: Mapping[str, Any], engine: Mapping[str, Any] | None) -> tuple[str, ...]:
