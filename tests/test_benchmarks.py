@@ -1,5 +1,7 @@
 """The benchmarks measure what they say: their cases are drawn from a seed, their optima are the same."""
 
+from copy import copy
+
 import numpy as np
 import pandas as pd
 import pyomo.environ as pyo
@@ -12,6 +14,7 @@ from simulator.results import to_dataset
 from tests.benchmarks.by_hand_matrix import programs, solve_by_matrix
 from tests.benchmarks.by_hand_pyomo import window_model
 from tests.benchmarks.cases import Subject
+from tests.benchmarks.measure import measure
 from tests.benchmarks.synthetic import CLOSE, synthetic_tables, write_synthetic
 from tests.dispatch.running import finished
 
@@ -65,3 +68,11 @@ def test_the_pyomo_model_by_hand_has_the_engines_optimum(subject):
     model = window_model(network, subject.windows[1], state)
     Highs().solve(model)
     assert pyo.value(model.cost) == pytest.approx(subject.optima[1], rel=1e-9)
+
+
+def test_a_way_by_hand_over_its_budget_is_said_to_be(subject):
+    hasty = copy(subject)
+    hasty.budget = 1e-6
+    (result,) = measure("small", hasty, ["by hand: matrix"], 2)
+    assert result.over == 1e-6
+    assert result.seconds == []

@@ -34,6 +34,8 @@ def _title(record: Mapping[str, Any]) -> str:
 
 
 def _row(phase: Mapping[str, Any], engine: Mapping[str, Any] | None) -> tuple[str, ...]:
+    if phase["failed"] is not None:
+        return phase["phase"], "failed", "", "", "", phase["failed"]
     if phase["over"] is not None:
         over = f"over the budget of {phase['over']:g}"
         return phase["phase"], over, "", "", _ratio(phase["over"], engine, "> "), ""
