@@ -103,16 +103,8 @@ class AllAngles:
 
     def _fleet_rows(self, inputs: WindowInputs, state: State) -> sparse.csr_array:
         """Return the fleet's rows but its balances, with this window's coefficients."""
-        still = self.fleet.matrix.tocoo()
-        rows, columns, values = self.fleet.moving_entries(inputs, fleet_data(inputs, state))
-        own, moving = (
-            np.ravel_multi_index(place, still.shape) for place in (still.coords, (rows, columns))
-        )
-        stays = ~np.isin(own, moving)
-        return _placed(
-            (still.data[stays], still.row[stays], still.col[stays]), (values, rows, columns),
-            shape=still.shape,
-        )[self._kept]  # fmt: skip
+        filled = self.fleet.filled(inputs, fleet_data(inputs, state))
+        return sparse.csr_array(filled)[self._kept]
 
 
 def _placed(*parts: tuple[Floats, Integers, Integers], shape: tuple[int, int]) -> sparse.csr_array:

@@ -10,9 +10,9 @@ from pathlib import Path
 
 from simulator.case import Case, read_case
 from simulator.dispatch import RunInputs, State, WindowInputs, WindowModel, WindowSolution
+from simulator.dispatch.counts import Counts
 from simulator.dispatch.inputs import run_inputs
 from simulator.dispatch.state import initial_state
-from simulator.dispatch.window import Counts
 from simulator.horizon import Plan, Run, plan_run, run
 from tests.benchmarks.synthetic import write_synthetic
 
@@ -104,6 +104,21 @@ class Subject:
         hot = self.inputs.whole.unit.hot_periods
         return solution.state_after(state, self.plan.keep, hot, whole=False)
 
+    def model(self) -> WindowModel:
+        """Return a model of these windows that has solved nothing."""
+        return WindowModel(self.windows[0], self.first_state, Counts())
+
+    def roll(self, model: WindowModel) -> tuple[list[State], list[WindowSolution]]:
+        """Solve every window; return the state before each, and its solution."""
+        state, states = self.first_state, list[State]()
+        solutions: list[WindowSolution] = []
+        for window in self.windows:
+            states.append(state)
+            left = solutions[-1].left if solutions else None
+            solutions.append(model.solve(window, state, left))
+            state = self.after(state, solutions[-1])
+        return states, solutions
+
     @cached_property
     def rolled(self) -> tuple[list[State], list[WindowSolution], WindowModel]:
         """The state before each window, its solution, and the model, all as the engine finds them.
@@ -111,14 +126,8 @@ class Subject:
         By-hand models start each window from the same state, so that all of them solve the same
         linear programs: an optimum that is not unique may hand on another state.
         """
-        states, solutions = [self.first_state], []
-        model = WindowModel(self.windows[0], states[0], Counts())
-        for window in self.windows:
-            if not model.fits(window):
-                model = WindowModel(window, states[-1], Counts())
-            solutions.append(model.solve(window, states[-1]))
-            states.append(self.after(states[-1], solutions[-1]))
-        return states[:-1], solutions, model
+        model = self.model()
+        return *self.roll(model), model
 
     @cached_property
     def finished(self) -> Run:

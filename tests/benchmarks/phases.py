@@ -10,13 +10,11 @@ from typing import Any
 
 from simulator.audit import audit
 from simulator.case import read_case
-from simulator.dispatch import WindowModel
 from simulator.dispatch.compiled import compile_fleet
 from simulator.dispatch.fleet import fleet_data
 from simulator.dispatch.formulation import state_fleet
 from simulator.dispatch.limits import LineRows
 from simulator.dispatch.solver import LinearSolver
-from simulator.dispatch.window import Counts
 from simulator.report.page import page_html
 from simulator.results import run_record, to_dataset
 from tests.benchmarks.by_hand_matrix import programs, solve_by_matrix
@@ -58,42 +56,28 @@ def _compile(subject: Subject) -> Work:
     return lambda: compile_fleet(window, data)
 
 
-def _model(subject: Subject) -> WindowModel:
-    """A model that has solved nothing, on a network nobody has factorised yet."""
-    return WindowModel(subject.windows[0], subject.first_state, Counts())
-
-
 def _from_scratch(subject: Subject) -> Work:
-    model = _model(subject)
-    return lambda: model.solve(subject.windows[0], subject.first_state)
+    return partial(subject.model().solve, subject.windows[0], subject.first_state)
 
 
 def _from_basis(subject: Subject) -> Work:
-    model = _model(subject)
-    after = subject.after(subject.first_state, model.solve(subject.windows[0], subject.first_state))
-    return lambda: model.solve(subject.windows[1], after)
+    model, state = subject.model(), subject.first_state
+    first = model.solve(subject.windows[0], state)
+    return partial(model.solve, subject.windows[1], subject.after(state, first), first.left)
 
 
 def _line_rows(subject: Subject) -> Work:
     window, found = subject.windows[-1], subject.rolled[2]
-    numbers = found.fleet.vectors(fleet_data(window, subject.rolled[0][-1]))
-    solver, lines = LinearSolver(found.fleet.matrix, numbers), LineRows(window, found.fleet)
+    data, lines = fleet_data(window, subject.rolled[0][-1]), LineRows(window, found.fleet)
+    solver = LinearSolver()
+    solver.load(found.fleet.filled(window, data), found.fleet.vectors(data))
     fixed, missing = window.topology.flows(-window.demand_at_bus), found.lines.active(window)
-    return lambda: lines.add(solver, window, fixed, missing)
+    return partial(lines.add, solver, window, fixed, missing)
 
 
 def _six_windows(subject: Subject) -> Work:
-    model = _model(subject)
-
-    def work() -> list[float]:
-        state, optima = subject.first_state, []
-        for window in subject.windows:
-            solution = model.solve(window, state)
-            state = subject.after(state, solution)
-            optima.append(solution.objective)
-        return optima
-
-    return work
+    model = subject.model()
+    return lambda: [solution.objective for solution in subject.roll(model)[1]]
 
 
 def _page(subject: Subject) -> Work:
