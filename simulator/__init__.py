@@ -1,8 +1,8 @@
 """Rampline: week-ahead dispatch of a power grid, from a case folder to a results dataset.
 
-Public names: `Case`, `open_run`, `plan_run`, `price_cause`, `read_case`, `run`, `to_dataset`; each is
-loaded when it is first asked for, so that the command line can answer `--help` without the numerical
-libraries.
+Public names: `Case`, `NewLoad`, `StorageSites`, `StudySettings`, `new_load`, `open_run`, `open_study`,
+`plan_run`, `price_cause`, `read_case`, `run`, `storage_sites`, `to_dataset`; each is loaded when it is first
+asked for, so that the command line can answer `--help` without the numerical libraries.
 """
 
 from importlib import import_module
@@ -13,11 +13,35 @@ if TYPE_CHECKING:
     from simulator.horizon import plan_run, run
     from simulator.prices import price_cause
     from simulator.results import open_run, to_dataset
+    from simulator.studies.base import StudySettings
+    from simulator.studies.folder import open_study
+    from simulator.studies.new_load import NewLoad, new_load
+    from simulator.studies.storage_sites import StorageSites, storage_sites
 
-__all__ = ["Case", "open_run", "plan_run", "price_cause", "read_case", "run", "to_dataset"]
+__all__ = [
+    "Case",
+    "NewLoad",
+    "StorageSites",
+    "StudySettings",
+    "new_load",
+    "open_run",
+    "open_study",
+    "plan_run",
+    "price_cause",
+    "read_case",
+    "run",
+    "storage_sites",
+    "to_dataset",
+]
 
 _HOMES = {
     "Case": "case",
+    "NewLoad": "studies.new_load",
+    "StorageSites": "studies.storage_sites",
+    "StudySettings": "studies.base",
+    "new_load": "studies.new_load",
+    "open_study": "studies.folder",
+    "storage_sites": "studies.storage_sites",
     "open_run": "results",
     "plan_run": "horizon",
     "read_case": "case",

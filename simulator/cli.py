@@ -29,7 +29,7 @@ class Commands(TyperGroup):
         try:
             return super().invoke(ctx)
         except KeyboardInterrupt as stop:
-            typer.echo("interrupted; nothing was written", err=True)
+            typer.echo(f"interrupted; {str(stop) or 'nothing was written'}", err=True)
             raise typer.Exit(EXIT_INTERRUPTED) from stop
         except SolveError as error:
             typer.echo(f"error: {error}", err=True)
@@ -41,7 +41,7 @@ class Commands(TyperGroup):
 
 def _in_words(error: RamplineError) -> str:
     if not isinstance(error, CaseError):
-        return f"error: {error}"
+        return "\n".join(f"error: {line}" for line in str(error).splitlines())
     count = len(error.problems)
     return f"{error}\n{count} problem{'s' if count > 1 else ''}; nothing was written"
 
@@ -58,7 +58,7 @@ app = typer.Typer(
 )
 
 CasePath = Annotated[Path, typer.Argument(metavar="CASE", help="Case folder.")]
-RunPath = Annotated[Path, typer.Argument(metavar="RUN", help="Folder of a run.")]
+RunPath = Annotated[Path, typer.Argument(metavar="RUN", help="Folder of a run or a study.")]
 Json = Annotated[bool, typer.Option("--json", help="Print one JSON document and nothing else.")]
 
 
@@ -160,13 +160,195 @@ def week(
     _stop_unless_proved(record)
 
 
+Start = Annotated[
+    str | None,
+    typer.Option("--from", help="First period, local; by default the first of the hourly data."),
+]
+Buses = Annotated[list[str] | None, typer.Option("--bus", help="A bus; may be repeated.")]
+CommitmentOption = Annotated[str | None, typer.Option(help="given | relaxed | optimal")]
+LimitsOption = Annotated[str | None, typer.Option(help="none | lines | secure")]
+WorkersOption = Annotated[
+    int | None, typer.Option(min=1, help="Processes to spread the runs over; by default all cores.")
+]
+StudyOut = Annotated[
+    Path | None,
+    typer.Option(help="Folder of results; by default outputs/<case>-<study>-<first day>."),
+]
+StudyForce = Annotated[bool, typer.Option("--force", help="Replace an earlier study's folder.")]
+
+
+@app.command(
+    "new-load", epilog="Example: rampline new-load profiles/fennholm --bus Ansterwell --mw 200"
+)
+def new_load(
+    case: CasePath,
+    *,
+    bus: Buses = None,
+    mw: Annotated[list[float], typer.Option(help="Size of the load; may be repeated.")],
+    profile: Annotated[
+        str | None, typer.Option(help="Profile that the size is multiplied by; by default flat.")
+    ] = None,
+    all_buses: Annotated[bool, typer.Option("--all-buses", help="Every bus of the case.")] = False,
+    largest: Annotated[
+        bool | None,
+        typer.Option(
+            "--largest/--no-largest",
+            help="Find the largest size of each bus; by default not with --all-buses.",
+        ),
+    ] = None,
+    largest_within: Annotated[float, typer.Option(help="How closely, MW.")] = 1.0,
+    most_price_rise: Annotated[
+        float | None,
+        typer.Option(
+            help="Too large, too, where the mean price of the bus rises by more than this."
+        ),
+    ] = None,
+    start: Start = None,
+    hours: Annotated[float, typer.Option(help="Length of the runs.")] = 168.0,
+    commitment: CommitmentOption = None,
+    limits: LimitsOption = None,
+    workers: WorkersOption = None,
+    out: StudyOut = None,
+    force: StudyForce = False,
+    as_json: Json = False,
+) -> None:
+    """Say what a new load costs, whom, what it congests, and how large it may be."""
+    from simulator.case import read_case
+    from simulator.studies.base import StudySettings
+    from simulator.studies.new_load import NewLoad, answer_new_load, check_new_load
+
+    found = read_case(case)
+    settings = StudySettings(start, hours, commitment=commitment, limits=limits)
+    request = NewLoad(
+        tuple(bus or ()), tuple(mw), profile, not all_buses if largest is None else largest,
+        largest_within, float("inf") if most_price_rise is None else most_price_rise, settings,
+    )  # fmt: skip
+    folder, problems = _study_folder(case, found, "new-load", settings, out, force=force)
+    if bool(bus) == all_buses:
+        problems.append("--bus, must be given, or else --all-buses, found both or none, give one")
+    check_new_load(found, request, problems)
+    _study(found, folder, force=force, as_json=as_json, workers=workers, answer=(
+        lambda **how: answer_new_load(found, request, **how)
+    ))  # fmt: skip
+
+
+@app.command(
+    "storage-sites",
+    epilog="Example: rampline storage-sites profiles/fennholm --power-mw 50 --hours 4",
+)
+def storage_sites(
+    case: CasePath,
+    *,
+    power_mw: Annotated[float, typer.Option(help="Charge and discharge power at the bus.")],
+    hours: Annotated[
+        list[float], typer.Option(help="Energy stored at most, in hours of power; may be repeated.")
+    ],
+    bus: Buses = None,
+    charge_efficiency: Annotated[float, typer.Option(help="Share of charging stored.")] = 0.92,
+    discharge_efficiency: Annotated[float, typer.Option(help="Share of what is drawn.")] = 0.92,
+    loss_percent_per_h: Annotated[float, typer.Option(help="Loss of what is stored.")] = 0.0,
+    throughput_cost: Annotated[float, typer.Option(help="Wear, currency a MWh discharged.")] = 0.0,
+    cycles_a_day: Annotated[
+        float | None, typer.Option(help="Most energy drawn a local day, in fillings.")
+    ] = None,
+    top: Annotated[int, typer.Option(help="How many of the best are run in place.")] = 5,
+    spread: Annotated[
+        int, typer.Option(help="How many more, spread over the rest of the list, are.")
+    ] = 3,
+    start: Start = None,
+    run_hours: Annotated[float, typer.Option(help="Length of the runs.")] = 168.0,
+    commitment: CommitmentOption = None,
+    limits: LimitsOption = None,
+    workers: WorkersOption = None,
+    out: StudyOut = None,
+    force: StudyForce = False,
+    as_json: Json = False,
+) -> None:
+    """Say where a store earns most by prices alone, and what it does in the system there."""
+    from simulator.case import read_case
+    from simulator.studies.base import StudySettings
+    from simulator.studies.storage_sites import (
+        StorageSites,
+        answer_storage_sites,
+        check_storage_sites,
+    )
+
+    found = read_case(case)
+    settings = StudySettings(start, run_hours, commitment=commitment, limits=limits)
+    request = StorageSites(
+        power_mw, tuple(hours), tuple(bus or ()), charge_efficiency, discharge_efficiency,
+        loss_percent_per_h, throughput_cost,
+        float("inf") if cycles_a_day is None else cycles_a_day, top, spread, settings,
+    )  # fmt: skip
+    folder, problems = _study_folder(case, found, "storage-sites", settings, out, force=force)
+    check_storage_sites(found, request, problems)
+    _study(found, folder, force=force, as_json=as_json, workers=workers, answer=(
+        lambda **how: answer_storage_sites(found, request, **how)
+    ))  # fmt: skip
+
+
+def _study_folder(
+    case: Path, found: Any, study: str, settings: Any, out: Path | None, *, force: bool
+) -> tuple[Path, list[str]]:
+    """Return a study's folder, and why it cannot be written to, if so."""
+    from simulator.studies.base import plan_study
+    from simulator.studies.folder import refusals
+
+    plan = plan_study(found, settings, [])
+    day = f"{found.time.local[plan.first]:%Y-%m-%d}" if plan else ""
+    folder = out or Path("outputs") / f"{case.resolve().name}-{study}-{day}"
+    return folder, refusals(folder, force=force)
+
+
+def _study(
+    found: Any, folder: Path, *, force: bool, as_json: bool, workers: int | None,
+    answer: Callable[..., Any],
+) -> None:  # fmt: skip
+    """Answer a study, keep it, print it; what is finished when it is cut off is kept beside it."""
+    from rich.console import Console
+
+    from simulator.report.study_page import print_study, write_study
+    from simulator.studies.folder import save_study, scratch_of
+    from simulator.studies.runs import cores
+
+    _say_warnings(found)
+    scratch = scratch_of(folder)
+    try:
+        with _progress("runs") as show:
+            done = answer(workers=workers or cores(), scratch=scratch, progress=show)
+    except KeyboardInterrupt as stop:
+        raise KeyboardInterrupt(
+            f"runs that are done are kept in {scratch}; call again to go on"
+        ) from stop
+    dataset, record = done.dataset, done.record
+    save_study(done, folder, force=force, page=lambda path: write_study(dataset, record, path))
+    if record["counts"]["runs_found_done"]:
+        typer.echo(f"{record['counts']['runs_found_done']} runs had been done before", err=True)
+    if as_json:
+        _print_json(record | {"folder": str(folder)})
+    else:
+        print_study(dataset, record, Console())
+    typer.echo(f"written to {folder}", err=True)
+    if not record["audit"]["passed"]:
+        for name, checks in record["audit"]["failed"].items():
+            typer.echo(f"audit: {name}: {', '.join(checks)}", err=True)
+        raise typer.Exit(EXIT_AUDIT)
+
+
 @app.command(epilog="Example: rampline page outputs/fennholm-2027-01-01")
 def page(run: RunPath) -> None:
-    """Write the page of a run again."""
+    """Write the page of a run or a study again."""
     from simulator import results
     from simulator.files import replace_file
     from simulator.report.page import write_page
+    from simulator.report.study_page import write_study
+    from simulator.studies.folder import is_study, open_study, open_study_record
 
+    if is_study(run):
+        answers, asked = open_study(run), open_study_record(run)
+        replace_file(run / "page.html", lambda path: write_study(answers, asked, path))
+        typer.echo(f"written to {run / 'page.html'}", err=True)
+        return
     dataset, record = results.open_run(run), results.open_record(run)
     replace_file(run / "page.html", lambda path: write_page(dataset, record, path))
     typer.echo(f"written to {run / 'page.html'}", err=True)
@@ -181,12 +363,17 @@ def export(
     force: Annotated[bool, typer.Option(help="Replace an earlier export.")] = False,
     as_json: Json = False,
 ) -> None:
-    """Write a run's results for other programs: a workbook, tables, or a map layer."""
+    """Write the results of a run or a study for other programs: a workbook, tables, or a map layer."""
     from simulator import results
     from simulator.report.export import export_run
+    from simulator.report.study_export import export_study
+    from simulator.studies.folder import is_study, open_study, open_study_record
 
-    dataset, record = results.open_run(run), results.open_record(run)
-    made = export_run(dataset, record, kind, folder, force=force)
+    if is_study(run):
+        made = export_study(open_study(run), open_study_record(run), kind, folder, force=force)
+    else:
+        dataset, record = results.open_run(run), results.open_record(run)
+        made = export_run(dataset, record, kind, folder, force=force)
     if as_json:
         _print_json({"folder": str(folder), "files": made.files, "left_out": made.left_out})
     if made.left_out:
@@ -270,7 +457,7 @@ class Clock:
 
 
 @contextmanager
-def _progress() -> Iterator[Callable[[int, int], None] | None]:
+def _progress(what: str = "windows") -> Iterator[Callable[[int, int], None] | None]:
     """Yield a progress callback that draws a bar on a terminal, or nothing elsewhere."""
     if not sys.stderr.isatty():
         yield None
@@ -284,9 +471,9 @@ def _progress() -> Iterator[Callable[[int, int], None] | None]:
         TimeRemainingColumn,
     )
 
-    columns = (TextColumn("windows"), BarColumn(), MofNCompleteColumn(), TimeRemainingColumn())
+    columns = (TextColumn(what), BarColumn(), MofNCompleteColumn(), TimeRemainingColumn())
     with Progress(*columns, console=Console(stderr=True), transient=True) as bar:
-        task = bar.add_task("windows", total=None)
+        task = bar.add_task(what, total=None)
         yield lambda done, total: bar.update(task, completed=done, total=total)
 
 

@@ -69,6 +69,9 @@ class SolveError(RamplineError):
         shown = "; ".join(self.elements) or "no single element could be named"
         super().__init__(f"window {window}: the solver ended with status {status}: {shown}")
 
+    def __reduce__(self) -> tuple[type["SolveError"], tuple[int, str, tuple[str, ...]]]:
+        return type(self), (self.window, self.status, self.elements)
+
 
 class AuditError(RamplineError):
     """A results dataset on which a check cannot even be evaluated; names the check and why."""

@@ -1,11 +1,12 @@
 """Windows rolled over a run, and the state handed from one to the next (formulation.md 4).
 
-Public names: `Plan`, `Run`, `plan_run`, `run`, `without_limits`.
+Public names: `Like`, `Origin`, `Plan`, `Run`, `grown`, `plan_run`, `run`, `without_limits`.
 """
 
 from collections.abc import Callable
 from dataclasses import dataclass, field, fields, replace
 from datetime import date, datetime
+from typing import Protocol
 
 import numpy as np
 import pandas as pd
@@ -20,7 +21,7 @@ from simulator.dispatch.state import initial_state
 from simulator.dispatch.window import WindowError, shape_of
 from simulator.errors import OptionError, SolveError
 
-__all__ = ["Plan", "Run", "plan_run", "run", "without_limits"]
+__all__ = ["Like", "Origin", "Plan", "Run", "grown", "plan_run", "run", "without_limits"]
 
 Integers = NDArray[np.int64]
 Models = dict[tuple[object, ...], WindowModel]
@@ -73,6 +74,32 @@ class Plan:
         """The periods any window sees, on the case's time axis."""
         last = max(start + length for start, length in self.windows)
         return slice(self.first, self.first + max(last, self.periods))
+
+
+class Like(Protocol):
+    """What a run like an earlier one needs of that: a `Run`, or what is left of it.
+
+    models : by shape of window; starts : by window
+    """
+
+    @property
+    def models(self) -> Models:
+        """Models that only save compiling: results do not hang on them."""
+
+    @property
+    def starts(self) -> tuple[Start, ...]:
+        """What each window left."""
+
+
+@dataclass(frozen=True, eq=False)
+class Origin:
+    """What is left of a run for runs like it; its models stay in their process when it is pickled."""
+
+    starts: tuple[Start, ...]
+    models: Models = field(default_factory=dict, repr=False)
+
+    def __reduce__(self) -> tuple[type["Origin"], tuple[tuple[Start, ...]]]:
+        return Origin, (self.starts,)
 
 
 @dataclass(frozen=True, eq=False)
@@ -220,7 +247,7 @@ def _too_long(case: Case, first: int, periods: int) -> str:
 
 
 def run(
-    case: Case, plan: Plan, progress: Progress | None = None, *, like: Run | None = None
+    case: Case, plan: Plan, progress: Progress | None = None, *, like: Like | None = None
 ) -> Run:
     """Solve the windows of a plan one after another.
 
@@ -242,6 +269,22 @@ def without_limits(limited: Run, progress: Progress | None = None) -> Run:
     inputs = replace(limited.inputs, whole=whole)
     starts = tuple(start.without_lines() for start in limited.starts)
     return _rolled(limited.case, plan, inputs, dict(limited.models), starts, progress)
+
+
+def grown(before: Run, case: Case) -> Origin:
+    """Return what a run of the same plan starts from where its case has more elements than before.
+
+    case : that of the run before with elements added at the end of its tables
+    """
+    plan = before.plan
+    inputs = run_inputs(case, plan.span, plan.periods, plan.mode, limited=plan.limits != "none")
+    state, counts, models = initial_state(case, inputs.whole.unit), Counts(), Models()
+    starts = []
+    for number, (first, length) in enumerate(plan.windows):
+        model = _model_for(models, inputs.window(number, first, length), state, counts)
+        left = before.starts[number]
+        starts.append(left.grown(before.models[left.shape].fleet, model.fleet, model.shape))
+    return Origin(tuple(starts), models)
 
 
 def _rolled(

@@ -40,6 +40,7 @@ Floats = NDArray[np.float64]
 Entry = tuple[tuple[str, ...], str, str]
 
 FORMAT = 1
+RUN = "run.json"
 PRICED = 1e-6
 """A shadow price above this, currency/MWh, makes an hour a congestion hour (formulation.md 5.3)."""
 AT_LIMIT = 1e-4
@@ -425,18 +426,18 @@ def save(
             page(made / "page.html")
 
 
-def refuse_existing(folder: Path, *, force: bool) -> None:
-    """Refuse a folder that is there, unless forced, or that is not the folder of a run."""
+def refuse_existing(folder: Path, *, force: bool, mark: str = RUN) -> None:
+    """Refuse a folder that is there, unless forced and it holds `mark`, the record of its kind."""
     if not folder.exists():
         return
     if not force:
         raise OptionError(
             f"--out, must not exist yet, found {folder}, choose another folder or pass --force"
         )
-    if not folder.is_dir() or (any(folder.iterdir()) and not (folder / "run.json").exists()):
+    if not folder.is_dir() or (any(folder.iterdir()) and not (folder / mark).exists()):
         raise OptionError(
-            f"--force, replaces only the folder of a run, found {folder} without run.json, "
-            "choose another folder"
+            f"--force, replaces only the folder of a {mark.removesuffix('.json')}, found {folder} "
+            f"without {mark}, choose another folder"
         )
 
 
@@ -446,8 +447,10 @@ def write_dataset(dataset: xr.Dataset, path: Path) -> None:
     encoding: dict[Any, dict[str, Any]] = {
         name: {"_FillValue": None, **(compressed if variable.size else {})}
         for name, variable in dataset.data_vars.items()
+        if variable.dtype.kind != "U" and variable.ndim
     }
-    encoding["time"] = {"units": "minutes since 1970-01-01 00:00:00", "dtype": "int64"}
+    if "time" in dataset.dims:
+        encoding["time"] = {"units": "minutes since 1970-01-01 00:00:00", "dtype": "int64"}
     dataset.to_netcdf(path, engine="netcdf4", encoding=encoding)
 
 

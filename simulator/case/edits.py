@@ -1,6 +1,6 @@
 """Changed copies of a case, checked by the same rules as a case folder.
 
-Public names: `add_load`, `add_outage`, `add_store`, `change_settings`.
+Public names: `add_load`, `add_loads`, `add_outage`, `add_stores`, `change_settings`.
 
 An edit adds text cells to the declared tables, so that each value meets the same rules as one read
 from a file. Faults are reported at the path "edit".
@@ -31,7 +31,7 @@ from simulator.errors import CaseError, Problem
 if TYPE_CHECKING:
     from simulator.case.model import Case
 
-__all__ = ["add_load", "add_outage", "add_store", "change_settings"]
+__all__ = ["add_load", "add_loads", "add_outage", "add_stores", "change_settings"]
 
 Cell: TypeAlias = str | float | None
 
@@ -46,7 +46,27 @@ def add_load(
     column = pd.Series(1.0 if constant else values, index=case.profiles.index, name=profile)
     cells: dict[str, Cell] = {"load": name, "bus": bus, "profile": profile}
     cells |= {"scale_mw": float(values) if constant else 1.0, "unserved_per_mwh": unserved_per_mwh}
-    return _added(case, LOADS, cells, side_by_side([case.profiles, column.to_frame()]))
+    return _added(case, LOADS, [cells], side_by_side([case.profiles, column.to_frame()]))
+
+
+def add_loads(
+    case: "Case",
+    loads: Mapping[str, tuple[str, float]],
+    profile: ArrayLike,
+    unserved_per_mwh: float | None,
+) -> "Case":
+    """Return the case with more loads of one profile: name → (bus, MW where the profile is 1)."""
+    if not loads:
+        return case
+    first = next(iter(loads))
+    values = np.broadcast_to(_power(case, first, profile), len(case.time))
+    name = _free_name(case, first)
+    column = pd.Series(values, index=case.profiles.index, name=name)
+    rows: list[Mapping[str, Cell]] = [
+        {"load": load, "bus": bus, "profile": name, "scale_mw": mw, "unserved_per_mwh": unserved_per_mwh}
+        for load, (bus, mw) in loads.items()
+    ]  # fmt: skip
+    return _added(case, LOADS, rows, side_by_side([case.profiles, column.to_frame()]))
 
 
 def _power(case: "Case", name: str, mw: ArrayLike) -> NDArray[np.float64]:
@@ -75,9 +95,9 @@ def _free_name(case: "Case", name: str) -> str:
     return next(candidate for candidate in candidates if candidate not in taken)
 
 
-def add_store(case: "Case", cells: Mapping[str, Cell]) -> "Case":
-    """Return the case with one more store, its cells by column of storage.csv, None for blank."""
-    return _added(case, STORAGE, cells)
+def add_stores(case: "Case", stores: Sequence[Mapping[str, Cell]]) -> "Case":
+    """Return the case with more stores, their cells by column of storage.csv, None for blank."""
+    return _added(case, STORAGE, stores) if stores else case
 
 
 def add_outage(case: "Case", cells: Mapping[str, Cell | date]) -> "Case":
@@ -86,7 +106,7 @@ def add_outage(case: "Case", cells: Mapping[str, Cell | date]) -> "Case":
         column: value.isoformat() if isinstance(value, date) else value
         for column, value in cells.items()
     }
-    return _added(case, OUTAGES, written)
+    return _added(case, OUTAGES, [written])
 
 
 def change_settings(case: "Case", changes: Mapping[str, Any]) -> "Case":
@@ -117,15 +137,18 @@ def _as_edit(problem: Problem) -> Problem:
 
 
 def _added(
-    case: "Case", table: Table, cells: Mapping[str, Cell], profiles: pd.DataFrame | None = None
+    case: "Case",
+    table: Table,
+    cells: Sequence[Mapping[str, Cell]],
+    profiles: pd.DataFrame | None = None,
 ) -> "Case":
-    """Return a checked copy with one more row in a table."""
+    """Return a checked copy with more rows in a table; all rows have the columns of the first."""
     sheet = case.declared(table.name)
-    row = int(sheet.rows.max(initial=1)) + 1
-    raw = RawTable({column: [_cell(value)] for column, value in cells.items()}, [row])
-    added, problems = typed(table, raw)
+    rows = int(sheet.rows.max(initial=1)) + 1 + np.arange(len(cells))
+    texts = {column: [_cell(row[column]) for row in cells] for column in cells[0]}
+    added, problems = typed(table, RawTable(texts, rows.tolist()))
     frame = pd.concat([sheet.frame, added.frame], ignore_index=True)
-    extended = Sheet(table, frame, np.append(sheet.rows, row))
+    extended = Sheet(table, frame, np.append(sheet.rows, rows))
     return _changed(case, sheets={table.name: extended}, profiles=profiles, problems=problems)
 
 

@@ -3,6 +3,7 @@
 Public names: `Case`, `TimeAxis`, `TABLES`.
 """
 
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from datetime import date
 from typing import Any
@@ -10,7 +11,7 @@ from typing import Any
 import pandas as pd
 from numpy.typing import ArrayLike
 
-from simulator.case.edits import add_load, add_outage, add_store, change_settings
+from simulator.case.edits import add_load, add_loads, add_outage, add_stores, change_settings
 from simulator.case.settings import Settings
 from simulator.case.sheet import Sheet
 from simulator.case.summary import summary
@@ -146,6 +147,17 @@ class Case:
         """
         return add_load(self, name, bus, mw, unserved_per_mwh)
 
+    def with_loads(
+        self, loads: Mapping[str, tuple[str, float]], profile: ArrayLike = 1.0, *,
+        unserved_per_mwh: float | None = None,
+    ) -> "Case":  # fmt: skip
+        """Return a copy with more loads of one profile, name → (bus, MW where the profile is 1)."""
+        return add_loads(self, loads, profile, unserved_per_mwh)
+
+    def with_stores(self, stores: Sequence[Mapping[str, str | float | None]]) -> "Case":
+        """Return a copy with more stores, each its cells by column of storage.csv."""
+        return add_stores(self, stores)
+
     def with_store(
         self, name: str, bus: str, charge_mw: float, energy_mwh: float, *,
         discharge_mw: float | None = None, charge_efficiency: float = 1.0,
@@ -162,7 +174,7 @@ class Case:
             "throughput_cost_per_mwh": throughput_cost_per_mwh,
             "end_value_per_mwh": end_value_per_mwh,
         }  # fmt: skip
-        return add_store(self, cells)
+        return add_stores(self, [cells])
 
     def with_outage(
         self, kind: str, name: str, start: str | date, until: str | date,

@@ -133,6 +133,14 @@ class Table:
         """Return the column of that name."""
         return next(field for field in self.fields if field.name == name)
 
+    def __reduce__(self) -> tuple[Any, tuple[str]]:
+        # Rules are functions without a name; in another process the table is found by its own.
+        return _declared, (self.name,)
+
+
+def _declared(name: str) -> Table:
+    return next(table for table in TABLES if table.name == name)
+
 
 LONGEST_NAME = 64
 EVERYWHERE = "all"

@@ -13,12 +13,16 @@ __all__ = ["Counts", "WindowRecord"]
 
 @dataclass(frozen=True)
 class WindowRecord:
-    """How one window went: `gap` is None where nothing was decided; `time_limit` tells what ended it."""
+    """How one window went: `gap` is None where nothing was decided; `time_limit` tells what ended it.
+
+    allowed : by how much the best plan of the window may cost less than the one found, currency
+    """
 
     window: int
     seconds: float
     gap: float | None = None
     time_limit: bool = False
+    allowed: float = 0.0
 
 
 @dataclass

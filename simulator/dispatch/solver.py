@@ -1,6 +1,6 @@
 """The one border to HiGHS: options checked, every status mapped, failures raised.
 
-Public names: `BASIC`, `Decision`, `LinearSolver`, `SolverError`, `STATUS`.
+Public names: `BASIC`, `LOWER`, `Decision`, `LinearSolver`, `SolverError`, `STATUS`.
 
 HiGHS reports a wrong option only by a return code, and `run()` may return "ok" on an infeasible model,
 so every call's code is checked and only the model status is believed.
@@ -17,7 +17,7 @@ from scipy import sparse
 
 from simulator.dispatch.compiled import Vectors
 
-__all__ = ["BASIC", "STATUS", "Decision", "LinearSolver", "SolverError"]
+__all__ = ["BASIC", "LOWER", "STATUS", "Decision", "LinearSolver", "SolverError"]
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -255,6 +255,7 @@ _INTEGER, _CONTINUOUS = highspy.HighsVarType.kInteger, highspy.HighsVarType.kCon
 _KINDS = (_INTEGER, _CONTINUOUS)
 _STATUSES = list(highspy.HighsBasisStatus.__members__.values())
 BASIC = int(highspy.HighsBasisStatus.kBasic)
+LOWER = int(highspy.HighsBasisStatus.kLower)
 
 
 def _numbers(statuses: Any) -> Statuses:

@@ -12,6 +12,9 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from simulator.dispatch.compiled import CompiledFleet
+from simulator.dispatch.solver import BASIC, LOWER
+
 __all__ = ["Start"]
 
 Integers = NDArray[np.int64]
@@ -52,6 +55,34 @@ class Start:
         return replace(
             self, line_rows=np.zeros(0, dtype=np.int8), line=none, period=none, topology=none, idle=none
         )  # fmt: skip
+
+    def grown(
+        self, before: CompiledFleet, after: CompiledFleet, shape: tuple[object, ...]
+    ) -> "Start":
+        """Return the same start for a model with more elements at the end of its tables.
+
+        before, after : the fleet halves of both models. New columns stand at their lower bound and new
+            rows are basic, so the basis stays one, and it stays optimal where new elements can do nothing.
+        """
+        return replace(
+            self, shape=shape,
+            columns=_spread(self.columns, before.columns, after.columns, after.matrix.shape[1], LOWER),
+            rows=_spread(self.rows, before.rows, after.rows, after.matrix.shape[0], BASIC),
+        )  # fmt: skip
+
+
+def _spread(
+    status: Statuses,
+    before: Mapping[str, Integers],
+    after: Mapping[str, Integers],
+    size: int,
+    new: int,
+) -> Statuses:
+    """Put the statuses of a model's families where a larger model has them; `new` everywhere else."""
+    found = np.full(size, new, dtype=np.int8)
+    for family, positions in before.items():
+        found[after[family][:, : positions.shape[1]]] = status[positions]
+    return found
 
 
 def shifted(

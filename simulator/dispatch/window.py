@@ -164,7 +164,8 @@ class WindowModel:
     def _record(self, inputs: WindowInputs, seconds: float, decided: Decided | None) -> None:
         record = WindowRecord(inputs.number, seconds)
         if decided is not None:
-            record = WindowRecord(inputs.number, seconds, decided.gap, decided.out_of_time)
+            allowed = decided.gap * abs(self._solver.objective)
+            record = WindowRecord(inputs.number, seconds, decided.gap, decided.out_of_time, allowed)
         self.counts.windows.append(record)
 
     def _left(self, inputs: WindowInputs, attempt: Attempt, decided: Decided | None) -> Start:
@@ -303,5 +304,9 @@ def shape_of(inputs: WindowInputs) -> tuple[object, ...]:
         len(inputs.reserve.upward),
         len(inputs.reserve.unit),
         len(inputs.reserve.limited),
+        len(inputs.renewable_bus),
+        len(inputs.store.bus),
+        len(inputs.tie_from),
+        len(inputs.load_bus),
         inputs.buses,
     )

@@ -1,6 +1,6 @@
 """Two runs compared as a reader sees it: tables on the terminal, and one self-contained HTML page.
 
-Public names: `comparison_html`, `print_comparison`, `write_comparison`.
+Public names: `comparison_html`, `for_terminal`, `print_comparison`, `write_comparison`.
 """
 
 from collections.abc import Sequence
@@ -45,7 +45,7 @@ from simulator.report.tables import (
 from simulator.report.view import View
 from simulator.report.wording import LARGE, amount, count, listed, number, percent
 
-__all__ = ["comparison_html", "print_comparison", "write_comparison"]
+__all__ = ["comparison_html", "for_terminal", "print_comparison", "write_comparison"]
 
 MOST_SHOWN = 10
 """How many of the largest changes stand open."""
@@ -97,10 +97,11 @@ def print_comparison(comparison: Comparison, console: Console) -> None:
         for text in [*(f"{term}: {value}" for term, value in section.facts), *section.text]:
             console.print(escape(text))
         for table in section.tables:
-            console.print(_for_terminal(table))
+            console.print(for_terminal(table))
 
 
-def _for_terminal(table: Table) -> TerminalTable:
+def for_terminal(table: Table) -> TerminalTable:
+    """Return a page's table as the terminal prints it."""
     made = TerminalTable(
         title=table.caption, title_justify="left", title_style="bold", box=None, pad_edge=False
     )

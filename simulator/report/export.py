@@ -1,6 +1,6 @@
 """A run's results for other programs: a workbook, CSV or Parquet tables, or GeoJSON of the network.
 
-Public names: `FORMATS`, `Export`, `Sheet`, `export_run`, `refuse_folder`, `sheets`.
+Public names: `FORMATS`, `Export`, `Sheet`, `export_run`, `export_tables`, `refuse_folder`, `sheets`.
 
 A folder is made whole: under another name first, then moved into place.
 """
@@ -33,11 +33,22 @@ from simulator.report.page import CAUTION
 from simulator.report.view import View
 from simulator.results import VARIABLES
 
-__all__ = ["FORMATS", "Export", "Sheet", "export_run", "refuse_folder", "sheets"]
+__all__ = [
+    "FORMATS",
+    "Export",
+    "Sheet",
+    "export_run",
+    "export_tables",
+    "refuse_folder",
+    "sheets",
+]
 
 BOOK = "results.xlsx"
 DIMENSIONS = ("bus", "line", "unit", "plant", "store", "tie", "load", "product")
 """The dimensions whose elements have a table of their own, with what the dataset says of them."""
+
+STUDY_TABLES = ("answers", "durations", "lines")
+"""The tables of a study, besides `about`."""
 
 RISKY = ("=", "+", "-", "@", "\t", "\r", "\n", "\uff1d", "\uff0b", "\uff0d", "\uff20")
 """Beginnings that make a spreadsheet read a text as a formula (OWASP, "CSV Injection", typed from
@@ -75,14 +86,33 @@ def export_run(
 
     A folder that holds anything is refused; `force` replaces that of an earlier export.
     """
-    if kind not in FORMATS:
+    view = View(dataset, record)
+    if kind == GEOJSON:
+        return _whole(folder, force, lambda made: _write_geojson(view, made))
+    return export_tables(
+        lambda: sheets(view), kind, folder, force=force, left_out=_left_out(dataset)
+    )
+
+
+def export_tables(
+    make: Callable[[], Sequence[Sheet]], kind: str, folder: Path, *, force: bool = False,
+    left_out: tuple[str, ...] = (), kinds: Sequence[str] = (),
+) -> Export:  # fmt: skip
+    """Make tables and write them to a folder, as `export_run` does; `kinds` may be asked for."""
+    kinds = kinds or tuple(FORMATS)
+    if kind not in kinds:
         raise OptionError(
-            f"--to, must be one of {', '.join(FORMATS)}, found {quoted(kind)}, choose one of these"
+            f"--to, must be one of {', '.join(kinds)}, found {quoted(kind)}, choose one of these"
         )
+    write = WRITERS[kind]
+    return _whole(folder, force, lambda made: Export(write(make(), made), left_out))
+
+
+def _whole(folder: Path, force: bool, write: Callable[[Path], Export]) -> Export:  # noqa: FBT001
     folder = folder.resolve()
     refuse_folder(folder, force=force)
     with made_whole(folder, "DIR") as made:
-        return FORMATS[kind](View(dataset, record), made)
+        return write(made)
 
 
 def refuse_folder(folder: Path, *, force: bool) -> None:
@@ -104,7 +134,7 @@ def refuse_folder(folder: Path, *, force: bool) -> None:
 
 
 def _is_ours(path: Path) -> bool:
-    tables = {"about", *DIMENSIONS, *VARIABLES}
+    tables = {"about", *DIMENSIONS, *VARIABLES, *STUDY_TABLES}
     ours = {BOOK} | {f"{name}.{kind}" for name in tables for kind in ("csv", "parquet")}
     ours |= {f"{name}.geojson" for name in LAYERS}
     return path.is_file() and path.name in ours
@@ -226,14 +256,13 @@ def _by_day(view: View, name: str, values: Any) -> pd.DataFrame:
     return frame
 
 
-def _write_csv(view: View, folder: Path) -> Export:
+def _write_csv(tables: Sequence[Sheet], folder: Path) -> tuple[str, ...]:
     """Write a file a table; a text that a spreadsheet would calculate gets an apostrophe before it."""
-    tables = sheets(view)
     for sheet in tables:
         frame = sheet.frame.map(_csv_cell)
         frame.columns = [_inert(str(heading)) for heading in frame.columns]
         frame.to_csv(folder / f"{sheet.name}.csv", index=False, lineterminator="\n")
-    return Export(tuple(f"{sheet.name}.csv" for sheet in tables), _left_out(view.dataset))
+    return tuple(f"{sheet.name}.csv" for sheet in tables)
 
 
 def _csv_cell(value: Any) -> Any:
@@ -257,14 +286,13 @@ def _finite(value: Any) -> Any:
     return None if isinstance(value, float) and not math.isfinite(value) else value
 
 
-def _write_parquet(view: View, folder: Path) -> Export:
+def _write_parquet(tables: Sequence[Sheet], folder: Path) -> tuple[str, ...]:
     """Write a file a table; times keep their zone, an unlimited rating stays infinite."""
-    tables = sheets(view)
     for sheet in tables:
         mixed = [name for name, kind in sheet.frame.dtypes.items() if is_object_dtype(kind)]
         frame = sheet.frame.astype(dict.fromkeys(mixed, str))
         frame.to_parquet(folder / f"{sheet.name}.parquet", index=False)
-    return Export(tuple(f"{sheet.name}.parquet" for sheet in tables), _left_out(view.dataset))
+    return tuple(f"{sheet.name}.parquet" for sheet in tables)
 
 
 def _write_geojson(view: View, folder: Path) -> Export:
@@ -278,9 +306,9 @@ def _write_geojson(view: View, folder: Path) -> Export:
     return Export(tuple(f"{name}.geojson" for name in written), left_out)
 
 
-def _write_xlsx(view: View, folder: Path) -> Export:
+def _write_xlsx(tables: Sequence[Sheet], folder: Path) -> tuple[str, ...]:
     """Write one workbook, a sheet a table."""
-    book, tables = Workbook(write_only=True), sheets(view)
+    book = Workbook(write_only=True)
     frames = [_with_two_clocks(sheet.frame) for sheet in tables]
     for sheet, frame in zip(tables, frames, strict=True):
         _refuse_large(sheet.name, frame)
@@ -288,12 +316,14 @@ def _write_xlsx(view: View, folder: Path) -> Export:
     for name, frame in zip(names, frames, strict=True):
         _fill(book.create_sheet(name), frame)
     book.save(folder / BOOK)
-    return Export((BOOK,), _left_out(view.dataset))
+    return (BOOK,)
 
 
-FORMATS: Mapping[str, Callable[[View, Path], Export]] = {
-    "csv": _write_csv, "geojson": _write_geojson, "parquet": _write_parquet, "xlsx": _write_xlsx,
+WRITERS: Mapping[str, Callable[[Sequence[Sheet], Path], tuple[str, ...]]] = {
+    "csv": _write_csv, "parquet": _write_parquet, "xlsx": _write_xlsx,
 }  # fmt: skip
+GEOJSON = "geojson"
+FORMATS = ("csv", GEOJSON, "parquet", "xlsx")
 
 
 def _refuse_large(name: str, frame: pd.DataFrame) -> None:

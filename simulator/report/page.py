@@ -1,6 +1,6 @@
 """One self-contained HTML page from a run: no network, the same bytes for the same run.
 
-Public names: `CAUTION`, `asset`, `environment`, `page_html`, `policy`, `write_page`.
+Public names: `CAUTION`, `asset`, `environment`, `made_by`, `page_html`, `policy`, `write_page`.
 """
 
 import hashlib
@@ -21,7 +21,7 @@ from simulator.report.tables import unserved_spans
 from simulator.report.view import View, script_json
 from simulator.report.wording import number
 
-__all__ = ["CAUTION", "asset", "environment", "page_html", "policy", "write_page"]
+__all__ = ["CAUTION", "asset", "environment", "made_by", "page_html", "policy", "write_page"]
 
 CAUTION = (
     "Rampline is a planning aid. It is not for real-time control or switching. Local grid codes, the "
@@ -47,7 +47,7 @@ def page_html(dataset: xr.Dataset, run: Mapping[str, Any]) -> str:
         spans=unserved_spans(view) if notice else None, caution=CAUTION, title=_title(view),
         style=Markup(asset("page.css") + asset("print.css")), policy=policy(scripts.values()),
         scripts={name: Markup(text) for name, text in scripts.items()},
-        data=Markup(script_json(_data(view, parts))), made_by=_made_by(run),
+        data=Markup(script_json(_data(view, parts))), made_by=made_by(run),
         number=number,
     )  # fmt: skip
 
@@ -67,7 +67,8 @@ def _data(view: View, parts: Sequence[Section]) -> dict[str, Any]:
     }
 
 
-def _made_by(run: Mapping[str, Any]) -> str:
+def made_by(run: Mapping[str, Any]) -> str:
+    """Say with what a run or a study was made."""
     versions = run.get("versions") or {}
     return ", ".join(f"{name} {versions[name]}" for name in sorted(versions))
 

@@ -172,10 +172,10 @@
   const escaped = (text) => text.replace(/[&<>]/g, (character) => entities[character]);
   const plain = (text) => text.replace(/&lt;/g, "<").replace(/&gt;/g, ">").replace(/&amp;/g, "&");
 
-  function rowsAxis(figure, plot) {
+  function rowsAxis(figure, traces, plot) {
     const axis = figure.layout && figure.layout.yaxis;
     if (!axis || axis.type !== "category") return {};
-    const names = figure.traces[0].y;
+    const names = traces[0].y;
     return { yaxis: { labelalias: Object.fromEntries(names.map((name) => [name, shortened(name, plot)])) } };
   }
 
@@ -198,7 +198,8 @@
   function figureOf(plot) {
     const name = plot.dataset.chart;
     const figure = (makers[name] || ((given) => given))(data.figures[name]);
-    let traces = figure.choices ? figure.choices[choices[name] || 0].traces : figure.traces;
+    const chosen = figure.choices ? figure.choices[choices[name] || 0] : figure;
+    let traces = chosen.traces;
     if (figure.steps) traces = traces.map(onSteps).map(columns);
     const range = {
       type: "category",
@@ -210,9 +211,9 @@
     return {
       traces,
       steps: figure.steps,
-      layout: merged(merged(layout, figure.layout), {
+      layout: merged(merged(merged(layout, figure.layout), chosen.layout || {}), {
         ...roomForLegend(figure, traces, plot),
-        ...rowsAxis(figure, plot),
+        ...rowsAxis(figure, traces, plot),
       }),
     };
   }

@@ -1,0 +1,1 @@
+"""Studies: questions answered by many runs of one case (formulation.md 6)."""
