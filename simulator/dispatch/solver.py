@@ -59,6 +59,12 @@ STATUS: Mapping[str, str] = {
 }
 """Every model status HiGHS knows, in words; a test pins that none is missing."""
 
+GAVE_UP = frozenset({
+    highspy.HighsModelStatus.kNotset, highspy.HighsModelStatus.kSolveError,
+    highspy.HighsModelStatus.kUnknown,
+})  # fmt: skip
+"""Statuses that say nothing of the model."""
+
 VIOLATION = 1e-6
 
 
@@ -170,9 +176,17 @@ class LinearSolver:
         self._check(self._highs.setBasis(basis), "a starting basis")
 
     def run(self) -> None:
-        """Solve from the current basis; raise `SolverError` unless the result is optimal."""
+        """Solve from the current basis; raise `SolverError` unless the result is optimal.
+
+        A basis can be so far from feasible that the solver gives up in its numbers; it then starts again
+        from nothing, since whether a model has an optimum does not hang on a basis.
+        """
         self._highs.run()
         status = self._highs.getModelStatus()
+        if status in GAVE_UP:
+            self._check(self._highs.clearSolver(), "a fresh start")
+            self._highs.run()
+            status = self._highs.getModelStatus()
         if status != highspy.HighsModelStatus.kOptimal:
             raise SolverError(STATUS[status.name])
 

@@ -1,6 +1,6 @@
 """Two runs compared as a reader sees it: tables on the terminal, and one self-contained HTML page.
 
-Public names: `comparison_html`, `for_terminal`, `print_comparison`, `write_comparison`.
+Public names: `comparison_html`, `print_comparison`, `write_comparison`.
 """
 
 from collections.abc import Sequence
@@ -13,7 +13,6 @@ import pandas as pd
 from markupsafe import Markup
 from rich.console import Console
 from rich.markup import escape
-from rich.table import Table as TerminalTable
 
 from simulator.errors import OptionError
 from simulator.files import replace_file
@@ -42,10 +41,11 @@ from simulator.report.tables import (
     word,
     words,
 )
+from simulator.report.terminal import print_table
 from simulator.report.view import View
 from simulator.report.wording import LARGE, amount, count, listed, number, percent
 
-__all__ = ["comparison_html", "for_terminal", "print_comparison", "write_comparison"]
+__all__ = ["comparison_html", "print_comparison", "write_comparison"]
 
 MOST_SHOWN = 10
 """How many of the largest changes stand open."""
@@ -97,21 +97,7 @@ def print_comparison(comparison: Comparison, console: Console) -> None:
         for text in [*(f"{term}: {value}" for term, value in section.facts), *section.text]:
             console.print(escape(text))
         for table in section.tables:
-            console.print(for_terminal(table))
-
-
-def for_terminal(table: Table) -> TerminalTable:
-    """Return a page's table as the terminal prints it."""
-    made = TerminalTable(
-        title=table.caption, title_justify="left", title_style="bold", box=None, pad_edge=False
-    )
-    for column in table.columns:
-        made.add_column(
-            column.title, justify="right" if column.numeric else "left", overflow="fold"
-        )
-    for row in [*table.rows, *([table.total] if table.total else [])]:
-        made.add_row(*(escape(cell.text) for cell in row))
-    return made
+            print_table(table, console)
 
 
 def _title(comparison: Comparison) -> str:

@@ -14,10 +14,10 @@ from rich.console import Console
 from rich.markup import escape
 
 from simulator.report import new_load_sections, storage_sections
-from simulator.report.comparison_page import for_terminal
 from simulator.report.page import CAUTION, asset, environment, made_by, policy
 from simulator.report.sections import Section
 from simulator.report.tables import Table, word, words
+from simulator.report.terminal import print_table
 from simulator.report.view import script_json
 from simulator.report.wording import count
 
@@ -56,7 +56,7 @@ def print_study(dataset: xr.Dataset, record: Mapping[str, Any], console: Console
         console.print(f"[bold red]{escape(alarm)}[/bold red]")
     for section in KINDS[dataset.attrs["study"]].sections(dataset):
         for table in section.tables:
-            console.print(for_terminal(_shortened(table)))
+            print_table(_shortened(table), console)
     console.print(f"[bold]{escape(dataset.attrs['recommendation'])}[/bold]")
     console.print(escape(f"Basis: {dataset.attrs['basis']} {_proof(record)}"))
 

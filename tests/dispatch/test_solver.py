@@ -67,6 +67,20 @@ def test_rows_added_and_changed_move_the_optimum():
     assert lp.rows == 2
 
 
+def test_a_solver_that_gives_up_on_a_basis_starts_again_from_nothing(monkeypatch):
+    """Giving up is played: the first run's status says nothing, as after excessive dual values."""
+    lp = program(5, 20)
+    told = iter([highspy.HighsModelStatus.kNotset])
+    asked = lp._highs.getModelStatus
+    monkeypatch.setattr(lp._highs, "getModelStatus", lambda: next(told, None) or asked())
+    lp.run()
+    assert lp.objective == pytest.approx(11)
+    always = highspy.HighsModelStatus.kSolveError
+    monkeypatch.setattr(lp._highs, "getModelStatus", lambda: always)
+    with pytest.raises(solver.SolverError, match="solve error"):
+        lp.run()
+
+
 def test_a_model_loaded_again_has_nothing_of_the_last_one_left():
     lp = program(5, 20)
     lp.run()
