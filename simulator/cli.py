@@ -293,6 +293,50 @@ def storage_sites(
     ))  # fmt: skip
 
 
+@app.command(
+    "outage-check",
+    epilog='Example: rampline outage-check profiles/fennholm --line "Corvesk-Ansterwell 2"',
+)
+def outage_check(
+    case: CasePath,
+    *,
+    line: Annotated[
+        list[str] | None, typer.Option(help="A line to switch out; may be repeated.")
+    ] = None,
+    all_lines: Annotated[bool, typer.Option("--all-lines", help="Every line of the case.")] = False,
+    block_hours: Annotated[
+        float | None, typer.Option(help="Length of the outage; by default a local day.")
+    ] = None,
+    start: Start = None,
+    hours: Annotated[float, typer.Option(help="Length of the runs.")] = 168.0,
+    commitment: CommitmentOption = None,
+    limits: LimitsOption = None,
+    workers: WorkersOption = None,
+    out: StudyOut = None,
+    force: StudyForce = False,
+    as_json: Json = False,
+) -> None:
+    """Say when lines may be switched out, and what it costs and risks, block of hours by block."""
+    from simulator.case import read_case
+    from simulator.studies.base import StudySettings
+    from simulator.studies.outage_check import (
+        OutageCheck,
+        answer_outage_check,
+        check_outage_check,
+    )
+
+    found = read_case(case)
+    settings = StudySettings(start, hours, commitment=commitment, limits=limits)
+    request = OutageCheck(tuple(line or ()), block_hours, settings)
+    folder, problems = _study_folder(case, found, "outage-check", settings, out, force=force)
+    if bool(line) == all_lines:
+        problems.append("--line, must be given, or else --all-lines, found both or none, give one")
+    check_outage_check(found, request, problems)
+    _study(found, folder, force=force, as_json=as_json, workers=workers, answer=(
+        lambda **how: answer_outage_check(found, request, **how)
+    ))  # fmt: skip
+
+
 def _study_folder(
     case: Path, found: Any, study: str, settings: Any, out: Path | None, *, force: bool
 ) -> tuple[Path, list[str]]:

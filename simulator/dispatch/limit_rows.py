@@ -89,10 +89,11 @@ class LimitRows:
         shift = start.moved_to(inputs.first, inputs.periods)
         serve = start.idle < _IDLE_WINDOWS
         serve &= start.topology == inputs.topology.index[start.places.period]
+        serve &= _possible(inputs, start.places)
         bound = (start.idle == 0) & (start.places.period >= shift)
         carried, kept = start.places[bound].later(-shift), start.places[serve]
         carried = carried[carried.found_in(kept) < 0]
-        carried = carried[possible(inputs, carried)]
+        carried = carried[_possible(inputs, carried)]
         self.carried = len(carried)
         idle = np.concatenate([start.idle[serve], np.zeros(len(carried), dtype=np.int64)])
         self._add(solver, inputs, point, kept + carried, idle)
@@ -239,7 +240,7 @@ def _products(weights: sparse.csr_array, flow: Floats) -> Floats:
     return total
 
 
-def possible(inputs: WindowInputs, places: Places) -> NDArray[np.bool_]:
+def _possible(inputs: WindowInputs, places: Places) -> NDArray[np.bool_]:
     """Tell which places have a meaning under the topology of their period, array (row,)."""
     found = places.contingency == NONE
     for number in np.unique(inputs.topology.index[places.period]).tolist():

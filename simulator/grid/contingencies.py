@@ -10,6 +10,7 @@ splits an island.
 """
 
 from collections.abc import Iterator
+from copy import copy
 from dataclasses import dataclass, field
 from functools import cached_property
 
@@ -107,12 +108,18 @@ class AfterLoss:
         moved[self.line[rows], columns] = -(self.line[rows] == self.line[columns]).astype(float)
         return np.asarray(moved)
 
-    def blocks(self, flow: Floats, lines: Integers) -> Iterator[tuple[Integers, Floats]]:
+    def blocks(
+        self, flow: Floats, lines: Integers, only: Integers | None = None
+    ) -> Iterator[tuple[Integers, Floats]]:
         """Yield contingencies and flows of some lines after each, a block at a time.
 
-        flow : array (period, line), MW; lines : positions
+        flow : array (period, line), MW; lines : positions; only : the contingencies asked for, by
+            default all that hold
         Each block is positions (contingency,) and an array (contingency, period, line), MW.
         """
+        if only is not None:
+            yield from self._only(only).blocks(flow, lines)
+            return
         held, first = np.unique(self.owner, return_index=True)
         step = max(1, _AT_ONCE // max(1, len(flow) * len(lines)))
         factors, before = self.factors[lines], flow[:, lines]
@@ -127,6 +134,13 @@ class AfterLoss:
                 moved = np.add.reduceat(moved, first[start : start + step] - begin, axis=0)
             moved += before
             yield some, moved
+
+    def _only(self, contingencies: Integers) -> "AfterLoss":
+        """Return the same for some of the contingencies."""
+        wanted, part = np.isin(self.owner, contingencies), copy(self)
+        part.owner, part.line = self.owner[wanted], self.line[wanted]
+        part.__dict__["factors"] = self.factors[:, wanted]
+        return part
 
     def weights(self, contingency: Integers, line: Integers) -> sparse.csr_array:
         """Return rows, sparse array (row, line), whose products with flows are flows after losses."""

@@ -30,6 +30,8 @@ def export_study(
 
 def study_sheets(dataset: xr.Dataset, record: Mapping[str, Any]) -> list[Sheet]:
     """Return a study's tables: what it is about, its answers, and what has other dimensions."""
+    if "block" in dataset.dims:
+        return [_about(dataset, record), Sheet("answers", _by(dataset, ("line", "block")))]
     second = "size" if "size" in dataset.dims else "duration"
     made = [_about(dataset, record), Sheet("answers", _by(dataset, ("bus", second)))]
     if second == "duration":

@@ -13,7 +13,7 @@ from plotly.offline import get_plotlyjs
 from rich.console import Console
 from rich.markup import escape
 
-from simulator.report import new_load_sections, storage_sections
+from simulator.report import new_load_sections, outage_sections, storage_sections
 from simulator.report.page import CAUTION, asset, environment, made_by, policy
 from simulator.report.sections import Section
 from simulator.report.tables import Table, word, words
@@ -23,7 +23,9 @@ from simulator.report.wording import count
 
 __all__ = ["print_study", "study_html", "write_study"]
 
-KINDS = {"new-load": new_load_sections, "storage-sites": storage_sections}
+KINDS = {
+    "new-load": new_load_sections, "outage-check": outage_sections, "storage-sites": storage_sections,
+}  # fmt: skip
 MOST_PRINTED = 15
 NO_STEPS = {"day": [], "days": [], "time": [], "unit": ""}
 

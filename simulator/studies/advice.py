@@ -1,6 +1,6 @@
 """The sentence a study ends in, and what it rests on.
 
-Public names: `advise_new_load`, `advise_storage_sites`, `basis`.
+Public names: `advise_new_load`, `advise_outage_check`, `advise_storage_sites`, `basis`.
 
 A recommendation names what it is best by; what gaps of the search for on/off decisions could turn
 round is not called better (mode `optimal`).
@@ -12,7 +12,7 @@ import numpy as np
 import pandas as pd
 import xarray as xr
 
-__all__ = ["advise_new_load", "advise_storage_sites", "basis"]
+__all__ = ["advise_new_load", "advise_outage_check", "advise_storage_sites", "basis"]
 
 NEGLIGIBLE = 1e-3
 _TOLD = 3
@@ -129,6 +129,28 @@ def _largest_of_all(dataset: xr.Dataset) -> str:
         return ""
     best = dataset.isel(bus=int(dataset["largest_size"].to_numpy().argmax()))
     return f"The most is at {best['bus'].item()}. {_takes(best)}"
+
+
+def advise_outage_check(dataset: xr.Dataset) -> str:
+    """Say when each line may be switched out, for the first few lines, and what that costs."""
+    told = [_outage(dataset.isel(line=line)) for line in range(min(dataset.sizes["line"], _TOLD))]
+    more = dataset.sizes["line"] - len(told)
+    return " ".join([*told, f"{more} more lines are in the table." if more else ""]).rstrip()
+
+
+def _outage(of_line: xr.Dataset) -> str:
+    rank, currency = of_line["rank"].to_numpy(), of_line.attrs["currency"]
+    best = of_line.isel(block=int(rank.argmin()))
+    name, hours = str(best["line"].item()), str(best["block_name"].item())
+    if not bool(best["secure"]):
+        return f"{name} cannot be out securely in any of these hours; {hours} is the least bad."
+    secure = int(of_line["secure"].to_numpy().sum())
+    cost = float(best["extra_cost"])
+    mark = ", no more than the gaps of the search allow" if bool(best["cost_within_gap"]) else ""
+    return (
+        f"{name} is best out on {hours}: {_amount(cost)} {currency} more{mark}; "
+        f"{secure} of {of_line.sizes['block']} blocks are secure."
+    )
 
 
 def advise_storage_sites(dataset: xr.Dataset) -> str:

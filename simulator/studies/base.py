@@ -1,7 +1,7 @@
 """What every study has in common: its hours, the run all others are compared with, what it leaves.
 
 Public names: `Answer`, `Base`, `Entries`, `StudySettings`, `attributes`, `fingerprint`, `labelled`, `places`,
-`plan_study`, `record_of`, `solve_base`, `solved`, `Solved`.
+`plan_study`, `proved`, `record_of`, `solve_base`, `solved`, `Solved`.
 """
 
 import hashlib
@@ -34,6 +34,7 @@ __all__ = [
     "labelled",
     "places",
     "plan_study",
+    "proved",
     "record_of",
     "solve_base",
     "solved",
@@ -108,10 +109,11 @@ def solved(case: Case, plan: Plan, like: Origin) -> Solved:
     """Run a case from what the base run left, and audit it."""
     finished = run(case, plan, like=like)
     like.models.update(finished.models)
-    return _proved(case, finished)
+    return proved(case, finished)
 
 
-def _proved(case: Case, finished: Run) -> Solved:
+def proved(case: Case, finished: Run) -> Solved:
+    """Return a finished run with its dataset and what its audit says."""
     dataset = to_dataset(finished)
     broken = tuple(check.name for check in audit(case, dataset) if not check.passed)
     allowed = sum(window.allowed for window in finished.counts.windows)
@@ -153,7 +155,7 @@ def solve_base(case: Case, plan: Plan, like: Like | None = None) -> Base:
     origin, free_origin = (Origin(each.starts, free.models) for each in (limited, free))
     cell = limited.inputs.whole.cells.cell
     return Base(
-        plan, free.plan, origin, free_origin, _proved(case, limited), _proved(case, free), cell
+        plan, free.plan, origin, free_origin, proved(case, limited), proved(case, free), cell
     )
 
 
