@@ -51,7 +51,7 @@ class Duals:
 class LimitRows:
     """The rows of limits that stand in a solver's model, in the order in which they stand there.
 
-    places, topology : what they hold, and the topology of their period, arrays (row,)
+    places, topology : what they hold, and the key of the topology of their period, arrays (row,)
     idle : array (row,), windows in which a row has not been at its limit
     carried : how many rows the window began with for limits met in hours seen before
     """
@@ -88,7 +88,7 @@ class LimitRows:
             return np.zeros(0, dtype=np.int8)
         shift = start.moved_to(inputs.first, inputs.periods)
         serve = start.idle < _IDLE_WINDOWS
-        serve &= start.topology == inputs.topology.index[start.places.period]
+        serve &= start.topology == inputs.topology.key[start.places.period]
         serve &= _possible(inputs, start.places)
         bound = (start.idle == 0) & (start.places.period >= shift)
         carried, kept = start.places[bound].later(-shift), start.places[serve]
@@ -113,7 +113,7 @@ class LimitRows:
         weights, factors = self._factors.of(inputs, places, topology)
         solver.add_rows(*self._rows(inputs, point, places, weights, factors))
         self.places = self.places + places
-        self.topology = np.concatenate([self.topology, topology])
+        self.topology = np.concatenate([self.topology, inputs.topology.key[places.period]])
         self.idle = np.concatenate([self.idle, idle])
         self._weights = sparse.csr_array(sparse.vstack([self._weights, weights], format="csr"))
 

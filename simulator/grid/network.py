@@ -4,6 +4,8 @@ Public names: `Network`, `TopologySchedule`.
 """
 
 from dataclasses import dataclass, field
+from functools import cached_property
+from hashlib import blake2b
 
 import numpy as np
 import pandas as pd
@@ -33,6 +35,16 @@ class TopologySchedule:
 
     def __getitem__(self, periods: slice) -> "TopologySchedule":
         return TopologySchedule(self.topologies, self.index[periods])
+
+    @cached_property
+    def key(self) -> Integers:
+        """A number of the topology of each period, array (period,), the same in any schedule."""
+        made = [blake2b(topology.in_service.tobytes(), digest_size=8).digest()
+                for topology in self.topologies]  # fmt: skip
+        numbers = np.array(
+            [int.from_bytes(each, "big", signed=True) for each in made], dtype=np.int64
+        )
+        return numbers[self.index]
 
     def flows(self, injection: Floats) -> Floats:
         """Return flows (period, line), MW, from injections (period, bus), MW, topology by topology."""

@@ -20,22 +20,35 @@ _BETWEEN = 2
 def print_table(table: Table, console: Console) -> None:
     """Print a table, in parts where it is too wide, each beginning with the column that names rows."""
     for part in _fitted(table, console.width):
-        console.print(_drawn(part))
+        console.print(_drawn(part, console.width))
 
 
-def _drawn(table: Table) -> TerminalTable:
+def _drawn(table: Table, room: int) -> TerminalTable:
     """Return a table as the terminal prints it."""
     made = TerminalTable(
         title=table.caption, title_justify="left", title_style="bold", box=None, pad_edge=False
     )
-    for column, width in zip(table.columns, _widths(table), strict=True):
+    for column, width in zip(table.columns, _shared(table, room), strict=True):
         if column.numeric:
-            made.add_column(fill(column.title, width), justify="right", no_wrap=True)
+            made.add_column(fill(column.title, width), justify="right", no_wrap=True, width=width)
         else:
-            made.add_column(column.title, overflow="fold", min_width=width)
+            made.add_column(column.title, overflow="fold", width=width)
     for row in [*table.rows, *([table.total] if table.total else [])]:
         made.add_row(*(escape(cell.text) for cell in row))
     return made
+
+
+def _shared(table: Table, room: int) -> list[int]:
+    """Return column widths: what each needs, and what is left to text that would take more."""
+    widths = _widths(table)
+    left = room - sum(widths) - _BETWEEN * (len(widths) - 1)
+    for place, column in enumerate(table.columns):
+        if column.numeric or left <= 0:
+            continue
+        longest = max([len(column.title), *(len(row[place].text) for row in table.rows)])
+        more = min(left, max(longest - widths[place], 0))
+        widths[place], left = widths[place] + more, left - more
+    return widths
 
 
 def _widths(table: Table) -> list[int]:
