@@ -61,12 +61,15 @@ class SolveError(RamplineError):
     """A window that the solver could not finish.
 
     `window` is its number in the run, `status` the solver's verdict in words, `elements` the
-    elements and hours that contradict each other, as far as they could be found.
+    elements and hours that contradict each other, as far as they could be found; `remedy` what to do
+    where there are none to name.
     """
 
-    def __init__(self, window: int, status: str, elements: Sequence[str] = ()) -> None:
+    def __init__(
+        self, window: int, status: str, elements: Sequence[str] = (), *, remedy: str = ""
+    ) -> None:
         self.window, self.status, self.elements = window, status, tuple(elements)
-        shown = "; ".join(self.elements) or "no single element could be named"
+        shown = "; ".join(self.elements) or remedy or "no single element could be named"
         super().__init__(f"window {window}: the solver ended with status {status}: {shown}")
 
     def __reduce__(self) -> tuple[type["SolveError"], tuple[int, str, tuple[str, ...]]]:

@@ -343,7 +343,14 @@ def _solve(
             _described(case, first, family, period, _element(window, family, position))
             for family, period, position in failure.broken
         ]
-        raise SolveError(window.number, failure.status, elements) from failure
+        remedy = _MORE_TIME if window.mode == "optimal" and failure.status == _LATE else ""
+        raise SolveError(window.number, failure.status, elements, remedy=remedy) from failure
+
+
+_LATE = "time limit"  # the solver's words
+_MORE_TIME = (
+    "no plan was found in time, raise commitment.seconds in case.toml or pass --commitment relaxed"
+)
 
 
 _ELEMENT = {

@@ -19,7 +19,9 @@ ramp : out of the money, and comes down from the hour before, or up to the hour 
 kept on : out of the money, was on before, and what stopping would cost lies ahead: a later hour of the
     same stretch has one of the first reasons or lies beyond the end of the run, and another start would
     cost something, or the minimum down time is longer than a period
-other : none of these; mostly a decision within the gap that the search was left with
+other : none of these. The unit may be needed whole without a price that shows it: with its decision
+    fixed, its minimum output keeps a line from its limit, and the price at its bus falls. Or the
+    decision is within the gap that the search was left with.
 
 The order is a choice: what pays for itself comes first, then what somebody asked for, then what ties
 one hour to another.

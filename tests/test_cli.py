@@ -243,6 +243,7 @@ def test_no_plan_in_time_ends_with_what_stopped_it_and_leaves_nothing(case, tmp_
     assert result.exit_code == 3
     assert "window 0" in result.stderr
     assert "time limit" in result.stderr
+    assert "raise commitment.seconds in case.toml" in result.stderr
     assert not (tmp_path / "out").exists()
 
 

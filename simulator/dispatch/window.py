@@ -321,6 +321,8 @@ class WindowModel:
             cold = given.cold_start
         else:
             decided = {name: values.pop(name) for name in ("on", "start", "stop")}
+            if inputs.mode == "optimal":  # fixed to whole numbers, which the solver holds to 1e-16
+                decided = {name: np.round(found) + 0.0 for name, found in decided.items()}
             cold = np.zeros_like(decided["start"])
             cold[:, inputs.unit.cold_rows] = values.pop("cold_start")
         if not inputs.reserve.there:

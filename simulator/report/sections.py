@@ -37,6 +37,12 @@ LIMITS = {
     "secure": "the rating of every line, also after each contingency, and corridors",
 }
 
+PRICING = {
+    "fixed": "of the plan, with on and off fixed",
+    "relaxed": "of the relaxation, in which a unit may be partly on; output, flows and costs are the plan's",
+}
+"""Which prices a run in mode `optimal` shows; other modes have one kind."""
+
 FLEET = "The fleet, on and off"
 
 
@@ -156,6 +162,8 @@ def _settings(view: View) -> list[tuple[str, str]]:
         ("Network limits", LIMITS.get(held, held)),
     ]
     facts += _contingencies(view)
+    if mode == "optimal" and (pricing := view.dataset.attrs.get("pricing")):
+        facts.insert(1, ("Prices", PRICING.get(pricing, pricing)))
     if "losses" in network:
         facts.append(("Losses", "modelled" if network["losses"] else "not modelled"))
     if {"window_hours", "keep_hours"} <= set(horizon):

@@ -70,7 +70,7 @@ def _heading(dataset: xr.Dataset, record: Mapping[str, Any], console: Console) -
     if "make_whole" in totals:
         console.print(
             f"starts {totals['starts']:,.4g}, make-whole {totals['make_whole']:,.0f} "
-            f"{escape(dataset.attrs['currency'])}{_left_open(record)}"
+            f"{escape(dataset.attrs['currency'])}{_left_open(record)}{_priced(dataset)}"
         )
     console.print(
         f"{counts['windows']} windows, {counts['lp_solves']} solves, {counts['line_rows']} line rows, "
@@ -85,6 +85,11 @@ def _left_open(record: Mapping[str, Any]) -> str:
     gap, window, late = found
     ended = f"; [bold]time ran out in {late} of them[/bold]" if late else ""
     return f", largest gap {gap:.3%} in window {window}{ended}"
+
+
+def _priced(dataset: xr.Dataset) -> str:
+    """Say so where prices are not those of the plan, as all that is worked out of them follows."""
+    return ", prices of the relaxation" if dataset.attrs.get("pricing") == "relaxed" else ""
 
 
 def _audited(record: Mapping[str, Any]) -> str:

@@ -109,6 +109,21 @@ def test_a_bare_record_is_enough(dataset, run):
     assert "optimised, each unit on or off" in text
 
 
+@pytest.mark.parametrize(
+    ("pricing", "words"),
+    [("fixed", "of the plan, with on and off fixed"), ("relaxed", "of the relaxation")],
+)
+def test_the_page_says_which_prices_it_shows(dataset, pricing, words):
+    text = page(dataset.assign_attrs(pricing=pricing), record()).text
+    assert f"Prices {words}" in text
+
+
+def test_a_run_with_one_kind_of_price_does_not_name_it(dataset):
+    found = record()
+    found["settings"]["commitment"]["mode"] = "given"
+    assert "with on and off fixed" not in page(dataset.assign_attrs(pricing="fixed"), found).text
+
+
 def test_totals_are_sums_of_the_dataset(dataset, document):
     cost = float(dataset["cost"].sum())
     limits = ("congestion_rent", "corridor_rent", "pair_rent")

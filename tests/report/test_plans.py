@@ -122,6 +122,14 @@ def test_the_summary_says_starts_make_whole_and_gap(dataset, run):
     assert "starts 7, make-whole 1,234 EUR\n" in summary(dataset, run, starts=7, make_whole=1234.5)
 
 
+def test_the_summary_says_where_prices_are_of_the_relaxation(dataset, run):
+    amounts = {"starts": 7.0, "make_whole": 1.0}
+    assert "of the relaxation" not in summary(dataset.assign_attrs(pricing="fixed"), run, **amounts)
+    assert "prices of the relaxation" in summary(
+        dataset.assign_attrs(pricing="relaxed"), run, **amounts
+    )
+
+
 def test_a_comparison_holds_starts_and_make_whole_amounts(dataset):
     other = dataset.copy(deep=True)
     other["make_whole"][0, 0] += 50.0
