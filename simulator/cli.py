@@ -97,7 +97,7 @@ def week(
     pricing: Annotated[
         str | None,
         typer.Option(
-            help="fixed | relaxed: prices with on/off decisions fixed, or of the relaxation."
+            help="fixed | relaxed: in mode optimal, prices with on/off decisions fixed, or of the relaxation."
         ),
     ] = None,
     out: Annotated[

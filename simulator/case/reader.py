@@ -4,6 +4,7 @@ Public names: `read_case`.
 """
 
 from collections.abc import Sequence
+from dataclasses import replace
 from pathlib import Path
 
 from simulator.case.declaration import Declaration
@@ -18,6 +19,7 @@ from simulator.case.hourly import (
 )
 from simulator.case.model import Case
 from simulator.case.rules import broken_rules, oddities
+from simulator.case.schedules import schedule_oddities
 from simulator.case.schema import TABLES, Table
 from simulator.case.settings import Settings
 from simulator.case.settings_file import SettingsFile, read_settings
@@ -49,7 +51,8 @@ def _built(declaration: Declaration, settings: Settings, time: TimeAxis) -> Case
     profiles = side_by_side([values.loc[time.periods] for values in whole])
     tables = resolved(settings, time, declaration.sheets)
     found = tuple(oddities(declaration))
-    return Case(settings, time, profiles, tables, dict(declaration.sheets), found)
+    case = Case(settings, time, profiles, tables, dict(declaration.sheets), found)
+    return replace(case, warnings=(*found, *schedule_oddities(case)))
 
 
 def _declared(folder: Path, listing: Folder) -> tuple[Declaration, list[Problem]]:

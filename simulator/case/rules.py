@@ -189,5 +189,9 @@ def _outages_beyond(declaration: Declaration) -> Iterator[Problem]:
         start = read_stamps(outages["from"], time.time_zone).early
         until = read_stamps(outages["until"], time.time_zone).early
         beyond = np.asarray((until <= time.periods[0]) | (start >= end))
-        words = "is wholly outside the hourly data", "nothing to do if that is meant"
-        yield from outages.problems(beyond, "from", words, lambda place: _span(outages, place))
+        # One warning for all: a calendar of a year beside the hours of a week is common.
+        places = np.flatnonzero(beyond).tolist()
+        for first in places[:1]:
+            more = f", {len(places) - 1} more like it" if len(places) > 1 else ""
+            words = "is wholly outside the hourly data", f"{_span(outages, first)}{more}"
+            yield outages.problem(first, "from", *words, "nothing to do if that is meant")

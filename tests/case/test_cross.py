@@ -226,3 +226,15 @@ def test_an_outage_beyond_the_hourly_data_is_odd(tmp_path, start, until):
     (warning,) = warnings_of(tmp_path, cells=cells)
     assert (warning.path, warning.row) == (OUTAGES, 2)
     assert "wholly outside the hourly data" in warning.rule
+
+
+def test_outages_beyond_the_hourly_data_share_one_warning(tmp_path):
+    header, row, *_ = case_texts()[OUTAGES].splitlines()
+    kind, name, *rest = row.split(",")
+    rows = [
+        ",".join([kind, name, f"{year}-01-01", f"{year}-01-02", *rest[2:]])
+        for year in (2020, 2021, 2022)
+    ]
+    (warning,) = warnings_of(tmp_path, {OUTAGES: "\n".join([header, *rows]) + "\n"})
+    assert warning.row == 2
+    assert "2 more like it" in warning.found
