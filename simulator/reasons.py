@@ -15,16 +15,18 @@ given : out of the money in mode `given`, where on and off are data and nothing 
 must run : out of the money, and units.csv says so
 minimum up time : out of the money, and within a minimum up time of more than one period since the last
     start, its own hour included; hours on before the run count
+needed whole : out of the money with the decisions fixed, but in the money at the price of the relaxation,
+    in which it may be on in part (mode `optimal`): needed, where no price with its decision fixed can
+    show it, as when its minimum output keeps a line from its limit
 ramp : out of the money, and comes down from the hour before, or up to the hour after, as fast as it can
 kept on : out of the money, was on before, and what stopping would cost lies ahead: a later hour of the
     same stretch has one of the first reasons or lies beyond the end of the run, and another start would
     cost something, or the minimum down time is longer than a period
-other : none of these. The unit may be needed whole without a price that shows it: with its decision
-    fixed, its minimum output keeps a line from its limit, and the price at its bus falls. Or the
-    decision is within the gap that the search was left with.
+other : none of these: a decision within the gap that the search was left with, or a need that neither
+    price shows
 
-The order is a choice: what pays for itself comes first, then what somebody asked for, then what ties
-one hour to another.
+Codes are positions in `REASONS`, not quite in this order. The order is a choice: what pays for itself
+comes first, then what somebody asked for, then what ties one hour to another.
 """
 
 from dataclasses import dataclass
@@ -44,7 +46,7 @@ Codes = NDArray[np.int8]
 
 REASONS = (
     "off", "at_no_cost", "in_the_money", "line", "reserve", "given", "must_run", "minimum_up_time", "ramp",
-    "kept_on", "other",
+    "kept_on", "other", "needed_whole",
 )  # fmt: skip
 """The reasons by their code, spelt as CF flag meanings."""
 
@@ -65,6 +67,7 @@ class Circumstances:
     given : mode `given`; length : Δ, h
     on, start : 0..1; output, minimum : MW, minimum output while on
     price, congestion : currency/MWh at the unit's bus, congestion part of it (5.1)
+    relaxed_price : currency/MWh, that of the relaxation; the price itself where nothing is decided
     cost : running cost, currency; last_cost : currency/MWh of the last MWh above the minimum
     reserve : currency that the reserve held is worth
     must_run, restart_costs : bool (unit,), whether a start costs something or has to wait
@@ -81,6 +84,7 @@ class Circumstances:
     minimum: Floats
     price: Floats
     congestion: Floats
+    relaxed_price: Floats
     cost: Floats
     last_cost: Floats
     reserve: Floats
@@ -108,6 +112,7 @@ def circumstances(run: Run, dataset: xr.Dataset, last_cost: Floats) -> Circumsta
         on=run.kept.on, start=run.kept.start, output=run.kept.output, minimum=inputs.unit_min,
         price=dataset["price"].to_numpy()[:, bus],
         congestion=dataset["price_congestion"].to_numpy()[:, bus],
+        relaxed_price=dataset.get("price_relaxed", dataset["price"]).to_numpy()[:, bus],
         cost=dataset["unit_cost"].to_numpy(), last_cost=last_cost,
         reserve=prices.reserve_revenue(dataset), must_run=unit.must_run,
         restart_costs=(unit.hot_start > 0) | (unit.down_periods > 1), up_periods=unit.up_periods,
@@ -133,9 +138,11 @@ def unit_reasons(at: Circumstances) -> Codes:
         "given": np.full(on.shape, at.given),
         "must_run": np.broadcast_to(at.must_run, on.shape),
         "minimum_up_time": _recently_started(at),
+        "needed_whole": _pays(at, at.relaxed_price),
         "ramp": _ramping(at, on),
     }
-    own = on & (paid & ~idle | rules["reserve"] | rules["must_run"])
+    needed = paid | rules["needed_whole"]
+    own = on & (needed & ~idle | rules["reserve"] | rules["must_run"])
     rules["kept_on"] = before & at.restart_costs & _ahead(own, on)
     codes = np.select(list(rules.values()), [REASONS.index(name) for name in rules], _OTHER)
     return np.where(on, codes, 0).astype(np.int8)

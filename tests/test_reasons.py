@@ -22,6 +22,7 @@ def hours(output: Sequence[float], price: Sequence[float], **changes: object) ->
     at = Circumstances(
         given=False, length=1.0, on=on, start=np.diff(on, axis=0, prepend=on[:1]).clip(0),
         output=power, minimum=np.full_like(power, MINIMUM), price=np.array(price, float)[:, None],
+        relaxed_price=np.array(price, float)[:, None],
         congestion=none, cost=COST * power,
         last_cost=np.where(power > MINIMUM, COST, -np.inf), reserve=none,
         must_run=np.array([False]), restart_costs=np.array([False]), up_periods=np.array([1]),
@@ -62,6 +63,16 @@ def test_output_that_costs_nothing_is_no_need():
 def test_only_the_congestion_part_of_the_price_pays():
     found = reasons([60, 60, 60], [55, 55, 45], congestion=column(20, 2, 20))
     assert found == ["line", "in_the_money", "other"]
+
+
+def test_what_pays_at_the_relaxed_price_only_is_needed_whole_and_worth_waiting_for():
+    """Out of the money twice; the second hour pays in the relaxation, and a start would cost something."""
+    relaxed = {"relaxed_price": column(90, 20, 60, 20)}
+    assert reasons([60, 10, 10, 10], [90, 20, 20, 20], **relaxed) == [
+        "in_the_money", "other", "needed_whole", "other",
+    ]  # fmt: skip
+    found = reasons([60, 10, 10, 10], [90, 20, 20, 20], restart_costs=np.array([True]), **relaxed)
+    assert found == ["in_the_money", "kept_on", "needed_whole", "kept_on"]
 
 
 def test_reserve_that_has_a_price_comes_before_what_ties_hours_together():

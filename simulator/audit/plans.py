@@ -77,7 +77,10 @@ def _reasons(evidence: Evidence, units: Units) -> Floats:
     here = _margin(units, price)
     elsewhere = _margin(units, price - np.maximum(congestion, 0.0))
     idle = (units.output <= AT_LIMIT) & (np.abs(evidence["unit_cost"]) <= SOME)
-    holds = _holds(evidence, units, on, (here >= -PRICE) & ~idle)
+    relaxed = evidence.values.get("price_relaxed", evidence["price"])
+    needed = _margin(units, relaxed[:, evidence.bus(units.table)])
+    pays = (np.maximum(here, needed) >= -PRICE) & ~idle
+    holds = {**_holds(evidence, units, on, pays), "needed_whole": needed >= -PRICE}
     known = list(evidence.reasons)
     off = np.where(np.isin(code, range(len(known))), np.maximum(here, 0.0), 1.0)
     for name in known:

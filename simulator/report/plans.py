@@ -46,6 +46,7 @@ PHRASES = {
     "ramp": "ramp",
     "kept_on": "kept on to save a start",
     "other": "out of the money, no rule holds it",
+    "needed_whole": "needed whole: pays at the relaxed price only",
 }
 """The reasons a unit is on for, by flag meaning, as a reader sees them."""
 
