@@ -152,7 +152,10 @@ def _no_resistance(declaration: Declaration) -> Iterator[Problem]:
     lines = declaration.sheets["lines"]
     asked = declaration.settings is not None and declaration.settings.network.losses
     if asked and len(lines.frame) and (lines["resistance_pu"] == 0).all():
-        words = "usually holds a resistance above 0 where network.losses is true", "0 for every line"
+        words = (
+            "usually holds a resistance above 0 where network.losses is true",
+            "0 for every line",
+        )
         remedy = "fill in resistance_pu: without it no line loses anything"
         yield file_problem(lines.table.path, *words, remedy)
 
