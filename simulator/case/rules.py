@@ -48,6 +48,7 @@ def oddities(declaration: Declaration) -> list[Problem]:
     """Return what is allowed but probably not meant."""
     return [
         *_negative_reactance(declaration),
+        *_no_resistance(declaration),
         *_lonely_buses(declaration),
         *_idle_operation_cost(declaration),
         *_idle_reserves(declaration),
@@ -144,6 +145,19 @@ def _negative_reactance(declaration: Declaration) -> Iterator[Problem]:
     lines = declaration.sheets["lines"]
     words = "is usually positive", "keep it only for series compensation"
     yield from lines.problems(lines["reactance_pu"] < 0, "reactance_pu", words)
+
+
+def _no_resistance(declaration: Declaration) -> Iterator[Problem]:
+    """Yield a warning where losses are asked for but no line can lose anything."""
+    lines = declaration.sheets["lines"]
+    asked = declaration.settings is not None and declaration.settings.network.losses
+    if asked and len(lines.frame) and (lines["resistance_pu"] == 0).all():
+        words = (
+            "usually holds a resistance above 0 where network.losses is true",
+            "0 for every line",
+        )
+        remedy = "fill in resistance_pu: without it no line loses anything"
+        yield file_problem(lines.table.path, *words, remedy)
 
 
 def _lonely_buses(declaration: Declaration) -> Iterator[Problem]:

@@ -50,7 +50,7 @@ __all__ = ["comparison_html", "print_comparison", "write_comparison"]
 MOST_SHOWN = 10
 """How many of the largest changes stand open."""
 SMALLEST = 0.005
-"""A change below this shows as none in two decimals."""
+"""An amount below this shows as none in two decimals, and nothing is a share of it."""
 KINDS = {
     "bus": ("bus", "buses"), "line": ("line", ""), "unit": ("unit", ""), "plant": ("renewable plant", ""),
     "store": ("store", ""), "tie": ("tie", ""), "load": ("load", ""), "product": ("reserve product", ""),
@@ -200,7 +200,7 @@ def _columns(*titles: str) -> tuple[Column, ...]:
 
 def _change_cells(row: Any, decimals: int, bar: float | None = None) -> list[Cell]:
     """Return the cells of a row: first, second, change, and the change as a share of the first."""
-    known = row.first and np.isfinite(row.change)
+    known = abs(row.first) >= SMALLEST and np.isfinite(row.change)
     return [
         figure(row.first, decimals),
         figure(row.second, decimals),

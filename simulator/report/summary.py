@@ -69,7 +69,7 @@ def _heading(dataset: xr.Dataset, record: Mapping[str, Any], console: Console) -
         )
     if "make_whole" in totals:
         console.print(
-            f"starts {totals['starts']:,.4g}, make-whole {totals['make_whole']:,.0f} "
+            f"starts {round(totals['starts'], 3) + 0.0:,.4g}, make-whole {totals['make_whole']:,.0f} "
             f"{escape(dataset.attrs['currency'])}{_left_open(record)}{_priced(dataset)}"
         )
     console.print(

@@ -54,6 +54,19 @@ def test_resistance_below_zero_is_refused_only_with_losses(tmp_path):
     assert (problem.path, problem.row, problem.column) == (LINES, 3, "resistance_pu")
 
 
+def test_losses_without_any_resistance_are_warned_of(tmp_path):
+    lossy = case_texts()["case.toml"].replace("losses = false", "losses = true")
+    rows = len(case_texts()[LINES].strip().splitlines())
+    none = {(LINES, row, "resistance_pu"): "0" for row in range(2, rows + 1)}
+    assert not read_case(write_case(tmp_path / "without", cells=none)).warnings
+    case = read_case(write_case(tmp_path / "with", {"case.toml": lossy}, none))
+    (warning,) = case.warnings
+    assert warning.path == LINES
+    assert "network.losses" in warning.rule
+    some = dict(list(none.items())[1:]) | {(LINES, 2, "resistance_pu"): "0.01"}
+    assert not read_case(write_case(tmp_path / "some", {"case.toml": lossy}, some)).warnings
+
+
 def test_an_empty_table_of_contingencies_is_the_default(tmp_path):
     case = read_case(write_case(tmp_path, {CONTINGENCIES: "contingency,line\n"}))
     assert case.contingencies.empty

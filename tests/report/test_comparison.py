@@ -346,6 +346,14 @@ def test_the_terminal_says_the_same(dataset, other):
     assert "Curtailment by plant" in said
 
 
+def test_a_change_is_no_share_of_what_shows_as_nothing(dataset, other):
+    dataset["unit_start"] = dataset["unit_start"] * 0 + 1e-15
+    other["unit_start"] = other["unit_start"] * 0 + 0.05
+    (row,) = (line for line in printed(compared(dataset, other)).splitlines() if "Starts" in line)
+    assert "+" in row
+    assert "%" not in row
+
+
 def test_the_document_is_plain_and_finite(dataset, other):
     text = json.dumps(comparison_record(compared(dataset, shifted(other))), allow_nan=False)
     document = json.loads(text)
