@@ -76,7 +76,7 @@ def _starting(units: Units) -> tuple[Floats, Floats]:
     total = np.concatenate([np.zeros((1, len(memory))), np.cumsum(units.stop, axis=0)])
     stopped = total[:-1] - np.take_along_axis(total, np.maximum(period - reach, 0), 0)
     stopped += (units.hours < 0) & (elapsed - units.hours <= memory + _WHOLE)
-    cold = np.maximum(units.start - stopped, 0.0)
+    cold = np.clip(units.start - stopped, 0.0, np.maximum(units.start, 0.0))
     maybe = np.isnan(units.hours) & (elapsed <= memory)
     surely_cold = np.where(maybe, np.maximum(cold - (1 - units.on_before[0]), 0.0), cold)
     hot, extra = units.numbers("start_cost") * units.start, units.numbers("cold_start_cost")
