@@ -46,14 +46,14 @@ def test_a_synthetic_network_is_as_large_as_asked_and_near_its_limits(buses):
 
 def test_without_limits_about_three_of_a_hundred_line_hours_are_near_their_limit(subject):
     free = finished(subject.case, limits="none", periods=120, window=48, keep=24)
-    near = abs(free.kept.flow) >= CLOSE * free.kept_inputs.rating
+    near = abs(free.kept.flow) >= CLOSE * free.kept_inputs.limits.rating
     assert 0.02 < near.mean() < 0.05
 
 
 def test_the_smallest_case_runs_and_its_audit_passes(subject):
     checks = audit(subject.case, to_dataset(subject.finished))
     assert [check.name for check in checks if not check.passed] == []
-    assert subject.rolled[2].counts.line_rows > 0
+    assert subject.rolled[2].counts.limit_rows > 0
 
 
 @pytest.mark.parametrize("from_basis", [False, True])

@@ -19,7 +19,7 @@ from scipy import sparse
 from simulator.dispatch import State, WindowInputs
 from simulator.dispatch.compiled import compile_fleet
 from simulator.dispatch.fleet import fleet_data
-from simulator.dispatch.limits import InjectionMap
+from simulator.dispatch.injections import InjectionMap
 from simulator.grid import Network
 from tests.benchmarks.budget import Budget, OverBudgetError
 from tests.benchmarks.cases import Subject
@@ -57,7 +57,7 @@ class AllAngles:
         vectors = self.fleet.vectors(fleet_data(inputs, state))
         exchange = self.fleet.columns["exchange"]
         vectors.lower[exchange] = vectors.upper[exchange] = 0.0
-        angle, rating = self._angle_bounds(inputs).ravel(), inputs.rating.ravel()
+        angle, rating = self._angle_bounds(inputs).ravel(), inputs.limits.rating.ravel()
         free, demand = np.zeros(len(angle) + len(rating)), inputs.demand_at_bus.ravel()
         shift = (-self._susceptance(inputs) * self.network.phase_shift).ravel()
         return Program(
@@ -84,7 +84,7 @@ class AllAngles:
 
     def _matrix(self, inputs: WindowInputs, state: State) -> sparse.csc_array:
         """Stack fleet rows, bus balances, and flow − b·(θ_from − θ_to) = −b·φ."""
-        periods, buses, lines = inputs.periods, inputs.buses, inputs.rating.shape[1]
+        periods, buses, lines = inputs.periods, inputs.buses, inputs.limits.rating.shape[1]
         hour, fleet = np.arange(periods)[:, None], self._fleet_rows(inputs, state)
         at_bus = self.injection.at_bus.tocoo()
         injected = _placed(

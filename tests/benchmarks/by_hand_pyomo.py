@@ -153,7 +153,7 @@ def _grid(model: Model, network: Network, inputs: WindowInputs) -> None:
     """2.5 at every bus, and 2.6 with an angle at every bus."""
     topologies, which = inputs.topology.topologies, inputs.topology.index
     running = np.stack([topology.in_service for topology in topologies])[which]
-    rating, weight = inputs.rating.tolist(), network.susceptance.tolist()
+    rating, weight = inputs.limits.rating.tolist(), network.susceptance.tolist()
     start, end, shift = network.from_bus.tolist(), network.to_bus.tolist(), network.phase_shift
     lines, buses = range(len(weight)), range(inputs.buses)
 
@@ -193,7 +193,7 @@ def _grid(model: Model, network: Network, inputs: WindowInputs) -> None:
 def _injections(model: Model, inputs: WindowInputs) -> dict[int, list[tuple[float, Any, int]]]:
     """Return, for each bus, what enters there: (factor, column, element)."""
     arrives = inputs.tie_delivered.tolist()
-    one, less = [1.0] * inputs.rating.size, [-1.0] * inputs.rating.size
+    one, less = [1.0] * inputs.limits.rating.size, [-1.0] * inputs.limits.rating.size
     enters = defaultdict(list)
     for column, at, factors in (
         (model.output, inputs.unit.bus, one), (model.renewable, inputs.renewable_bus, one),

@@ -82,7 +82,7 @@ class Subject:
     def run_inputs(self) -> RunInputs:
         """Make the arrays of the run afresh."""
         plan = self.plan
-        return run_inputs(self.case, plan.span, plan.periods, plan.mode, limited=True)
+        return run_inputs(self.case, plan.span, plan.periods, plan.mode, plan.limits)
 
     @cached_property
     def inputs(self) -> RunInputs:

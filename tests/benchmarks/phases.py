@@ -13,7 +13,9 @@ from simulator.case import read_case
 from simulator.dispatch.compiled import compile_fleet
 from simulator.dispatch.fleet import fleet_data
 from simulator.dispatch.formulation import state_fleet
-from simulator.dispatch.limits import LineRows
+from simulator.dispatch.injections import InjectionMap
+from simulator.dispatch.limit_rows import LimitRows
+from simulator.dispatch.point import Point
 from simulator.dispatch.solver import LinearSolver
 from simulator.report.page import page_html
 from simulator.results import run_record, to_dataset
@@ -68,11 +70,13 @@ def _from_basis(subject: Subject) -> Work:
 
 def _line_rows(subject: Subject) -> Work:
     window, found = subject.windows[-1], subject.rolled[2]
-    data, lines = fleet_data(window, subject.rolled[0][-1]), LineRows(window, found.fleet)
+    data, fleet = fleet_data(window, subject.rolled[0][-1]), found.fleet
+    injection = InjectionMap(window, dict(fleet.columns))
+    rows = LimitRows(window, fleet, injection, fleet.matrix.shape[0])
     solver = LinearSolver()
     solver.load(found.fleet.filled(window, data), found.fleet.vectors(data))
-    fixed, missing = window.topology.flows(-window.demand_at_bus), found.lines.active(window)
-    return partial(lines.add, solver, window, fixed, missing)
+    point = Point.at(window, -window.demand_at_bus)
+    return partial(rows.add, solver, window, point, found.limits.places)
 
 
 def _six_windows(subject: Subject) -> Work:

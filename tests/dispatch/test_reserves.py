@@ -197,7 +197,7 @@ def test_a_case_without_products_has_no_trace_of_reserves_in_its_model(tmp_path)
         loads=[{"load": "l", "bus": "b", "mw": 5}],
     )  # fmt: skip
     for mode in MODES:
-        inputs = run_inputs(case, slice(0, 2), 2, mode, limited=True).whole
+        inputs = run_inputs(case, slice(0, 2), 2, mode, "lines").whole
         fleet = compile_fleet(inputs, fleet_data(inputs, initial_state(case, inputs.unit)))
         names = {*fleet.columns, *fleet.rows}
         assert not [name for name in names if "reserve" in name or "room" in name]

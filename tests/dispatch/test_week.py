@@ -20,5 +20,5 @@ def test_two_weeks_are_served_by_one_model():
         assert week.kept.unserved.max() < 1e-6
         assert week.kept.surplus.max() < 1e-6
         assert week.counts.builds == 1
-        rating = week.kept_inputs.rating
+        rating = week.kept_inputs.limits.rating
         assert (abs(week.kept.flow) <= rating + 1e-5).all()
