@@ -42,6 +42,7 @@ LOSS_CLOSE = 1e-3
 _SLOTS = 8  # tangents kept of each cell and period
 _PATIENCE = 2  # linearisations before tangents are kept
 _STALLED = 5  # steps without a smaller gap after which none is expected
+_RESUMED = 3  # times that tangents are taken again after shifts
 _SLOW = 0.05  # of the gap before; less is the pace of a plan at a vertex, which ends by itself
 _ROOM = 10.0  # MW above the true losses that no optimum comes near
 _SMALLEST_FACTOR = 1e-9
@@ -53,7 +54,8 @@ class LossRows:
     slots : how many; count : rows in all
     factor : array (slot, period, cell, bus); base : array (slot, period, cell), MW
     exact : array (period, cell), whether the newest tangent, in slot 0, is an equation
-    last_step : how far losses were from the true ones, MW, when tangents closed in no further
+    last_step : how far losses were from the true ones, MW, when tangents closed in no further, or after
+        if a shift led to another plan
     """
 
     def __init__(self, inputs: WindowInputs, fleet: CompiledFleet, injection: InjectionMap) -> None:
@@ -81,7 +83,7 @@ class LossRows:
     def begin_solve(self) -> None:
         """Count steps from here."""
         self.moves, self.settling, self.last_step = 0, False, 0.0
-        self._last, self._best, self._without = np.inf, np.inf, 0
+        self._last, self._best, self._without, self._resumed = np.inf, np.inf, 0, 0
 
     def _put(self, inputs: WindowInputs, point: Point) -> None:
         """Put the tangent of a point into slot 0."""
@@ -153,14 +155,26 @@ class LossRows:
         return status.ravel()
 
     def settles(self, gap: Floats) -> bool:
-        """Tell, step by step, whether only balance is missing; gap : array (period, cell), MW."""
+        """Tell, step by step, whether only balance is missing; gap : array (period, cell), MW.
+
+        Where a shift leads to another plan, further from its tangents, these are taken anew (`resume`); if
+        that goes on, shifts have the last word.
+        """
         worst = float(np.abs(gap).max(initial=0.0))
         self._without = 0 if worst < self._best else self._without + 1
+        if worst > self._last:
+            self.resume()
+        self.last_step = max(self.last_step, worst) if self.settling else worst
         if not self.settling:
-            self.last_step = worst
-        self.settling |= _SLOW * self._last < worst < LOSS_CLOSE or self._without >= _STALLED
+            self.settling = _SLOW * self._last < worst < LOSS_CLOSE or self._without >= _STALLED
         self._last, self._best = worst, min(worst, self._best)
         return self.settling
+
+    def resume(self) -> None:
+        """Take tangents again after shifts, a few times at most: the plan is another one."""
+        if self.settling and self._resumed < _RESUMED:
+            self.settling, self._resumed, self._without = False, self._resumed + 1, 0
+            self._last = self._best = np.inf
 
     def end(self, worst: float) -> None:
         """Note that no step is left to take."""

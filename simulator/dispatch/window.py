@@ -237,6 +237,8 @@ class WindowModel:
             attempt.solution, attempt.row_dual = self._solver.solution()
             row_value = self._solver.row_values() if inputs.losses else np.zeros(0)
             changed = self._limits_added(inputs, attempt)
+            if changed:
+                self.losses.resume()
             changed |= self._losses_moved(inputs, attempt, row_value)
             if not (changed or (turning and attempt.ties.close(self._solver, attempt.solution))):
                 return
